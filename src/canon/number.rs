@@ -9,7 +9,7 @@ use serde::{Deserialize, Deserializer, Serialize, Serializer};
 /// assert_eq!(Finite::new(0.25).map(Finite::get), Some(0.25));
 /// assert_eq!(Finite::new(f64::NAN), None);
 /// ```
-#[derive(Debug, Clone, Copy, PartialEq, PartialOrd)]
+#[derive(Debug, Clone, Copy, Default, PartialEq, PartialOrd)]
 pub struct Finite(f64);
 
 impl Finite {

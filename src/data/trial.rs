@@ -50,3 +50,12 @@ pub struct Trial {
     /// Number of occasions.
     pub occasions: usize,
 }
+
+impl Trial {
+    /// Which subjects have a value of the outcome at each of these occasions; `None` where all have.
+    pub fn complete(&self, outcome: usize, occasions: &[usize]) -> Option<Vec<bool>> {
+        let complete = |row: &[f64]| occasions.iter().all(|occasion| !row[*occasion].is_nan());
+        let rows = || self.values[outcome].chunks_exact(self.occasions.max(1));
+        if rows().all(complete) { None } else { Some(rows().map(complete).collect()) }
+    }
+}

@@ -4,6 +4,7 @@
 //! written; what could not be computed is absent, and `because` says why.
 
 pub mod decision;
+pub mod numbers;
 
 use crate::canon::number::Finite;
 use serde::{Deserialize, Serialize};
@@ -217,6 +218,34 @@ pub struct Entry {
     /// The hypothesis in matrices, for tests.
     #[serde(skip_serializing_if = "Option::is_none", default)]
     pub hypothesis: Option<Matrices>,
+}
+
+impl Entry {
+    /// Its estimate: that of an estimate step, or the comparison that a test is about, which stands in its details.
+    pub fn estimate_of(&self) -> Option<Finite> {
+        self.estimate.or_else(|| self.detail("estimate"))
+    }
+
+    /// The standard error of [`Entry::estimate_of`].
+    pub fn standard_error_of(&self) -> Option<Finite> {
+        self.standard_error.or_else(|| self.detail("standard_error"))
+    }
+
+    /// The interval of [`Entry::estimate_of`].
+    pub fn interval_of(&self) -> Option<[Finite; 2]> {
+        self.interval.or_else(|| match self.details.get("interval") {
+            Some(Detail::Numbers(limits)) => limits.as_slice().try_into().ok(),
+            _ => None,
+        })
+    }
+
+    /// A number of its details.
+    pub fn detail(&self, name: &str) -> Option<Finite> {
+        match self.details.get(name) {
+            Some(Detail::Number(number)) => Some(*number),
+            _ => None,
+        }
+    }
 }
 
 /// The hypothesis L B M = 0.
