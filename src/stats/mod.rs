@@ -1,1 +1,5 @@
-//! To be written.
+//! Statistics: knows nothing of plans, files or reports.
+
+pub mod hypothesis;
+pub mod linear;
+pub mod model;
