@@ -1,5 +1,6 @@
 //! Statistics: knows nothing of plans, files or reports.
 
+pub mod dist;
 pub mod hypothesis;
 pub mod linear;
 pub mod model;

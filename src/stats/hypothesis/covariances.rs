@@ -1,3 +1,5 @@
+use super::univariate::probability;
+use crate::stats::dist::{chi_squared, fisher};
 use crate::stats::linear::{DoubleDouble, Matrix};
 use crate::stats::model::{Moments, Refusal};
 
@@ -14,6 +16,31 @@ pub struct BoxM {
     pub df2: f64,
     /// The chi-square approximation, M (1 - c1).
     pub chi_squared: f64,
+    /// Box's first constant.
+    pub c1: f64,
+    /// Box's second constant.
+    pub c2: f64,
+}
+
+impl BoxM {
+    /// P of the F approximation, which decides.
+    ///
+    /// # Errors
+    /// The probability could not be computed.
+    pub fn p(&self) -> Result<f64, Refusal> {
+        if self.df2.is_infinite() {
+            return self.p_chi_squared();
+        }
+        fisher::upper_tail(self.f, self.df1, self.df2).map_err(probability)
+    }
+
+    /// P of the chi-square approximation, which is shown beside it.
+    ///
+    /// # Errors
+    /// The probability could not be computed.
+    pub fn p_chi_squared(&self) -> Result<f64, Refusal> {
+        chi_squared::upper_tail(self.chi_squared, self.df1).map_err(probability)
+    }
 }
 
 /// Box's M over all cells.
@@ -79,6 +106,6 @@ pub fn box_m(moments: &Moments) -> Result<BoxM, Refusal> {
         f,
         df1,
         df2,
-        chi_squared: m * (1.0 - c1),
+        chi_squared: m * (1.0 - c1), c1, c2
     })
 }

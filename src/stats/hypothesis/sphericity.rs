@@ -1,3 +1,5 @@
+use super::univariate::probability;
+use crate::stats::dist::chi_squared;
 use crate::stats::linear::{DoubleDouble, Matrix};
 use crate::stats::model::{ErrorMatrix, Moments, Refusal};
 
@@ -91,8 +93,33 @@ pub struct Mauchly {
     pub chi_squared: f64,
     /// q (q + 1) / 2 - 1.
     pub df: f64,
-    /// Share of the second term of the expansion of W's distribution.
+    /// Weight of the second term of the expansion of W's distribution, with q contrasts throughout.
     pub second_term: f64,
+}
+
+impl Mauchly {
+    /// Two terms of the expansion: P(chi2_df > x) + w (P(chi2_(df + 4) > x) - P(chi2_df > x)); Anderson 1958, 10.7.
+    ///
+    /// # Errors
+    /// The probability could not be computed.
+    pub fn p(&self) -> Result<f64, Refusal> {
+        let first = self.p_one_term()?;
+        let second = self.tail(self.df + 4.0)?;
+        // In very small samples two terms can leave the unit interval.
+        Ok((first + self.second_term * (second - first)).clamp(0.0, 1.0))
+    }
+
+    /// The chi-square probability alone, shown for comparison.
+    ///
+    /// # Errors
+    /// The probability could not be computed.
+    pub fn p_one_term(&self) -> Result<f64, Refusal> {
+        self.tail(self.df)
+    }
+
+    fn tail(&self, df: f64) -> Result<f64, Refusal> {
+        chi_squared::upper_tail(self.chi_squared, df).map_err(probability)
+    }
 }
 
 /// Mauchly's test for the contrasts `within` (orthonormal columns) with the error of the cells kept.

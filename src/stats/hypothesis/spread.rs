@@ -1,3 +1,5 @@
+use super::univariate::probability;
+use crate::stats::dist::fisher;
 use crate::stats::linear::DoubleDouble;
 use crate::stats::model::{Refusal, rounding_unit};
 
@@ -19,6 +21,16 @@ pub struct SpreadTest {
     pub df1: f64,
     /// Subjects less cells.
     pub df2: f64,
+}
+
+impl SpreadTest {
+    /// P(F' > F).
+    ///
+    /// # Errors
+    /// The probability could not be computed.
+    pub fn p(&self) -> Result<f64, Refusal> {
+        fisher::upper_tail(self.f, self.df1, self.df2).map_err(probability)
+    }
 }
 
 /// Tests whether the cells spread alike at `occasion`. `values` has one row of `occasions` values for each subject,

@@ -1,6 +1,7 @@
 use super::contrast::Hypothesis;
 use super::effects::{Stratum, strata};
-use super::sphericity::{Epsilons, epsilons};
+use super::sphericity::{Correction, Epsilons, epsilons};
+use crate::stats::dist::fisher;
 use crate::stats::linear::{DoubleDouble, Matrix};
 use crate::stats::model::{ErrorMatrix, Moments, Refusal};
 
@@ -55,6 +56,45 @@ pub struct UnivariateTest {
     pub estimate: Option<Estimate>,
     /// Epsilons of the matrix that supplies the error; none where strata are mixed.
     pub epsilons: Option<Epsilons>,
+}
+
+impl UnivariateTest {
+    /// Numerator and denominator df after a correction.
+    ///
+    /// Both are multiplied by the epsilon, but a hypothesis of one contrast keeps its numerator df: one contrast
+    /// cannot depart from sphericity, only the pooled error behind it can. Where strata are mixed, a hypothesis of one
+    /// contrast has Satterthwaite's df, which need no epsilon.
+    ///
+    /// # Errors
+    /// The epsilon has no value, or several contrasts are tested against mixed strata.
+    pub fn df(&self, correction: Correction) -> Result<(f64, f64), Refusal> {
+        if correction == Correction::None {
+            return Ok((self.df1, self.df2));
+        }
+        match &self.epsilons {
+            Some(epsilons) => {
+                let factor = epsilons.factor(correction)?;
+                let numerator = if self.contrasts == 1 { 1.0 } else { factor };
+                Ok((self.df1 * numerator, self.df2 * factor))
+            }
+            None if self.contrasts == 1 => Ok((self.df1, self.df2)),
+            None => Err(Refusal::SeveralStrata),
+        }
+    }
+
+    /// P(F' > F) with the df of [`df`](Self::df); for one contrast that is both tails of t.
+    ///
+    /// # Errors
+    /// As for [`df`](Self::df).
+    pub fn p(&self, correction: Correction) -> Result<f64, Refusal> {
+        let (df1, df2) = self.df(correction)?;
+        fisher::upper_tail(self.f, df1, df2).map_err(probability)
+    }
+}
+
+/// A tail that could not be computed, as a refusal.
+pub(super) fn probability(error: impl std::fmt::Display) -> Refusal {
+    Refusal::Probability { reason: error.to_string() }
 }
 
 /// Error mean square with what goes with it.

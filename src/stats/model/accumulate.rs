@@ -102,8 +102,10 @@ impl Rows<'_> {
                 .map(&work)
                 .collect()
         };
-        let processors = std::thread::available_parallelism().map_or(1, usize::from);
-        if self.values.len() < THREADED_FROM || processors < 2 {
+        // Asking for the number of processors costs more than small data do, so the size comes first.
+        let threaded = self.values.len() >= THREADED_FROM
+            && std::thread::available_parallelism().is_ok_and(|processors| processors.get() > 1);
+        if !threaded {
             return run(0..PARTS);
         }
         std::thread::scope(|scope| {

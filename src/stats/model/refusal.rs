@@ -62,6 +62,11 @@ pub enum Refusal {
     },
     /// Box's F approximation has no value for so large an M.
     BoxApproximation,
+    /// The probability of the statistic could not be computed.
+    Probability {
+        /// What stands in the way.
+        reason: String,
+    },
     /// An occasion has no variance, so that it correlates with nothing.
     ConstantOccasion {
         /// The cell.
@@ -73,7 +78,7 @@ pub enum Refusal {
 
 impl fmt::Display for Refusal {
     fn fmt(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
-        match *self {
+        match self {
             Refusal::NotFinite { subject, occasion } => write!(
                 out,
                 "the value of subject {} at occasion {} is not a finite number",
@@ -151,6 +156,7 @@ impl fmt::Display for Refusal {
                 out,
                 "the F approximation to Box's M has no value here: M lies beyond the range that it covers"
             ),
+            Refusal::Probability { reason } => write!(out, "the probability could not be computed: {reason}"),
             Refusal::ConstantOccasion { cell, occasion } => write!(
                 out,
                 "the values of group {} at occasion {} do not vary, so that they correlate with nothing",
