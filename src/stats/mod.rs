@@ -1,1 +1,4 @@
 //! To be written.
+pub mod adjust;
+pub mod dist;
+pub mod sizes;
