@@ -46,8 +46,7 @@ fn adjusted_values_agree_with_the_reference() {
     let text = include_str!("reference/adjusted.csv");
     let mut reader = csv::ReaderBuilder::new().comment(Some(b'#')).from_reader(text.as_bytes());
     let rows: Vec<csv::StringRecord> = reader.records().map(|r| r.expect("a row")).collect();
-    let families: Vec<&[csv::StringRecord]> =
-        rows.chunk_by(|a, b| a[0] == b[0] && a[1] == b[1]).collect();
+    let families: Vec<&[csv::StringRecord]> = rows.chunk_by(|a, b| a[0] == b[0] && a[1] == b[1]).collect();
     assert_eq!(families.len(), 18);
     for family in families {
         let number = |row: &csv::StringRecord, i: usize| row[i].parse::<f64>().expect("a number");
@@ -63,10 +62,7 @@ fn adjusted_values_agree_with_the_reference() {
 /// procedure rejects four hypotheses and Bonferroni's three.
 #[test]
 fn the_published_example_rejects_as_published() {
-    let p = [
-        0.0001, 0.0004, 0.0019, 0.0095, 0.0201, 0.0278, 0.0298, 0.0344, 0.0459, 0.3240, 0.4262,
-        0.5719, 0.6528, 0.7590, 1.0,
-    ];
+    let p = [0.0001, 0.0004, 0.0019, 0.0095, 0.0201, 0.0278, 0.0298, 0.0344, 0.0459, 0.3240, 0.4262, 0.5719, 0.6528, 0.7590, 1.0];
     let rejected = |procedure| adjusted(procedure, &p).iter().filter(|&&p| p <= 0.05).count();
     assert_eq!(rejected(Procedure::BenjaminiHochberg), 4);
     assert_eq!(rejected(Procedure::Bonferroni), 3);

@@ -140,9 +140,7 @@ impl Data {
 }
 
 fn hypothesis(between: &[(usize, Part)], within: &[(usize, Part)]) -> Hypothesis {
-    let parts = |parts: &[(usize, Part)]| {
-        parts.iter().map(|(levels, part)| FactorPart::new(*levels, part.clone())).collect::<Vec<_>>()
-    };
+    let parts = |parts: &[(usize, Part)]| parts.iter().map(|(levels, part)| FactorPart::new(*levels, part.clone())).collect::<Vec<_>>();
     Hypothesis::new(&parts(between), &parts(within), Weighting::Equal).expect("a hypothesis")
 }
 
@@ -199,11 +197,7 @@ fn two_groups_by_four_occasions() {
         found.put(format!("effect/{name}/eta2_generalized_group_measured"), effect.ss / base);
     }
     let sizes = moments.cell_sizes();
-    let weighted = Hypothesis::new(
-        &[FactorPart::new(2, Part::Average)],
-        &[FactorPart::new(4, Part::Whole)],
-        Weighting::Observed(&sizes),
-    );
+    let weighted = Hypothesis::new(&[FactorPart::new(2, Part::Average)], &[FactorPart::new(4, Part::Whole)], Weighting::Observed(&sizes));
     found.test("omnibus/time_weighted_typeI_II", &run(&weighted.expect("a hypothesis"), ErrorTerm::Pooled));
 
     let time = hypothesis(&[(2, Part::Average)], &[(4, Part::Whole)]);
@@ -309,25 +303,18 @@ fn two_between_and_two_within_factors_unbalanced() {
     for effect in &effects {
         let flags = [effect.between[0], effect.between[1], effect.within[0], effect.within[1]];
         let factors = ["treatment", "gender", "phase", "hour"];
-        let label: Vec<&str> =
-            factors.iter().zip(flags).filter(|(_, flag)| *flag).map(|(factor, _)| *factor).collect();
+        let label: Vec<&str> = factors.iter().zip(flags).filter(|(_, flag)| *flag).map(|(factor, _)| *factor).collect();
         let label = if label.is_empty() { "intercept".to_owned() } else { label.join(":") };
         let test = effect.test.as_ref().expect("a test");
         found.test(&format!("omnibus/{label}"), test);
         found.put(format!("effect/{label}/eta2_generalized_group_manipulated"), effect.ss / (effect.ss + error));
         if effect.within.contains(&true) {
-            let corrections = [
-                ("GG", Correction::GreenhouseGeisser),
-                ("HF1976", Correction::HuynhFeldt1976),
-                ("HF_Lecoutre", Correction::HuynhFeldt),
-            ];
+            let corrections =
+                [("GG", Correction::GreenhouseGeisser), ("HF1976", Correction::HuynhFeldt1976), ("HF_Lecoutre", Correction::HuynhFeldt)];
             found.corrected(&format!("omnibus/{label}"), test, &corrections);
             if !effect.between.contains(&true) {
                 let part = |flag| if flag { Part::Whole } else { Part::Average };
-                let within = hypothesis(
-                    &[(3, Part::Average), (2, Part::Average)],
-                    &[(3, part(flags[2])), (5, part(flags[3]))],
-                );
+                let within = hypothesis(&[(3, Part::Average), (2, Part::Average)], &[(3, part(flags[2])), (5, part(flags[3]))]);
                 let sphericity = mauchly(&moments, within.within(), &[true; 6]).expect("W");
                 let epsilons = test.epsilons.as_ref().expect("epsilons");
                 found.sphericity(&format!("sphericity/{label}"), epsilons, &sphericity);

@@ -9,9 +9,7 @@ mod tolerance;
 
 use std::collections::BTreeMap;
 
-use aforesaid::stats::dist::{
-    DistributionError, beta, chi_squared, fisher, noncentral_f, noncentral_t, normal, student,
-};
+use aforesaid::stats::dist::{DistributionError, beta, chi_squared, fisher, noncentral_f, noncentral_t, normal, student};
 use proptest::prelude::*;
 use tolerance::relative_error;
 
@@ -22,21 +20,13 @@ struct Case {
 }
 
 fn cases(text: &str) -> Vec<Case> {
-    let mut reader =
-        csv::ReaderBuilder::new().comment(Some(b'#')).from_reader(text.as_bytes());
+    let mut reader = csv::ReaderBuilder::new().comment(Some(b'#')).from_reader(text.as_bytes());
     reader
         .records()
         .map(|row| {
             let row = row.expect("a readable row");
-            let arguments = (1..5)
-                .filter(|&i| !row[i].is_empty())
-                .map(|i| row[i].parse().expect("an argument"))
-                .collect();
-            Case {
-                function: row[0].to_string(),
-                arguments,
-                value: row[5].parse().expect("a value"),
-            }
+            let arguments = (1..5).filter(|&i| !row[i].is_empty()).map(|i| row[i].parse().expect("an argument")).collect();
+            Case { function: row[0].to_string(), arguments, value: row[5].parse().expect("a value") }
         })
         .collect()
 }
@@ -73,9 +63,7 @@ fn allowed(case: &Case) -> f64 {
         _ => case.arguments[1],
     };
     match case.function.as_str() {
-        name if name.contains("delta") || name.contains("lambda") => {
-            tolerance::NONCENTRALITY_LIMIT
-        }
+        name if name.contains("delta") || name.contains("lambda") => tolerance::NONCENTRALITY_LIMIT,
         name if name.starts_with("nc") => tolerance::NONCENTRAL,
         _ if largest_df > 1000.0 => tolerance::TAIL_LARGE_DF,
         _ => tolerance::TAIL,
@@ -162,14 +150,8 @@ fn arguments_outside_the_domain_are_named() {
         (noncentral_f::upper_tail(1.0, 2.0, 5.0, -0.1), "noncentral F distribution: the noncentrality"),
         (noncentral_f::upper_tail(-1.0, 2.0, 5.0, 0.1), "noncentral F distribution: the statistic is -1"),
         (beta::both_tails(1.0, 2.0, 1.5).map(|t| t.lower), "beta distribution: one minus the point"),
-        (
-            noncentral_t::noncentrality_limits(1.0, 5.0, 1.0).map(|l| l.0),
-            "noncentral t distribution: the confidence level is 1",
-        ),
-        (
-            noncentral_f::noncentrality_limits(1.0, 2.0, 5.0, 95.0).map(|l| l.0),
-            "noncentral F distribution: the confidence level is 95",
-        ),
+        (noncentral_t::noncentrality_limits(1.0, 5.0, 1.0).map(|l| l.0), "noncentral t distribution: the confidence level is 1"),
+        (noncentral_f::noncentrality_limits(1.0, 2.0, 5.0, 95.0).map(|l| l.0), "noncentral F distribution: the confidence level is 95"),
         // Legal, but out of reach: said, not guessed.
         (student::quantile_upper(1e-300, 0.5), "the quantile leaves the range"),
         (noncentral_t::lower_tail(1e9, 2.0, 1.0), "would need too many points"),

@@ -7,9 +7,8 @@ use std::collections::BTreeMap;
 use std::f64::consts::TAU;
 
 use aforesaid::stats::sizes::{
-    EffectSum, IntervalMethod, PairedSummary, Refusal, Standardizer, change_interval,
-    generalized_eta_squared, hedges_j_approximate, hedges_j_exact, partial_eta_squared,
-    partial_eta_squared_interval, standardized_change, standardizer_value,
+    EffectSum, IntervalMethod, PairedSummary, Refusal, Standardizer, change_interval, generalized_eta_squared, hedges_j_approximate,
+    hedges_j_exact, partial_eta_squared, partial_eta_squared_interval, standardized_change, standardizer_value,
 };
 use tolerance::{CLASS_A, CLASS_B, assert_close};
 
@@ -47,8 +46,7 @@ impl Reference {
     }
 }
 
-const PAIRS: [(&str, &str); 6] =
-    [("8", "10"), ("8", "12"), ("8", "14"), ("10", "12"), ("10", "14"), ("12", "14")];
+const PAIRS: [(&str, &str); 6] = [("8", "10"), ("8", "12"), ("8", "14"), ("10", "12"), ("10", "14"), ("12", "14")];
 
 #[test]
 fn hedges_factor_agrees_with_its_gamma_form() {
@@ -71,9 +69,7 @@ fn hedges_factor_agrees_with_its_gamma_form() {
 /// off by at most .00033 from 10 degrees of freedom on and by .007 at 2.
 #[test]
 fn hedges_approximation_is_as_near_as_hedges_says() {
-    for (m, printed) in
-        [(2.0, 0.56419), (5.0, 0.84075), (10.0, 0.92275), (20.0, 0.96195), (50.0, 0.98491)]
-    {
+    for (m, printed) in [(2.0, 0.56419), (5.0, 0.84075), (10.0, 0.92275), (20.0, 0.96195), (50.0, 0.98491)] {
         let got = hedges_j_exact(m).expect("a factor");
         assert!((got - printed).abs() <= 0.5e-5, "J({m}) = {got}, printed {printed}");
         let approximate = hedges_j_approximate(m).expect("a factor");
@@ -91,8 +87,7 @@ fn standardized_changes_agree_with_the_reference() {
                 let prefix = format!("es_within/{sex}/{}-{}", ages.0, ages.1);
                 let want = |what: &str| reference.get(&format!("{prefix}/{what}"));
                 let m = reference.get(&format!("cell/{sex}/n")) - 1.0;
-                let (exact, approximate) =
-                    (hedges_j_exact(m).expect("J"), hedges_j_approximate(m).expect("J"));
+                let (exact, approximate) = (hedges_j_exact(m).expect("J"), hedges_j_approximate(m).expect("J"));
                 let checks = [
                     (Standardizer::ChangeSd, "d_z", Some("g_z_exact"), Some("g_z_approx")),
                     (Standardizer::ChangeSdCorrelationRemoved, "d_rm", Some("g_rm_exact"), None),
@@ -129,24 +124,12 @@ fn intervals_of_a_change_agree_with_the_reference() {
             for summary in reference.paired(sex, ages) {
                 let prefix = format!("es_within/{sex}/{}-{}", ages.0, ages.1);
                 let want = |what: &str| reference.get(&format!("{prefix}/{what}"));
-                let exact = change_interval(
-                    &summary,
-                    Standardizer::ChangeSd,
-                    IntervalMethod::NoncentralT,
-                    0.95,
-                )
-                .expect("an interval");
+                let exact = change_interval(&summary, Standardizer::ChangeSd, IntervalMethod::NoncentralT, 0.95).expect("an interval");
                 assert_close(&prefix, exact.lower, want("d_z_ci95_lo"), CLASS_B);
                 assert_close(&prefix, exact.upper, want("d_z_ci95_hi"), CLASS_B);
                 assert_eq!(exact.standard_error, None);
                 // Bonett (2008), paired design.
-                let bonett = change_interval(
-                    &summary,
-                    Standardizer::RootMeanSquareSd,
-                    IntervalMethod::Bonett,
-                    0.95,
-                )
-                .expect("an interval");
+                let bonett = change_interval(&summary, Standardizer::RootMeanSquareSd, IntervalMethod::Bonett, 0.95).expect("an interval");
                 let error = bonett.standard_error.expect("a standard error");
                 assert_close(&prefix, error, want("d_av_bonett_se"), CLASS_A);
                 assert_close(&prefix, bonett.lower, want("d_av_bonett_ci95_lo"), CLASS_A);
@@ -187,10 +170,8 @@ fn bonetts_variance_is_the_sampling_variance() {
     const DRAWS: usize = 20_000;
     const N: usize = 100;
     let (change, sd1, sd2, r) = (1.6, 2.0, 3.0, 0.6_f64);
-    let truth = [
-        (Standardizer::BaselineSd, change / sd1),
-        (Standardizer::RootMeanSquareSd, change / ((sd1 * sd1 + sd2 * sd2) / 2.0_f64).sqrt()),
-    ];
+    let truth =
+        [(Standardizer::BaselineSd, change / sd1), (Standardizer::RootMeanSquareSd, change / ((sd1 * sd1 + sd2 * sd2) / 2.0_f64).sqrt())];
     let mut normals = NormalPairs(20_260_101);
     let mut seen = [(0.0, 0.0, 0.0, 0_usize); 2]; // sums of d, d^2, variance; intervals that cover
     for _ in 0..DRAWS {
@@ -209,12 +190,10 @@ fn bonetts_variance_is_the_sampling_variance() {
         let (v1, v2) = (cross(sums[2], mean1 * mean1), cross(sums[3], mean2 * mean2));
         let sds = (v1.sqrt(), v2.sqrt());
         let correlation = cross(sums[4], mean1 * mean2) / (sds.0 * sds.1);
-        let summary = PairedSummary::with_correlation(N, (mean1, mean2), sds, correlation)
-            .expect("a summary");
+        let summary = PairedSummary::with_correlation(N, (mean1, mean2), sds, correlation).expect("a summary");
         for ((standardizer, truth), seen) in truth.iter().zip(&mut seen) {
             let d = standardized_change(&summary, *standardizer).expect("a change");
-            let interval = change_interval(&summary, *standardizer, IntervalMethod::Bonett, 0.95)
-                .expect("an interval");
+            let interval = change_interval(&summary, *standardizer, IntervalMethod::Bonett, 0.95).expect("an interval");
             let error = interval.standard_error.expect("a standard error");
             seen.0 += d;
             seen.1 += d * d;
@@ -237,26 +216,17 @@ fn eta_squared_agrees_with_the_reference() {
     let reference = Reference::read();
     let names = ["group", "time", "group:time"];
     let sum = |name: &str| reference.get(&format!("omnibus/{name}/SS"));
-    let errors =
-        [reference.get("omnibus/group/SS_error"), reference.get("omnibus/time/SS_error")];
+    let errors = [reference.get("omnibus/group/SS_error"), reference.get("omnibus/time/SS_error")];
     for (position, name) in names.iter().enumerate() {
         let omnibus = |what: &str| reference.get(&format!("omnibus/{name}/{what}"));
         let want = |what: &str| reference.get(&format!("effect/{name}/{what}"));
         let partial = partial_eta_squared(omnibus("SS"), omnibus("SS_error")).expect("a share");
         assert_close(name, partial, omnibus("eta2_partial"), CLASS_A);
-        let (lower, upper) =
-            partial_eta_squared_interval(omnibus("F"), omnibus("df1"), omnibus("df2"), 0.90)
-                .expect("an interval");
+        let (lower, upper) = partial_eta_squared_interval(omnibus("F"), omnibus("df1"), omnibus("df2"), 0.90).expect("an interval");
         assert_close(name, lower, want("eta2_partial_lo90"), CLASS_B);
         assert_close(name, upper, want("eta2_partial_hi90"), CLASS_B);
-        for (measured, key) in [
-            (false, "eta2_generalized_group_manipulated"),
-            (true, "eta2_generalized_group_measured"),
-        ] {
-            let effects = names.map(|name| EffectSum {
-                sum_of_squares: sum(name),
-                measured: measured && name != "time",
-            });
+        for (measured, key) in [(false, "eta2_generalized_group_manipulated"), (true, "eta2_generalized_group_measured")] {
+            let effects = names.map(|name| EffectSum { sum_of_squares: sum(name), measured: measured && name != "time" });
             let got = generalized_eta_squared(position, &effects, &errors).expect("a share");
             assert_close(&format!("{name}, {key}"), got, want(key), CLASS_A);
         }
@@ -266,9 +236,7 @@ fn eta_squared_agrees_with_the_reference() {
 #[test]
 fn combinations_without_a_published_interval_are_refused_with_the_way_out() {
     let summary = PairedSummary::with_correlation(12, (50.0, 56.0), (8.0, 10.0), 0.7).unwrap();
-    let refusal = |standardizer, method| {
-        change_interval(&summary, standardizer, method, 0.95).expect_err("no interval").reason
-    };
+    let refusal = |standardizer, method| change_interval(&summary, standardizer, method, 0.95).expect_err("no interval").reason;
     use IntervalMethod::{Bonett, NoncentralT};
     let reason = refusal(Standardizer::AverageSd, Bonett);
     assert!(reason.contains("`average sd`") && reason.contains("`root mean square sd`"), "{reason}");
@@ -276,12 +244,9 @@ fn combinations_without_a_published_interval_are_refused_with_the_way_out() {
     assert!(reason.contains("`change sd`") && reason.contains("noncentral t"), "{reason}");
     let reason = refusal(Standardizer::ChangeSdCorrelationRemoved, Bonett);
     assert!(reason.contains("correlation removed") && reason.contains("bootstrap"), "{reason}");
-    for standardizer in [
-        Standardizer::AverageSd,
-        Standardizer::RootMeanSquareSd,
-        Standardizer::BaselineSd,
-        Standardizer::ChangeSdCorrelationRemoved,
-    ] {
+    for standardizer in
+        [Standardizer::AverageSd, Standardizer::RootMeanSquareSd, Standardizer::BaselineSd, Standardizer::ChangeSdCorrelationRemoved]
+    {
         let reason = refusal(standardizer, NoncentralT);
         assert!(reason.contains(standardizer.name()), "{reason}");
         assert!(reason.contains("only `change sd` does"), "{reason}");
@@ -291,9 +256,7 @@ fn combinations_without_a_published_interval_are_refused_with_the_way_out() {
 #[test]
 fn degenerate_summaries_are_refused_in_words() {
     let summary = |sds, r| PairedSummary::with_correlation(10, (1.0, 2.0), sds, r).unwrap();
-    let reason = |summary: &PairedSummary, standardizer| {
-        standardizer_value(summary, standardizer).expect_err("no standardizer").reason
-    };
+    let reason = |summary: &PairedSummary, standardizer| standardizer_value(summary, standardizer).expect_err("no standardizer").reason;
     let flat = summary((0.0, 2.0), 0.0);
     assert!(reason(&flat, Standardizer::BaselineSd).contains("`baseline sd`"));
     let removed = Standardizer::ChangeSdCorrelationRemoved;

@@ -33,7 +33,6 @@ impl Serialize for Finite {
 impl<'de> Deserialize<'de> for Finite {
     fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
         let value = f64::deserialize(deserializer)?;
-        Self::new(value)
-            .ok_or_else(|| D::Error::invalid_value(Unexpected::Float(value), &"a finite number"))
+        Self::new(value).ok_or_else(|| D::Error::invalid_value(Unexpected::Float(value), &"a finite number"))
     }
 }

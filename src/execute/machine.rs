@@ -217,7 +217,8 @@ impl<'a, 'w> Machine<'a, 'w> {
                 break;
             }
         }
-        let verdict = serde_json::to_value(taken).map_or_else(|_| String::new(), |value| value.as_str().map_or_else(|| value.to_string(), str::to_owned));
+        let verdict = serde_json::to_value(taken)
+            .map_or_else(|_| String::new(), |value| value.as_str().map_or_else(|| value.to_string(), str::to_owned));
         let id = program.plan.steps[number].id.clone();
         let hash = self.take_down(&id, "choice", json!({ "key": key, "cases": choice }), evidence, &verdict);
         self.steps[number].decision = hash.or_else(|| self.steps[number].decision.take());
@@ -228,9 +229,10 @@ impl<'a, 'w> Machine<'a, 'w> {
         if !matches!(step.action, Action::Test(_) | Action::Screen(_) | Action::Estimate(_)) {
             return;
         }
-        let earlier = self.steps.iter().zip(&self.program.plan.steps).find(|(done, plan_step)| {
-            !done.moments.is_empty() && plan_step.outcome == step.outcome && self.samples.same(plan_step, step)
-        });
+        let earlier =
+            self.steps.iter().zip(&self.program.plan.steps).find(|(done, plan_step)| {
+                !done.moments.is_empty() && plan_step.outcome == step.outcome && self.samples.same(plan_step, step)
+            });
         match earlier {
             Some((done, _)) => result.moments_of = Some(done.id.clone()),
             None => result.moments = moments(self.program, sample),
@@ -277,7 +279,11 @@ fn moments(program: &Program<'_>, sample: &Sample<'_>) -> Vec<CellMoments> {
         .map(|cell| CellMoments {
             levels: design.cell_levels(cell).into_iter().map(str::to_owned).collect(),
             n: moments.cells()[cell].subjects,
-            means: if moments.cells()[cell].subjects == 0 { Vec::new() } else { occasions.clone().filter_map(|k| Finite::new(moments.mean(cell, k))).collect() },
+            means: if moments.cells()[cell].subjects == 0 {
+                Vec::new()
+            } else {
+                occasions.clone().filter_map(|k| Finite::new(moments.mean(cell, k))).collect()
+            },
             covariance: if moments.cells()[cell].subjects < 2 {
                 Vec::new()
             } else {

@@ -4,11 +4,11 @@
 //! [`machine::Bound`] program then walks the steps in plan order; every decision is shown to a
 //! [`crate::results::decision::Witness`] as it is taken. Nothing here touches a file.
 
+mod conclude;
 pub mod condition;
+mod family;
 pub mod lower;
 pub mod machine;
-mod conclude;
-mod family;
 mod steps;
 pub mod verdict;
 mod words;

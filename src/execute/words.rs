@@ -1,7 +1,7 @@
 //! Verdicts as the plan words them.
 
-use crate::execute::verdict::{Direction, Truth, Verdict, Word, holds_of_several};
 use crate::execute::steps::in_plan_words;
+use crate::execute::verdict::{Direction, Truth, Verdict, Word, holds_of_several};
 use crate::plan::resolved::{CorrectionRule, Design, Favours};
 use crate::stats::model::Refusal;
 
@@ -39,7 +39,8 @@ pub(crate) fn correction_rule(rule: &CorrectionRule) -> String {
     match rule {
         CorrectionRule::Always(correction) => in_plan_words(correction),
         CorrectionRule::ByEpsilon { below, otherwise } => {
-            let mut parts: Vec<String> = below.iter().map(|(bound, correction)| format!("below {bound}: {}", in_plan_words(correction))).collect();
+            let mut parts: Vec<String> =
+                below.iter().map(|(bound, correction)| format!("below {bound}: {}", in_plan_words(correction))).collect();
             parts.push(format!("otherwise: {}", in_plan_words(otherwise)));
             parts.join(", ")
         }

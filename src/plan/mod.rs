@@ -1,4 +1,5 @@
 //! From the text of a plan to a sealed plan: `Source -> SyntaxTree -> ResolvedPlan -> CheckedPlan -> SealedPlan`.
 
 pub mod resolved;
+pub mod seal;
 pub mod syntax;

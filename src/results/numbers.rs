@@ -64,7 +64,11 @@ pub fn estimate(value: f64, standard_error: Option<f64>) -> String {
             if (0..=12).contains(&decimals) {
                 let text = format!("{value:.*}", decimals as usize);
                 // No "-0.0".
-                if text.trim_start_matches('-').chars().all(|c| c == '0' || c == '.') { text.trim_start_matches('-').to_owned() } else { text }
+                if text.trim_start_matches('-').chars().all(|c| c == '0' || c == '.') {
+                    text.trim_start_matches('-').to_owned()
+                } else {
+                    text
+                }
             } else {
                 significant(value, 4)
             }

@@ -4,4 +4,6 @@
 //! points at, so that a message about a file too large to keep in memory renders like one about a plan.
 
 pub mod diagnostic;
+pub mod render;
 pub mod source;
+pub mod suggest;

@@ -30,8 +30,5 @@ pub fn relative_error(got: f64, want: f64) -> f64 {
 #[track_caller]
 pub fn assert_close(name: &str, got: f64, want: f64, relative: f64) {
     let error = relative_error(got, want);
-    assert!(
-        error <= relative,
-        "{name}: got {got:e}, the reference is {want:e}; relative error {error:.2e}, allowed {relative:e}"
-    );
+    assert!(error <= relative, "{name}: got {got:e}, the reference is {want:e}; relative error {error:.2e}, allowed {relative:e}");
 }

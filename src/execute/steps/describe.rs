@@ -29,7 +29,13 @@ fn mean_of(moments: &Moments, cell: usize, occasion: usize, level: f64) -> MeanO
         let half = student::quantile_upper((1.0 - level) / 2.0, (n - 1) as f64).ok()? * error;
         Some([Finite::new(mean - half)?, Finite::new(mean + half)?])
     });
-    MeanOfCell { n, mean: mean.and_then(Finite::new), sd: sd.and_then(Finite::new), standard_error: standard_error.and_then(Finite::new), interval }
+    MeanOfCell {
+        n,
+        mean: mean.and_then(Finite::new),
+        sd: sd.and_then(Finite::new),
+        standard_error: standard_error.and_then(Finite::new),
+        interval,
+    }
 }
 
 pub(super) fn cell_means(machine: &mut Machine<'_, '_>, number: usize, level: f64, items: &[CellMean], sample: &Sample<'_>) {
@@ -66,9 +72,8 @@ pub(crate) fn describe(samples: &mut Samples<'_>) -> Vec<Description> {
     let plan = samples.plan;
     let design = &plan.design;
     let level = rounded(1.0 - plan.alpha);
-    let used: Vec<usize> = (0..plan.outcomes.len())
-        .filter(|number| plan.steps.iter().any(|step| step.outcome == plan.outcomes[*number].name))
-        .collect();
+    let used: Vec<usize> =
+        (0..plan.outcomes.len()).filter(|number| plan.steps.iter().any(|step| step.outcome == plan.outcomes[*number].name)).collect();
     used.into_iter()
         .map(|outcome| {
             let sample = samples.whole(outcome);

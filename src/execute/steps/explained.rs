@@ -41,7 +41,11 @@ pub(super) fn partial_eta_squared(tested: &UnivariateTest, level: f64) -> Size {
 pub(super) fn run(machine: &mut Machine<'_, '_>, number: usize, request: &Request<'_>) {
     let settings = &mut machine.steps[number].settings;
     setting(settings, "kind", request.kinds.iter().map(in_plan_words).collect::<Vec<_>>().join(", "));
-    setting(settings, "measured factors", if request.measured_factors.is_empty() { "none".to_owned() } else { request.measured_factors.join(", ") });
+    setting(
+        settings,
+        "measured factors",
+        if request.measured_factors.is_empty() { "none".to_owned() } else { request.measured_factors.join(", ") },
+    );
     for (of, reference) in request.of.iter().zip(request.references) {
         let found = one(machine, of, reference, request);
         machine.steps[number].results.push(found);
@@ -76,9 +80,13 @@ fn one(machine: &mut Machine<'_, '_>, of: &str, reference: &str, request: &Reque
     let tested = tested(machine, hypothesis, error, &sample);
     for kind_of_size in request.kinds {
         let size = match (&tested, kind_of_size) {
-            (Err(refusal), _) => {
-                Size { name: in_plan_words(kind_of_size), value: None, interval: None, level: None, because: Some(words::refusal(refusal, &plan.design)) }
-            }
+            (Err(refusal), _) => Size {
+                name: in_plan_words(kind_of_size),
+                value: None,
+                interval: None,
+                level: None,
+                because: Some(words::refusal(refusal, &plan.design)),
+            },
             (Ok(tested), VarianceExplainedKind::PartialEtaSquared) => partial_eta_squared(tested, request.level),
             (Ok(_), VarianceExplainedKind::GeneralizedEtaSquared) => {
                 let found = if kind == TestKind::Omnibus {
@@ -88,7 +96,13 @@ fn one(machine: &mut Machine<'_, '_>, of: &str, reference: &str, request: &Reque
                 };
                 let name = in_plan_words(kind_of_size);
                 match found {
-                    Ok(value) => Size { name, value: Finite::new(value), interval: None, level: None, because: Some("no interval is published for it".to_owned()) },
+                    Ok(value) => Size {
+                        name,
+                        value: Finite::new(value),
+                        interval: None,
+                        level: None,
+                        because: Some("no interval is published for it".to_owned()),
+                    },
                     Err(because) => Size { name, value: None, interval: None, level: None, because: Some(because) },
                 }
             }
@@ -142,7 +156,12 @@ fn generalized(machine: &Machine<'_, '_>, hypothesis: &Hypothesis, measured: &[S
         .iter()
         .map(|effect| EffectSum {
             sum_of_squares: effect.ss,
-            measured: effect.between.iter().chain(&effect.within).zip(&names).any(|(involved, name)| *involved && measured.iter().any(|m| m == name)),
+            measured: effect
+                .between
+                .iter()
+                .chain(&effect.within)
+                .zip(&names)
+                .any(|(involved, name)| *involved && measured.iter().any(|m| m == name)),
         })
         .collect();
     let errors: Vec<f64> = strata.iter().map(|stratum| stratum.ss).collect();

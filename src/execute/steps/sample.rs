@@ -73,7 +73,9 @@ impl<'a> Samples<'a> {
             // An occasion that is not used has no weight anywhere; held constant it cannot touch a number.
             let mut used = vec![false; all];
             occasions.iter().for_each(|occasion| used[*occasion] = true);
-            Cow::Owned(values.chunks_exact(all).flat_map(|row| row.iter().zip(&used).map(|(y, used)| if *used { *y } else { 0.0 })).collect())
+            Cow::Owned(
+                values.chunks_exact(all).flat_map(|row| row.iter().zip(&used).map(|(y, used)| if *used { *y } else { 0.0 })).collect(),
+            )
         };
         let moments = Moments::new(&values, all, &self.trial.cell, self.trial.cells, kept.as_deref());
         let sample = Rc::new(Sample { outcome, occasions, values, kept, moments });
@@ -93,7 +95,9 @@ impl<'a> Samples<'a> {
             }
         };
         match &step.action {
-            Action::Test(test) if !can_be_pooled(&test.error) => test.hypotheses.iter().for_each(|hypothesis: &Hypothesis| mark(&hypothesis.within)),
+            Action::Test(test) if !can_be_pooled(&test.error) => {
+                test.hypotheses.iter().for_each(|hypothesis: &Hypothesis| mark(&hypothesis.within))
+            }
             Action::Estimate(Estimate::StandardizedChange { items, .. }) => items.iter().for_each(|item| {
                 mark(&item.first);
                 mark(&item.second);
@@ -110,13 +114,21 @@ impl<'a> Samples<'a> {
         let design = &self.plan.design;
         let all: Vec<usize> = (0..design.occasions()).collect();
         let masks: Vec<Option<Vec<bool>>> = outcomes.iter().map(|outcome| self.trial.complete(*outcome, &all)).collect();
-        let used = (0..self.trial.subjects.len()).filter(|subject| masks.iter().all(|mask| mask.as_ref().is_none_or(|kept| kept[*subject]))).count();
+        let used = (0..self.trial.subjects.len())
+            .filter(|subject| masks.iter().all(|mask| mask.as_ref().is_none_or(|kept| kept[*subject])))
+            .count();
         let arms = (0..design.cells())
             .map(|cell| {
                 let levels: Vec<String> = design.cell_levels(cell).into_iter().map(str::to_owned).collect();
                 let in_cell = |subject: &usize| self.trial.cell[*subject] as usize == cell;
                 ArmFlow {
-                    planned: self.plan.data.expected_subjects.iter().find(|planned| planned.levels == levels).map(|planned| planned.subjects),
+                    planned: self
+                        .plan
+                        .data
+                        .expected_subjects
+                        .iter()
+                        .find(|planned| planned.levels == levels)
+                        .map(|planned| planned.subjects),
                     levels,
                     allocated: (0..self.trial.subjects.len()).filter(in_cell).count(),
                     analysed: (0..self.plan.outcomes.len())

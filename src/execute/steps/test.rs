@@ -92,15 +92,10 @@ fn one(
     let in_words = |refusal| words::refusal(&refusal, design);
     let moments = or_refuse!(sample.moments.as_ref().map_err(|refusal| in_words(refusal.clone())));
     let lowered = or_refuse!(
-        engine::Hypothesis::new(
-            &parts(&design.between, &hypothesis.between),
-            &parts(&design.within, &hypothesis.within),
-            Weighting::Equal
-        )
-        .map_err(in_words)
+        engine::Hypothesis::new(&parts(&design.between, &hypothesis.between), &parts(&design.within, &hypothesis.within), Weighting::Equal)
+            .map_err(in_words)
     );
-    let error_cells: Vec<usize> =
-        (0..design.cells()).filter(|cell| error != ErrorTerm::Own || lowered.kept()[*cell]).collect();
+    let error_cells: Vec<usize> = (0..design.cells()).filter(|cell| error != ErrorTerm::Own || lowered.kept()[*cell]).collect();
     entry.n = Some(error_cells.iter().map(|cell| moments.cells()[*cell].subjects).sum());
     entry.hypothesis = Some(matrices(&lowered, &sample.occasions, error_cells));
     let tested = or_refuse!(test_univariate(moments, &lowered, term(error)).map_err(in_words));
@@ -214,9 +209,8 @@ fn describe(entry: &mut Entry, tested: &UnivariateTest, moments: &Moments, lower
         put(details, "t", estimate.t);
         if let Some((between, within)) = lowered.single() {
             let cells = (0..between.len()).filter(|cell| !between[*cell].is_zero());
-            let weighted = |cell: usize| -> f64 {
-                (0..within.len()).map(|occasion| within[occasion].value() * moments.mean(cell, occasion)).sum()
-            };
+            let weighted =
+                |cell: usize| -> f64 { (0..within.len()).map(|occasion| within[occasion].value() * moments.mean(cell, occasion)).sum() };
             details.insert("means".to_owned(), Detail::Numbers(cells.filter_map(|cell| Finite::new(weighted(cell))).collect()));
         }
     }

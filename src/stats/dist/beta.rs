@@ -63,15 +63,7 @@ impl Point {
 
     /// The same point seen from the other side: 1 - X at y.
     pub fn mirrored(self) -> Self {
-        Self {
-            a: self.b,
-            b: self.a,
-            x: self.y,
-            y: self.x,
-            below_mean: -self.below_mean,
-            log_x: self.log_y,
-            log_y: self.log_x,
-        }
+        Self { a: self.b, b: self.a, x: self.y, y: self.x, below_mean: -self.below_mean, log_x: self.log_y, log_y: self.log_x }
     }
 
     /// x^a y^b / B(a, b).
@@ -157,7 +149,6 @@ pub fn both_tails(a: f64, b: f64, x: f64) -> Result<BothTails, DistributionError
         return Ok(BothTails { lower: 1.0, upper: 0.0 });
     }
     let y = 1.0 - x;
-    let point =
-        Point { a, b, x, y, below_mean: a * y - b * x, log_x: log(x), log_y: libm::log1p(-x) };
+    let point = Point { a, b, x, y, below_mean: a * y - b * x, log_x: log(x), log_y: libm::log1p(-x) };
     point.both_tails()
 }

@@ -4,8 +4,8 @@ use std::f64::consts::TAU;
 
 use libm::{exp, log};
 
-use super::gamma::{deviance, stirling_error};
 use super::beta::BothTails;
+use super::gamma::{deviance, stirling_error};
 use super::{DistributionError, Domain};
 
 const DOMAIN: Domain = Domain("chi-squared");

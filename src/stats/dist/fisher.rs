@@ -61,17 +61,9 @@ pub fn lower_tail(f: f64, df1: f64, df2: f64) -> Result<f64, DistributionError> 
 pub fn quantile_upper(p: f64, df1: f64, df2: f64) -> Result<f64, DistributionError> {
     DOMAIN.probability("the tail", p)?;
     check(df1, df2)?;
-    let log_f = if p > 0.5 {
-        -log_quantile_upper(1.0 - p, df2, df1)?
-    } else {
-        log_quantile_upper(p, df1, df2)?
-    };
+    let log_f = if p > 0.5 { -log_quantile_upper(1.0 - p, df2, df1)? } else { log_quantile_upper(p, df1, df2)? };
     let f = exp(log_f);
-    if f.is_finite() && f > 0.0 {
-        Ok(f)
-    } else {
-        Err(DOMAIN.out_of_reach("the quantile leaves the range of double precision"))
-    }
+    if f.is_finite() && f > 0.0 { Ok(f) } else { Err(DOMAIN.out_of_reach("the quantile leaves the range of double precision")) }
 }
 
 /// ln of the upper quantile for `p` not above 1/2.
@@ -84,8 +76,7 @@ fn log_quantile_upper(p: f64, df1: f64, df2: f64) -> Result<f64, DistributionErr
         // d/du of the tail is -f times the density, which is the density factor.
         Ok((log(upper), -here.density_factor() / upper))
     };
-    falling_log_tail(log_tail, log(p), start)
-        .map_err(|e| e.unwrap_or(DOMAIN.out_of_reach("the search for the quantile did not settle")))
+    falling_log_tail(log_tail, log(p), start).map_err(|e| e.unwrap_or(DOMAIN.out_of_reach("the search for the quantile did not settle")))
 }
 
 /// A start for the search: Abramowitz & Stegun 26.5.22 for moderate tails, the
@@ -94,11 +85,7 @@ fn first_guess(p: f64, df1: f64, df2: f64) -> Result<f64, DistributionError> {
     let z = normal::quantile_upper(p)?;
     let (a, b) = (df2 / 2.0, df1 / 2.0);
     let log_power = (log(p * a) + log_beta(a, b)) / a;
-    let by_power = if log_power < -1.0 {
-        Some(log1p(-exp(log_power)) - log_power + log(df2 / df1))
-    } else {
-        None
-    };
+    let by_power = if log_power < -1.0 { Some(log1p(-exp(log_power)) - log_power + log(df2 / df1)) } else { None };
     if df1 > 1.0 && df2 > 1.0 {
         let (inverse1, inverse2) = (1.0 / (df1 - 1.0), 1.0 / (df2 - 1.0));
         let h = 2.0 / (inverse1 + inverse2);

@@ -44,11 +44,7 @@ fn step(t: f64, df: f64, scale: f64) -> f64 {
 }
 
 /// Walks away from `centre` on both sides, summing what `term` gives until it is negligible.
-fn sum_around(
-    centre: f64,
-    step: f64,
-    mut term: impl FnMut(f64) -> f64,
-) -> Result<(), DistributionError> {
+fn sum_around(centre: f64, step: f64, mut term: impl FnMut(f64) -> f64) -> Result<(), DistributionError> {
     let mut largest = term(centre);
     for side in [-1.0, 1.0] {
         let mut previous = largest;

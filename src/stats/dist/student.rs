@@ -71,13 +71,8 @@ pub fn quantile_upper(p: f64, df: f64) -> Result<f64, DistributionError> {
         let both = here.both_tails()?.lower;
         Ok((log(0.5 * both), -2.0 * here.density_factor() / both))
     };
-    let log_t = falling_log_tail(log_tail, log(p), start).map_err(|e| {
-        e.unwrap_or(DOMAIN.out_of_reach("the search for the quantile did not settle"))
-    })?;
+    let log_t = falling_log_tail(log_tail, log(p), start)
+        .map_err(|e| e.unwrap_or(DOMAIN.out_of_reach("the search for the quantile did not settle")))?;
     let t = exp(log_t);
-    if t.is_finite() && t > 0.0 {
-        Ok(t)
-    } else {
-        Err(DOMAIN.out_of_reach("the quantile leaves the range of double precision"))
-    }
+    if t.is_finite() && t > 0.0 { Ok(t) } else { Err(DOMAIN.out_of_reach("the quantile leaves the range of double precision")) }
 }

@@ -44,18 +44,14 @@ impl FactorPart {
         match &self.part {
             Part::Whole => successive(levels, &(0..levels).collect::<Vec<_>>()),
             Part::Among(among) => successive(levels, among),
-            Part::Average => {
-                Matrix::from_rows(&[vec![DoubleDouble::ONE / DoubleDouble::from(levels); levels]])
-            }
+            Part::Average => Matrix::from_rows(&[vec![DoubleDouble::ONE / DoubleDouble::from(levels); levels]]),
             Part::Hold(level) => {
                 let mut row = Matrix::zeros(1, levels);
                 row[(0, *level)] = DoubleDouble::ONE;
                 row
             }
             Part::Weights(rows) => Matrix::from_rows(rows),
-            Part::Trend { spacing, degree } => {
-                Matrix::from_rows(&[trend_weights(spacing, *degree)])
-            }
+            Part::Trend { spacing, degree } => Matrix::from_rows(&[trend_weights(spacing, *degree)]),
         }
     }
 }
@@ -78,11 +74,7 @@ fn successive(levels: usize, among: &[usize]) -> Matrix {
 /// Positions that coincide leave fewer polynomials than levels; beyond those the weights are all zero.
 pub fn trend_weights(spacing: &[f64], degree: usize) -> Vec<DoubleDouble> {
     let count = DoubleDouble::from(spacing.len());
-    let mean = spacing
-        .iter()
-        .map(|&place| DoubleDouble::from(place))
-        .sum::<DoubleDouble>()
-        / count;
+    let mean = spacing.iter().map(|&place| DoubleDouble::from(place)).sum::<DoubleDouble>() / count;
     let mut powers = Matrix::zeros(spacing.len(), degree + 1);
     for (row, &place) in spacing.iter().enumerate() {
         let mut power = DoubleDouble::ONE;
@@ -97,11 +89,7 @@ pub fn trend_weights(spacing: &[f64], degree: usize) -> Vec<DoubleDouble> {
     }
     // The monic polynomial is c times the unit vector u with c = u'x^degree; the coefficient of c u in y is u'y / c.
     let unit = basis.column(degree);
-    let length: DoubleDouble = unit
-        .iter()
-        .zip(powers.column(degree))
-        .map(|(&a, b)| a * b)
-        .sum();
+    let length: DoubleDouble = unit.iter().zip(powers.column(degree)).map(|(&a, b)| a * b).sum();
     unit.into_iter().map(|weight| weight / length).collect()
 }
 
@@ -142,26 +130,18 @@ impl Hypothesis {
     ///
     /// # Panics
     /// Where a level is out of range or rows of weights do not have one weight for each level: slips of the caller.
-    pub fn new(
-        between: &[FactorPart],
-        within: &[FactorPart],
-        weighting: Weighting<'_>,
-    ) -> Result<Hypothesis, Refusal> {
+    pub fn new(between: &[FactorPart], within: &[FactorPart], weighting: Weighting<'_>) -> Result<Hypothesis, Refusal> {
         let combine = |factors: &mut dyn Iterator<Item = &FactorPart>| {
             factors.fold(Matrix::identity(1), |product, factor| {
                 let rows = factor.rows();
-                assert!(
-                    rows.rows() == 0 || rows.columns() == factor.levels,
-                    "one weight for each level"
-                );
+                assert!(rows.rows() == 0 || rows.columns() == factor.levels, "one weight for each level");
                 product.kronecker(&rows)
             })
         };
         let between_rows = match weighting {
             Weighting::Equal => combine(&mut between.iter()),
             Weighting::Observed(sizes) => {
-                let named =
-                    combine(&mut between.iter().filter(|factor| factor.part != Part::Average));
+                let named = combine(&mut between.iter().filter(|factor| factor.part != Part::Average));
                 spread_by_size(&named, between, sizes)?
             }
         };
@@ -174,33 +154,16 @@ impl Hypothesis {
     ///
     /// # Errors
     /// All weights of a side are zero.
-    pub fn from_rows(
-        between: &Matrix,
-        within: &Matrix,
-        within_levels: &[usize],
-    ) -> Result<Hypothesis, Refusal> {
-        assert_eq!(
-            within.columns(),
-            within_levels.iter().product::<usize>(),
-            "one weight for each occasion"
-        );
-        let single = (between.rows() == 1 && within.rows() == 1)
-            .then(|| (between.row(0).to_vec(), within.row(0).to_vec()));
+    pub fn from_rows(between: &Matrix, within: &Matrix, within_levels: &[usize]) -> Result<Hypothesis, Refusal> {
+        assert_eq!(within.columns(), within_levels.iter().product::<usize>(), "one weight for each occasion");
+        let single = (between.rows() == 1 && within.rows() == 1).then(|| (between.row(0).to_vec(), within.row(0).to_vec()));
         let between = between.transpose().orthonormal_columns().transpose();
         let within = within.transpose().orthonormal_columns();
         if between.rows() == 0 || within.columns() == 0 {
             return Err(Refusal::NotEstimable);
         }
-        let kept = (0..between.columns())
-            .map(|cell| (0..between.rows()).any(|row| !between[(row, cell)].is_zero()))
-            .collect();
-        Ok(Hypothesis {
-            between,
-            within,
-            kept,
-            within_levels: within_levels.to_vec(),
-            single,
-        })
+        let kept = (0..between.columns()).map(|cell| (0..between.rows()).any(|row| !between[(row, cell)].is_zero())).collect();
+        Ok(Hypothesis { between, within, kept, within_levels: within_levels.to_vec(), single })
     }
 
     /// L: rank by cells, orthonormal rows.
@@ -235,27 +198,14 @@ impl Hypothesis {
 
     /// Weights of cells and of occasions as written, where the hypothesis is one contrast.
     pub fn single(&self) -> Option<(&[DoubleDouble], &[DoubleDouble])> {
-        self.single
-            .as_ref()
-            .map(|(between, within)| (&between[..], &within[..]))
+        self.single.as_ref().map(|(between, within)| (&between[..], &within[..]))
     }
 }
 
 /// Spreads rows over the combinations of the named factors to the cells, each combination shared out by cell size.
-fn spread_by_size(
-    named: &Matrix,
-    between: &[FactorPart],
-    sizes: &[usize],
-) -> Result<Matrix, Refusal> {
+fn spread_by_size(named: &Matrix, between: &[FactorPart], sizes: &[usize]) -> Result<Matrix, Refusal> {
     let cells = sizes.len();
-    assert_eq!(
-        cells,
-        between
-            .iter()
-            .map(|factor| factor.levels)
-            .product::<usize>(),
-        "one size for each cell"
-    );
+    assert_eq!(cells, between.iter().map(|factor| factor.levels).product::<usize>(), "one size for each cell");
     let combination = |cell: usize| {
         let (mut rest, mut combination, mut step) = (cell, 0, 1);
         for factor in between.iter().rev() {
@@ -281,8 +231,7 @@ fn spread_by_size(
             if totals[place] == 0 {
                 return Err(Refusal::EmptyCell { cell });
             }
-            rows[(row, cell)] = named[(row, place)] * DoubleDouble::from(sizes[cell])
-                / DoubleDouble::from(totals[place]);
+            rows[(row, cell)] = named[(row, place)] * DoubleDouble::from(sizes[cell]) / DoubleDouble::from(totals[place]);
         }
     }
     Ok(rows)

@@ -15,12 +15,9 @@ pub(super) struct Stratum {
 pub(super) fn strata(within_levels: &[usize]) -> Vec<Stratum> {
     subsets(within_levels)
         .map(|within| {
-            let basis = parts(within_levels, &within).iter().fold(
-                Matrix::identity(1),
-                |product, factor| {
-                    product.kronecker(&factor.rows().transpose().orthonormal_columns())
-                },
-            );
+            let basis = parts(within_levels, &within)
+                .iter()
+                .fold(Matrix::identity(1), |product, factor| product.kronecker(&factor.rows().transpose().orthonormal_columns()));
             Stratum { within, basis }
         })
         .collect()
@@ -29,25 +26,13 @@ pub(super) fn strata(within_levels: &[usize]) -> Vec<Stratum> {
 /// Sets of the factors with two levels or more, as flags, the empty set first.
 fn subsets(levels: &[usize]) -> impl Iterator<Item = Vec<bool>> {
     (0..1_usize << levels.len())
-        .map(|set| {
-            (0..levels.len())
-                .map(|factor| set >> factor & 1 == 1)
-                .collect::<Vec<bool>>()
-        })
-        .filter(move |set| {
-            set.iter()
-                .zip(levels)
-                .all(|(&inside, &levels)| !inside || levels > 1)
-        })
+        .map(|set| (0..levels.len()).map(|factor| set >> factor & 1 == 1).collect::<Vec<bool>>())
+        .filter(move |set| set.iter().zip(levels).all(|(&inside, &levels)| !inside || levels > 1))
 }
 
 fn parts(levels: &[usize], contrasted: &[bool]) -> Vec<FactorPart> {
     let part = |inside| if inside { Part::Whole } else { Part::Average };
-    levels
-        .iter()
-        .zip(contrasted)
-        .map(|(&levels, &inside)| FactorPart::new(levels, part(inside)))
-        .collect()
+    levels.iter().zip(contrasted).map(|(&levels, &inside)| FactorPart::new(levels, part(inside))).collect()
 }
 
 /// The error of one stratum, pooled over all cells.
@@ -65,10 +50,7 @@ pub struct ErrorStratum {
 ///
 /// # Errors
 /// No cell has two subjects.
-pub fn error_strata(
-    moments: &Moments,
-    within_levels: &[usize],
-) -> Result<Vec<ErrorStratum>, Refusal> {
+pub fn error_strata(moments: &Moments, within_levels: &[usize]) -> Result<Vec<ErrorStratum>, Refusal> {
     let everyone = vec![true; moments.cells().len()];
     strata(within_levels)
         .into_iter()
@@ -79,11 +61,7 @@ pub fn error_strata(
                 Err(Refusal::NoErrorVariance) => 0.0,
                 Err(other) => return Err(other),
             };
-            Ok(ErrorStratum {
-                within: stratum.within,
-                ss,
-                df: (error.df * error.contrasts()) as f64,
-            })
+            Ok(ErrorStratum { within: stratum.within, ss, df: (error.df * error.contrasts()) as f64 })
         })
         .collect()
 }
@@ -117,11 +95,7 @@ pub fn crossed_effects(
     let mut effects = Vec::new();
     for within in subsets(within_levels) {
         for between in subsets(between_levels) {
-            let hypothesis = Hypothesis::new(
-                &parts(between_levels, &between),
-                &parts(within_levels, &within),
-                weighting,
-            )?;
+            let hypothesis = Hypothesis::new(&parts(between_levels, &between), &parts(within_levels, &within), weighting)?;
             effects.push(Effect {
                 ss: hypothesis_ss(moments, &hypothesis)?.value(),
                 df: (hypothesis.rank() * hypothesis.contrasts()) as f64,

@@ -137,9 +137,7 @@ pub fn mauchly(moments: &Moments, within: &Matrix, kept: &[bool]) -> Result<Mauc
     let (q, nu) = (error.contrasts() as f64, error.df as f64);
     let rho = 1.0 - (2.0 * q * q + q + 2.0) / (6.0 * q * nu);
     let scale = nu * q * rho;
-    let second_term =
-        (q + 2.0) * (q - 1.0) * (q - 2.0) * (2.0 * q * q * q + 6.0 * q * q + 3.0 * q + 2.0)
-            / (288.0 * scale * scale);
+    let second_term = (q + 2.0) * (q - 1.0) * (q - 2.0) * (2.0 * q * q * q + 6.0 * q * q + 3.0 * q + 2.0) / (288.0 * scale * scale);
     Ok(Mauchly {
         w: libm::exp(log_w.value()),
         chi_squared: (-log_w * DoubleDouble::from(nu * rho)).value(),

@@ -80,15 +80,8 @@ pub fn equal_spread(
         };
         let deviation = |value: f64| (DoubleDouble::from(value) - middle).abs();
         let count = DoubleDouble::from(values.len());
-        let average = values
-            .iter()
-            .map(|&value| deviation(value))
-            .sum::<DoubleDouble>()
-            / count;
-        within += values
-            .iter()
-            .map(|&value| (deviation(value) - average).square())
-            .sum();
+        let average = values.iter().map(|&value| deviation(value)).sum::<DoubleDouble>() / count;
+        within += values.iter().map(|&value| (deviation(value) - average).square()).sum();
         means.push((count, average));
     }
     let (df1, df2) = (groups - 1, subjects - groups);
@@ -96,29 +89,15 @@ pub fn equal_spread(
     if within.value() <= df2 as f64 * unit * unit {
         return Err(Refusal::ConstantDeviations { occasion });
     }
-    let grand = means
-        .iter()
-        .map(|&(count, mean)| count * mean)
-        .sum::<DoubleDouble>()
-        / DoubleDouble::from(subjects);
-    let between: DoubleDouble = means
-        .iter()
-        .map(|&(count, mean)| count * (mean - grand).square())
-        .sum();
+    let grand = means.iter().map(|&(count, mean)| count * mean).sum::<DoubleDouble>() / DoubleDouble::from(subjects);
+    let between: DoubleDouble = means.iter().map(|&(count, mean)| count * (mean - grand).square()).sum();
     let f = (between * DoubleDouble::from(df2)) / (within * DoubleDouble::from(df1));
-    Ok(SpreadTest {
-        f: f.value(),
-        df1: df1 as f64,
-        df2: df2 as f64,
-    })
+    Ok(SpreadTest { f: f.value(), df1: df1 as f64, df2: df2 as f64 })
 }
 
 fn mean(values: &[f64]) -> DoubleDouble {
     let shift = DoubleDouble::from(values[0]);
-    let sum: DoubleDouble = values
-        .iter()
-        .map(|&value| DoubleDouble::from(value) - shift)
-        .sum();
+    let sum: DoubleDouble = values.iter().map(|&value| DoubleDouble::from(value) - shift).sum();
     shift + sum / DoubleDouble::from(values.len())
 }
 

@@ -108,12 +108,7 @@ struct Error {
 impl Error {
     fn of(matrix: &ErrorMatrix) -> Result<Error, Refusal> {
         let df = (matrix.df * matrix.contrasts()) as f64;
-        Ok(Error {
-            ss: matrix.trace()?,
-            df_sum: df,
-            df,
-            epsilons: Some(epsilons(matrix)?),
-        })
+        Ok(Error { ss: matrix.trace()?, df_sum: df, df, epsilons: Some(epsilons(matrix)?) })
     }
 
     fn pooled(moments: &Moments, hypothesis: &Hypothesis) -> Result<Error, Refusal> {
@@ -129,8 +124,7 @@ impl Error {
         if let [(stratum, _)] = &spanned[..] {
             return Error::of(&moments.error(&stratum.basis, &everyone)?);
         }
-        let (mut mean_square, mut df_sum, mut variance) =
-            (DoubleDouble::ZERO, 0.0, DoubleDouble::ZERO);
+        let (mut mean_square, mut df_sum, mut variance) = (DoubleDouble::ZERO, 0.0, DoubleDouble::ZERO);
         for (stratum, share) in &spanned {
             let error = moments.error(&stratum.basis, &everyone)?;
             let df = DoubleDouble::from(error.df * error.contrasts());
@@ -148,12 +142,7 @@ impl Error {
         if mean_square.is_zero() {
             return Err(Refusal::NoErrorVariance);
         }
-        Ok(Error {
-            ss: mean_square * DoubleDouble::from(df_sum),
-            df_sum,
-            df: (mean_square.square() / variance).value(),
-            epsilons: None,
-        })
+        Ok(Error { ss: mean_square * DoubleDouble::from(df_sum), df_sum, df: (mean_square.square() / variance).value(), epsilons: None })
     }
 }
 
@@ -169,19 +158,10 @@ pub fn hypothesis_matrix(moments: &Moments, hypothesis: &Hypothesis) -> Result<M
 /// R^-1 LBM with R R' = L (X'X)^-1 L', of which H is the square.
 fn hypothesis_root(moments: &Moments, hypothesis: &Hypothesis) -> Result<Matrix, Refusal> {
     let between = hypothesis.between();
-    assert_eq!(
-        between.columns(),
-        moments.cells().len(),
-        "the hypothesis and the data have the same cells"
-    );
+    assert_eq!(between.columns(), moments.cells().len(), "the hypothesis and the data have the same cells");
     let mut covariance = Matrix::zeros(between.rows(), between.rows());
     let mut means = Matrix::zeros(between.rows(), moments.occasions());
-    for (index, cell) in moments
-        .cells()
-        .iter()
-        .enumerate()
-        .filter(|(index, _)| hypothesis.kept()[*index])
-    {
+    for (index, cell) in moments.cells().iter().enumerate().filter(|(index, _)| hypothesis.kept()[*index]) {
         if cell.subjects == 0 {
             return Err(Refusal::EmptyCell { cell: index });
         }
@@ -204,36 +184,19 @@ fn hypothesis_root(moments: &Moments, hypothesis: &Hypothesis) -> Result<Matrix,
 const RESIDUE: f64 = 1e-29;
 
 /// tr H, exactly zero where the combinations of means are zero but for the arithmetic.
-pub(super) fn hypothesis_ss(
-    moments: &Moments,
-    hypothesis: &Hypothesis,
-) -> Result<DoubleDouble, Refusal> {
+pub(super) fn hypothesis_ss(moments: &Moments, hypothesis: &Hypothesis) -> Result<DoubleDouble, Refusal> {
     let ss = hypothesis_root(moments, hypothesis)?.sum_of_squares();
     let (mut largest, mut subjects) = (0.0_f64, 0);
-    for (cell, _) in moments
-        .cells()
-        .iter()
-        .zip(hypothesis.kept())
-        .filter(|(_, kept)| **kept)
-    {
+    for (cell, _) in moments.cells().iter().zip(hypothesis.kept()).filter(|(_, kept)| **kept) {
         subjects += cell.subjects;
         for (occasion, &magnitude) in cell.largest.iter().enumerate() {
-            if hypothesis
-                .within()
-                .row(occasion)
-                .iter()
-                .any(|weight| !weight.is_zero())
-            {
+            if hypothesis.within().row(occasion).iter().any(|weight| !weight.is_zero()) {
                 largest = largest.max(magnitude);
             }
         }
     }
     let residue = RESIDUE * largest;
-    Ok(if ss.value() <= residue * residue * subjects as f64 {
-        DoubleDouble::ZERO
-    } else {
-        ss
-    })
+    Ok(if ss.value() <= residue * residue * subjects as f64 { DoubleDouble::ZERO } else { ss })
 }
 
 /// F = (tr H / r q) / (error mean square); Kirk 2013, Maxwell & Delaney 2004.
@@ -242,17 +205,11 @@ pub(super) fn hypothesis_ss(
 ///
 /// # Errors
 /// An empty cell that the hypothesis weighs, no error df, or an error variance of zero (by the rule of [`Moments`]).
-pub fn test_univariate(
-    moments: &Moments,
-    hypothesis: &Hypothesis,
-    error_term: ErrorTerm,
-) -> Result<UnivariateTest, Refusal> {
+pub fn test_univariate(moments: &Moments, hypothesis: &Hypothesis, error_term: ErrorTerm) -> Result<UnivariateTest, Refusal> {
     let ss = hypothesis_ss(moments, hypothesis)?;
     let error = match error_term {
         ErrorTerm::Own => Error::of(&moments.error(hypothesis.within(), hypothesis.kept())?)?,
-        ErrorTerm::OwnOccasions => {
-            Error::of(&moments.error(hypothesis.within(), &vec![true; moments.cells().len()])?)?
-        }
+        ErrorTerm::OwnOccasions => Error::of(&moments.error(hypothesis.within(), &vec![true; moments.cells().len()])?)?,
         ErrorTerm::Pooled => Error::pooled(moments, hypothesis)?,
     };
     let df1 = hypothesis.rank() * hypothesis.contrasts();
@@ -267,34 +224,16 @@ pub fn test_univariate(
         df2: error.df,
         f: f.value(),
         contrasts: hypothesis.contrasts(),
-        estimate: hypothesis
-            .single()
-            .map(|weights| estimate(moments, weights, ss.is_zero(), mean_square)),
+        estimate: hypothesis.single().map(|weights| estimate(moments, weights, ss.is_zero(), mean_square)),
         epsilons: error.epsilons,
     })
 }
 
-fn estimate(
-    moments: &Moments,
-    (between, within): (&[DoubleDouble], &[DoubleDouble]),
-    zero: bool,
-    mean_square: DoubleDouble,
-) -> Estimate {
+fn estimate(moments: &Moments, (between, within): (&[DoubleDouble], &[DoubleDouble]), zero: bool, mean_square: DoubleDouble) -> Estimate {
     let mut value = DoubleDouble::ZERO;
     let mut spread = DoubleDouble::ZERO;
-    for (cell, &weight) in moments
-        .cells()
-        .iter()
-        .zip(between)
-        .filter(|(_, weight)| !weight.is_zero())
-    {
-        value += weight
-            * cell
-                .mean
-                .iter()
-                .zip(within)
-                .map(|(&mean, &weight)| mean * weight)
-                .sum();
+    for (cell, &weight) in moments.cells().iter().zip(between).filter(|(_, weight)| !weight.is_zero()) {
+        value += weight * cell.mean.iter().zip(within).map(|(&mean, &weight)| mean * weight).sum();
         spread += weight.square() / DoubleDouble::from(cell.subjects);
     }
     if zero {
@@ -302,9 +241,5 @@ fn estimate(
     }
     let length: DoubleDouble = within.iter().map(|weight| weight.square()).sum();
     let standard_error = (mean_square * length * spread).sqrt();
-    Estimate {
-        value: value.value(),
-        standard_error: standard_error.value(),
-        t: (value / standard_error).value(),
-    }
+    Estimate { value: value.value(), standard_error: standard_error.value(), t: (value / standard_error).value() }
 }

@@ -37,11 +37,7 @@ impl Split {
     pub fn new(value: f64) -> Split {
         let scaled = 134_217_729.0 * value; // 2^27 + 1
         let high = scaled - (scaled - value);
-        Split {
-            value,
-            high,
-            low: value - high,
-        }
+        Split { value, high, low: value - high }
     }
 }
 
@@ -82,20 +78,11 @@ fn quick_two_sum(a: f64, b: f64) -> (f64, f64) {
 
 impl DoubleDouble {
     /// Zero.
-    pub const ZERO: DoubleDouble = DoubleDouble {
-        high: 0.0,
-        low: 0.0,
-    };
+    pub const ZERO: DoubleDouble = DoubleDouble { high: 0.0, low: 0.0 };
     /// One.
-    pub const ONE: DoubleDouble = DoubleDouble {
-        high: 1.0,
-        low: 0.0,
-    };
+    pub const ONE: DoubleDouble = DoubleDouble { high: 1.0, low: 0.0 };
     /// Natural logarithm of 2.
-    const LN_2: DoubleDouble = DoubleDouble {
-        high: std::f64::consts::LN_2,
-        low: 2.319_046_813_846_299_6e-17,
-    };
+    const LN_2: DoubleDouble = DoubleDouble { high: std::f64::consts::LN_2, low: 2.319_046_813_846_299_6e-17 };
 
     /// The number `high + low`, whatever the two overlap.
     #[inline]
@@ -138,11 +125,7 @@ impl DoubleDouble {
         }
         let root = self.high.sqrt();
         let (square, error) = two_product(root, root);
-        let left = self
-            - DoubleDouble {
-                high: square,
-                low: error,
-            };
+        let left = self - DoubleDouble { high: square, low: error };
         let (high, low) = quick_two_sum(root, left.high / (2.0 * root));
         DoubleDouble { high, low }
     }
@@ -156,10 +139,7 @@ impl DoubleDouble {
             mantissa *= 2.0;
             exponent -= 1;
         }
-        let scaled = DoubleDouble {
-            high: mantissa,
-            low: libm::ldexp(self.low, -exponent),
-        };
+        let scaled = DoubleDouble { high: mantissa, low: libm::ldexp(self.low, -exponent) };
         let ratio = (scaled - Self::ONE) / (scaled + Self::ONE);
         let square = ratio.square();
         let mut power = ratio;
@@ -178,10 +158,7 @@ impl DoubleDouble {
 impl From<f64> for DoubleDouble {
     #[inline]
     fn from(value: f64) -> DoubleDouble {
-        DoubleDouble {
-            high: value,
-            low: 0.0,
-        }
+        DoubleDouble { high: value, low: 0.0 }
     }
 }
 
@@ -196,10 +173,7 @@ impl Neg for DoubleDouble {
     type Output = DoubleDouble;
     #[inline]
     fn neg(self) -> DoubleDouble {
-        DoubleDouble {
-            high: -self.high,
-            low: -self.low,
-        }
+        DoubleDouble { high: -self.high, low: -self.low }
     }
 }
 
@@ -228,10 +202,7 @@ impl Mul for DoubleDouble {
     #[inline]
     fn mul(self, other: DoubleDouble) -> DoubleDouble {
         let (product, error) = two_product(self.high, other.high);
-        let (high, low) = quick_two_sum(
-            product,
-            error + (self.high * other.low + self.low * other.high),
-        );
+        let (high, low) = quick_two_sum(product, error + (self.high * other.low + self.low * other.high));
         DoubleDouble { high, low }
     }
 }
@@ -297,11 +268,7 @@ mod tests {
 
     fn close(found: DoubleDouble, high: f64, low: f64) {
         let difference = found - DoubleDouble::new(high, low);
-        assert!(
-            difference.value().abs() <= 1e-31 * high.abs(),
-            "{found:?} against {high:e} + {low:e}: off by {:e}",
-            difference.value()
-        );
+        assert!(difference.value().abs() <= 1e-31 * high.abs(), "{found:?} against {high:e} + {low:e}: off by {:e}", difference.value());
     }
 
     // Check values: the first double and the rest of the number, from mpmath at 60 digits.
@@ -312,11 +279,7 @@ mod tests {
         close(two.sqrt(), std::f64::consts::SQRT_2, -9.667293313452913e-17);
         close(tenth, 0.1, -5.551115123125783e-18);
         close(two.ln(), std::f64::consts::LN_2, 2.3190468138462996e-17);
-        close(
-            DoubleDouble::from(10.0).ln(),
-            std::f64::consts::LN_10,
-            -2.1707562233822494e-16,
-        );
+        close(DoubleDouble::from(10.0).ln(), std::f64::consts::LN_10, -2.1707562233822494e-16);
         close(tenth.ln(), -std::f64::consts::LN_10, 2.1707562233822494e-16);
     }
 
@@ -324,8 +287,7 @@ mod tests {
     fn logarithm_near_one_keeps_relative_precision() {
         // ln(1 + x) = x - x^2/2 + x^3/3 - ..., here with x = 2^-40.
         let x = 1.0 / 1_099_511_627_776.0;
-        let series = DoubleDouble::from(x) - DoubleDouble::from(x * x / 2.0)
-            + DoubleDouble::from(x * x * x) / DoubleDouble::from(3.0);
+        let series = DoubleDouble::from(x) - DoubleDouble::from(x * x / 2.0) + DoubleDouble::from(x * x * x) / DoubleDouble::from(3.0);
         let found = (DoubleDouble::ONE + DoubleDouble::from(x)).ln();
         assert!(((found - series) / series).value().abs() < 1e-30);
     }
@@ -336,9 +298,6 @@ mod tests {
         assert_eq!((sum, error), (1e16, 1.0));
         let a = 134_217_729.0; // 2^27 + 1, whose square needs 55 bits
         let (product, error) = two_product(a, a);
-        assert_eq!(
-            product as i128 + error as i128,
-            134_217_729_i128 * 134_217_729
-        );
+        assert_eq!(product as i128 + error as i128, 134_217_729_i128 * 134_217_729);
     }
 }

@@ -25,11 +25,7 @@ impl Matrix {
 
     /// All zeros.
     pub fn zeros(rows: usize, columns: usize) -> Matrix {
-        Matrix {
-            rows,
-            columns,
-            entries: vec![DoubleDouble::ZERO; rows * columns],
-        }
+        Matrix { rows, columns, entries: vec![DoubleDouble::ZERO; rows * columns] }
     }
 
     /// Ones on the diagonal.
@@ -46,11 +42,7 @@ impl Matrix {
         let columns = rows.first().map_or(0, Vec::len);
         debug_assert!(rows.iter().all(|row| row.len() == columns));
         let entries = rows.iter().flatten().map(|&entry| entry.into()).collect();
-        Matrix {
-            rows: rows.len(),
-            columns,
-            entries,
-        }
+        Matrix { rows: rows.len(), columns, entries }
     }
 
     /// Number of rows.
@@ -118,10 +110,8 @@ impl Matrix {
         let mut product = Matrix::zeros(self.rows * other.rows, self.columns * other.columns);
         for (row, column) in self.places() {
             for (inner_row, inner_column) in other.places() {
-                product[(
-                    row * other.rows + inner_row,
-                    column * other.columns + inner_column,
-                )] = self[(row, column)] * other[(inner_row, inner_column)];
+                product[(row * other.rows + inner_row, column * other.columns + inner_column)] =
+                    self[(row, column)] * other[(inner_row, inner_column)];
             }
         }
         product
@@ -137,17 +127,12 @@ impl Matrix {
 
     /// Every entry times `factor`.
     pub fn scaled(&self, factor: DoubleDouble) -> Matrix {
-        Matrix {
-            entries: self.entries.iter().map(|&entry| entry * factor).collect(),
-            ..*self
-        }
+        Matrix { entries: self.entries.iter().map(|&entry| entry * factor).collect(), ..*self }
     }
 
     /// Sum of the diagonal.
     pub fn trace(&self) -> DoubleDouble {
-        (0..self.rows.min(self.columns))
-            .map(|index| self[(index, index)])
-            .sum()
+        (0..self.rows.min(self.columns)).map(|index| self[(index, index)]).sum()
     }
 
     /// Sum of the squares of all entries; for a symmetric matrix the trace of its square.
@@ -195,9 +180,7 @@ impl Matrix {
         let mut factor = Matrix::zeros(self.rows, self.rows);
         for row in 0..self.rows {
             for column in 0..=row {
-                let known: DoubleDouble = (0..column)
-                    .map(|inner| factor[(row, inner)] * factor[(column, inner)])
-                    .sum();
+                let known: DoubleDouble = (0..column).map(|inner| factor[(row, inner)] * factor[(column, inner)]).sum();
                 let rest = self[(row, column)] - known;
                 if row == column {
                     if rest.value() <= Self::DEPENDENCE * self[(row, row)].value().abs() {
@@ -217,9 +200,7 @@ impl Matrix {
         let mut solution = right.clone();
         for row in 0..self.rows {
             for column in 0..right.columns {
-                let known: DoubleDouble = (0..row)
-                    .map(|inner| self[(row, inner)] * solution[(inner, column)])
-                    .sum();
+                let known: DoubleDouble = (0..row).map(|inner| self[(row, inner)] * solution[(inner, column)]).sum();
                 solution[(row, column)] = (solution[(row, column)] - known) / self[(row, row)];
             }
         }
@@ -228,9 +209,7 @@ impl Matrix {
 
     /// The entries rounded to doubles, row by row.
     pub fn to_rows(&self) -> Vec<Vec<f64>> {
-        (0..self.rows)
-            .map(|row| self.row(row).iter().map(|entry| entry.value()).collect())
-            .collect()
+        (0..self.rows).map(|row| self.row(row).iter().map(|entry| entry.value()).collect()).collect()
     }
 
     fn places(&self) -> impl Iterator<Item = (usize, usize)> + use<> {
@@ -265,16 +244,9 @@ mod tests {
     #[test]
     fn cholesky_recovers_the_inverse_hilbert_determinant() {
         // det of the 8 x 8 Hilbert matrix is 1 / 365356847125734485878112256000000 (OEIS A005249).
-        let hilbert: Vec<Vec<DoubleDouble>> = (0..8usize)
-            .map(|row| {
-                (0..8usize)
-                    .map(|column| DoubleDouble::ONE / DoubleDouble::from(row + column + 1))
-                    .collect()
-            })
-            .collect();
-        let factor = Matrix::from_rows(&hilbert)
-            .cholesky()
-            .expect("positive definite");
+        let hilbert: Vec<Vec<DoubleDouble>> =
+            (0..8usize).map(|row| (0..8usize).map(|column| DoubleDouble::ONE / DoubleDouble::from(row + column + 1)).collect()).collect();
+        let factor = Matrix::from_rows(&hilbert).cholesky().expect("positive definite");
         let mut determinant = DoubleDouble::ONE;
         for index in 0..8 {
             determinant *= factor[(index, index)].square();
@@ -285,33 +257,19 @@ mod tests {
 
     #[test]
     fn a_repeated_row_is_reported_with_its_rank() {
-        let matrix = Matrix::from_rows(&[
-            vec![1.0, 2.0, 1.0],
-            vec![2.0, 5.0, 2.0],
-            vec![1.0, 2.0, 1.0],
-        ]);
+        let matrix = Matrix::from_rows(&[vec![1.0, 2.0, 1.0], vec![2.0, 5.0, 2.0], vec![1.0, 2.0, 1.0]]);
         assert_eq!(matrix.cholesky(), Err(NotPositiveDefinite { rank: 2 }));
     }
 
     #[test]
     fn dependent_columns_are_left_out_of_the_basis() {
-        let pairs = Matrix::from_rows(&[
-            vec![1.0, -1.0, 0.0],
-            vec![0.0, 1.0, -1.0],
-            vec![-1.0, 0.0, 1.0],
-        ])
-        .transpose();
+        let pairs = Matrix::from_rows(&[vec![1.0, -1.0, 0.0], vec![0.0, 1.0, -1.0], vec![-1.0, 0.0, 1.0]]).transpose();
         let basis = pairs.orthonormal_columns();
         assert_eq!(basis.columns(), 2);
         let gram = basis.transpose().multiply(&basis);
         for (row, column) in gram.places() {
             let wanted = if row == column { 1.0 } else { 0.0 };
-            assert!(
-                (gram[(row, column)] - DoubleDouble::from(wanted))
-                    .value()
-                    .abs()
-                    < 1e-31
-            );
+            assert!((gram[(row, column)] - DoubleDouble::from(wanted)).value().abs() < 1e-31);
         }
     }
 }

@@ -7,7 +7,5 @@
 mod double_double;
 mod matrix;
 
-pub use double_double::{
-    DoubleDouble, Split, two_difference, two_product, two_product_split, two_sum,
-};
+pub use double_double::{DoubleDouble, Split, two_difference, two_product, two_product_split, two_sum};
 pub use matrix::{Matrix, NotPositiveDefinite};

@@ -49,11 +49,7 @@ struct Compensated {
 
 impl Compensated {
     fn new(length: usize) -> Compensated {
-        Compensated {
-            high: vec![0.0; length],
-            low: vec![0.0; length],
-            total: vec![DoubleDouble::ZERO; length],
-        }
+        Compensated { high: vec![0.0; length], low: vec![0.0; length], total: vec![DoubleDouble::ZERO; length] }
     }
 
     fn fold(&mut self) {
@@ -96,15 +92,11 @@ impl Rows<'_> {
     /// `work` for each part that has rows, in order, on two threads where the data are large.
     fn in_parts<T: Send>(&self, work: impl Fn(std::ops::Range<usize>) -> T + Sync) -> Vec<T> {
         let run = |parts: std::ops::Range<usize>| -> Vec<T> {
-            parts
-                .map(|part| self.part(part))
-                .filter(|rows| !rows.is_empty())
-                .map(&work)
-                .collect()
+            parts.map(|part| self.part(part)).filter(|rows| !rows.is_empty()).map(&work).collect()
         };
         // Asking for the number of processors costs more than small data do, so the size comes first.
-        let threaded = self.values.len() >= THREADED_FROM
-            && std::thread::available_parallelism().is_ok_and(|processors| processors.get() > 1);
+        let threaded =
+            self.values.len() >= THREADED_FROM && std::thread::available_parallelism().is_ok_and(|processors| processors.get() > 1);
         if !threaded {
             return run(0..PARTS);
         }
@@ -122,19 +114,12 @@ impl Rows<'_> {
     /// The first pass.
     pub fn centres(&self) -> Result<Centres, Refusal> {
         let width = self.occasions;
-        let first = (0..self.subjects())
-            .find(|&subject| self.keeps(subject))
-            .ok_or(Refusal::NoSubjects)?;
+        let first = (0..self.subjects()).find(|&subject| self.keeps(subject)).ok_or(Refusal::NoSubjects)?;
         let shift = &self.values[first * width..(first + 1) * width];
         if let Some(occasion) = shift.iter().position(|value| !value.is_finite()) {
-            return Err(Refusal::NotFinite {
-                subject: first,
-                occasion,
-            });
+            return Err(Refusal::NotFinite { subject: first, occasion });
         }
-        let mut parts = self
-            .in_parts(|rows| self.first_part(rows, shift))
-            .into_iter();
+        let mut parts = self.in_parts(|rows| self.first_part(rows, shift)).into_iter();
         let mut all = parts.next().ok_or(Refusal::NoSubjects)?;
         let mut not_finite = all.not_finite;
         for part in parts {
@@ -148,15 +133,10 @@ impl Rows<'_> {
             not_finite = not_finite.or(part.not_finite);
         }
         if let Some(place) = not_finite {
-            return Err(Refusal::NotFinite {
-                subject: place / width,
-                occasion: place % width,
-            });
+            return Err(Refusal::NotFinite { subject: place / width, occasion: place % width });
         }
         for occasion in 0..width {
-            let largest = (0..self.cells)
-                .map(|cell| all.largest[cell * width + occasion])
-                .fold(0.0, f64::max);
+            let largest = (0..self.cells).map(|cell| all.largest[cell * width + occasion]).fold(0.0, f64::max);
             if largest > LARGEST || (largest > 0.0 && largest < SMALLEST) {
                 return Err(Refusal::OutOfRange { occasion });
             }
@@ -165,16 +145,11 @@ impl Rows<'_> {
         for (place, centre) in centre.iter_mut().enumerate() {
             let count = all.count[place / width];
             if count > 0 {
-                let mean = DoubleDouble::from(shift[place % width])
-                    + all.sum.total[place] / DoubleDouble::from(count);
+                let mean = DoubleDouble::from(shift[place % width]) + all.sum.total[place] / DoubleDouble::from(count);
                 *centre = mean.value();
             }
         }
-        Ok(Centres {
-            count: all.count,
-            centre,
-            largest: all.largest,
-        })
+        Ok(Centres { count: all.count, centre, largest: all.largest })
     }
 
     fn first_part(&self, rows: std::ops::Range<usize>, shift: &[f64]) -> FirstPart {
@@ -233,26 +208,16 @@ impl Rows<'_> {
             _ => self.second_part::<0>(rows, centre),
         };
         let width = self.occasions;
-        let mut all = (
-            Compensated::new(self.cells * width),
-            Compensated::new(self.cells * width * (width + 1) / 2),
-        );
+        let mut all = (Compensated::new(self.cells * width), Compensated::new(self.cells * width * (width + 1) / 2));
         for (sum, product) in self.in_parts(work) {
             all.0.merge(&sum);
             all.1.merge(&product);
         }
-        Deviations {
-            sum: all.0.total,
-            product: all.1.total,
-        }
+        Deviations { sum: all.0.total, product: all.1.total }
     }
 
     /// `FIXED` is the number of occasions where it is known when compiling, otherwise 0.
-    fn second_part<const FIXED: usize>(
-        &self,
-        rows: std::ops::Range<usize>,
-        centre: &[f64],
-    ) -> (Compensated, Compensated) {
+    fn second_part<const FIXED: usize>(&self, rows: std::ops::Range<usize>, centre: &[f64]) -> (Compensated, Compensated) {
         let width = if FIXED == 0 { self.occasions } else { FIXED };
         let pairs = width * (width + 1) / 2;
         let mut sum = Compensated::new(self.cells * width);
@@ -299,6 +264,5 @@ impl Rows<'_> {
 
 fn blocks(rows: std::ops::Range<usize>) -> impl Iterator<Item = std::ops::Range<usize>> {
     let end = rows.end;
-    rows.step_by(BLOCK)
-        .map(move |start| start..(start + BLOCK).min(end))
+    rows.step_by(BLOCK).map(move |start| start..(start + BLOCK).min(end))
 }

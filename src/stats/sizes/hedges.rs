@@ -9,9 +9,7 @@ fn check(m: f64) -> Result<(), Refusal> {
     if m.is_finite() && m > 1.0 {
         Ok(())
     } else {
-        Err(Refusal::new(format!(
-            "Hedges' correction needs more than 1 degree of freedom for the standard deviation; there are {m}"
-        )))
+        Err(Refusal::new(format!("Hedges' correction needs more than 1 degree of freedom for the standard deviation; there are {m}")))
     }
 }
 
@@ -34,8 +32,7 @@ pub fn hedges_j_exact(m: f64) -> Result<f64, Refusal> {
     check(m)?;
     // ln Gamma(a) - ln Gamma(a - 1/2) - ln(a) / 2 with the large parts taken out by hand.
     let a = m / 2.0;
-    let log_j =
-        -(a - 1.0) * log1p(-0.5 / a) - 0.5 + (stirling_error(a) - stirling_error(a - 0.5));
+    let log_j = -(a - 1.0) * log1p(-0.5 / a) - 0.5 + (stirling_error(a) - stirling_error(a - 0.5));
     Ok(exp(log_j))
 }
 

@@ -8,13 +8,10 @@ use std::fmt;
 
 use super::dist::DistributionError;
 
-pub use eta_squared::{
-    EffectSum, generalized_eta_squared, partial_eta_squared, partial_eta_squared_interval,
-};
+pub use eta_squared::{EffectSum, generalized_eta_squared, partial_eta_squared, partial_eta_squared_interval};
 pub use hedges::{hedges_j_approximate, hedges_j_exact};
 pub use standardized_change::{
-    ChangeInterval, IntervalMethod, PairedSummary, Standardizer, change_interval,
-    standardized_change, standardizer_value,
+    ChangeInterval, IntervalMethod, PairedSummary, Standardizer, change_interval, standardized_change, standardizer_value,
 };
 
 /// Why an effect size or its interval is not given, in words for the reader of a report.
