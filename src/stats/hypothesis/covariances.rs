@@ -106,6 +106,8 @@ pub fn box_m(moments: &Moments) -> Result<BoxM, Refusal> {
         f,
         df1,
         df2,
-        chi_squared: m * (1.0 - c1), c1, c2
+        chi_squared: m * (1.0 - c1),
+        c1,
+        c2,
     })
 }

@@ -25,6 +25,15 @@ pub(super) struct Rows<'a> {
     pub cell: &'a [u32],
     pub cells: usize,
     pub kept: Option<&'a [bool]>,
+    /// Whether two threads share the parts; the result is the same.
+    pub threaded: bool,
+}
+
+/// Whether two threads are worth starting for so many values.
+pub(super) fn worth_threads(values: usize) -> bool {
+    // Asking for the number of processors costs more than small data do, so the size comes first.
+    values >= THREADED_FROM
+        && std::thread::available_parallelism().is_ok_and(|processors| processors.get() > 1)
 }
 
 /// Counts, sums and largest magnitudes of the first pass, all cell by cell.
@@ -93,7 +102,7 @@ impl Rows<'_> {
         edge(part)..edge(part + 1)
     }
 
-    /// `work` for each part that has rows, in order, on two threads where the data are large.
+    /// `work` for each part that has rows, in order.
     fn in_parts<T: Send>(&self, work: impl Fn(std::ops::Range<usize>) -> T + Sync) -> Vec<T> {
         let run = |parts: std::ops::Range<usize>| -> Vec<T> {
             parts
@@ -102,10 +111,7 @@ impl Rows<'_> {
                 .map(&work)
                 .collect()
         };
-        // Asking for the number of processors costs more than small data do, so the size comes first.
-        let threaded = self.values.len() >= THREADED_FROM
-            && std::thread::available_parallelism().is_ok_and(|processors| processors.get() > 1);
-        if !threaded {
+        if !self.threaded {
             return run(0..PARTS);
         }
         std::thread::scope(|scope| {
@@ -301,4 +307,44 @@ fn blocks(rows: std::ops::Range<usize>) -> impl Iterator<Item = std::ops::Range<
     let end = rows.end;
     rows.step_by(BLOCK)
         .map(move |start| start..(start + BLOCK).min(end))
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn two_threads_give_the_bits_of_one() {
+        let (subjects, occasions) = (3 * PARTS * BLOCK / 2 + 17, 3);
+        let mut state = 1_u64;
+        let mut next = || {
+            state = state
+                .wrapping_mul(6_364_136_223_846_793_005)
+                .wrapping_add(1_442_695_040_888_963_407);
+            (state >> 11) as f64 / 1e10
+        };
+        let values: Vec<f64> = (0..subjects * occasions).map(|_| next()).collect();
+        let cell: Vec<u32> = (0..subjects)
+            .map(|subject| (subject % 5 / 2) as u32)
+            .collect();
+        let rows = |threaded| Rows {
+            values: &values,
+            occasions,
+            cell: &cell,
+            cells: 3,
+            kept: None,
+            threaded,
+        };
+        let (one, two) = (rows(false), rows(true));
+        let centres = [one.centres(), two.centres()].map(|centres| centres.expect("finite values"));
+        assert_eq!(centres[0].centre, centres[1].centre);
+        assert_eq!(centres[0].largest, centres[1].largest);
+        assert_eq!(centres[0].count, centres[1].count);
+        let deviations = [
+            one.deviations(&centres[0].centre),
+            two.deviations(&centres[0].centre),
+        ];
+        assert_eq!(deviations[0].sum, deviations[1].sum);
+        assert_eq!(deviations[0].product, deviations[1].product);
+    }
 }

@@ -1,4 +1,4 @@
-use super::accumulate::Rows;
+use super::accumulate::{Rows, worth_threads};
 use super::refusal::Refusal;
 use crate::stats::linear::{DoubleDouble, Matrix};
 
@@ -41,6 +41,7 @@ pub struct ErrorMatrix {
     /// Cells kept that have subjects.
     pub cells: usize,
     within: Matrix,
+    pooled: Matrix,
     rounding: Vec<f64>,
 }
 
@@ -91,6 +92,7 @@ impl Moments {
             cell,
             cells,
             kept,
+            threaded: worth_threads(values.len()),
         };
         let centres = rows.centres()?;
         let deviations = rows.deviations(&centres.centre);
@@ -243,6 +245,7 @@ impl Moments {
             subjects,
             cells,
             within: within.clone(),
+            pooled,
             rounding,
         })
     }
@@ -272,10 +275,11 @@ impl ErrorMatrix {
 
     /// ln det M'EM.
     ///
-    /// The rank is judged by the pivots of an elimination that takes the relatively largest next: a pivot is the sum of
-    /// squares of what is left of a contrast after those before it, and counts as zero by the rule of [`Moments`], or
-    /// below 1e-24 of the contrast's own sum of squares, where the arithmetic ends. Neither judgement changes with the
-    /// units of the occasions.
+    /// M is first brought to a basis in which the occasion with the largest variance enters one contrast only, then the
+    /// next largest, and so on: whatever the units, no contrast drowns in another, and the judgement of the rank does not
+    /// depend on the basis given. The rank is judged by the pivots of an elimination that takes the relatively largest
+    /// next: a pivot is the sum of squares of what is left of a contrast after those before it, and counts as zero by the
+    /// rule of [`Moments`], or below 1e-24 of the contrast's own sum of squares, where the arithmetic ends.
     ///
     /// # Errors
     /// More contrasts than degrees of freedom, or contrasts that are linear copies of others.
@@ -290,13 +294,12 @@ impl ErrorMatrix {
         if size > self.df {
             return Err(singular(self.df));
         }
+        let (mut weights, mut logarithm) = self.graded_basis();
+        let mut left = self.pooled.congruence(&weights.transpose());
         let own: Vec<f64> = (0..size)
-            .map(|index| self.matrix[(index, index)].value())
+            .map(|index| left[(index, index)].value())
             .collect();
-        let mut left = self.matrix.clone();
-        let mut weights = self.within.transpose();
         let mut waiting: Vec<usize> = (0..size).collect();
-        let mut logarithm = DoubleDouble::ZERO;
         while !waiting.is_empty() {
             let share = |index: usize| {
                 if own[index] > 0.0 {
@@ -324,13 +327,48 @@ impl ErrorMatrix {
                     let known = factor * left[(pivot, column)];
                     left[(row, column)] -= known;
                 }
-                for occasion in 0..weights.columns() {
-                    let known = factor * weights[(pivot, occasion)];
-                    weights[(row, occasion)] -= known;
-                }
+                weights.subtract_row(row, pivot, factor);
             }
         }
         Ok(logarithm)
+    }
+
+    /// Rows W that span the contrasts, reduced so that each has a 1 where the others have 0, at the occasions of largest
+    /// variance; and 2 ln|det T| with M' = T W, so that det M'EM = det T^2 det WEW'.
+    fn graded_basis(&self) -> (Matrix, DoubleDouble) {
+        // Rows of M' have length 1: an entry below this is what is left of an exact zero.
+        const NEGLIGIBLE: f64 = 1e-15;
+        let mut rows = self.within.transpose();
+        let mut occasions: Vec<usize> = (0..rows.columns()).collect();
+        let variance = |occasion: usize| self.pooled[(occasion, occasion)].value();
+        occasions.sort_by(|&a, &b| variance(b).total_cmp(&variance(a)));
+        let mut waiting: Vec<usize> = (0..rows.rows()).collect();
+        let mut logarithm = DoubleDouble::ZERO;
+        for occasion in occasions {
+            let size = |row: usize| rows[(row, occasion)].value().abs();
+            let Some(best) = (0..waiting.len()).reduce(|best, next| {
+                if size(waiting[next]) > size(waiting[best]) {
+                    next
+                } else {
+                    best
+                }
+            }) else {
+                break;
+            };
+            if size(waiting[best]) <= NEGLIGIBLE {
+                continue;
+            }
+            let pivot = waiting.swap_remove(best);
+            let value = rows[(pivot, occasion)];
+            logarithm += value.abs().ln();
+            rows.divide_row(pivot, value);
+            for row in (0..rows.rows()).filter(|&row| row != pivot) {
+                let factor = rows[(row, occasion)];
+                rows.subtract_row(row, pivot, factor);
+                rows[(row, occasion)] = DoubleDouble::ZERO;
+            }
+        }
+        (rows, logarithm + logarithm)
     }
 
     /// The sum of squares that rounding of the values alone may leave in a combination of occasions.

@@ -156,7 +156,9 @@ impl fmt::Display for Refusal {
                 out,
                 "the F approximation to Box's M has no value here: M lies beyond the range that it covers"
             ),
-            Refusal::Probability { reason } => write!(out, "the probability could not be computed: {reason}"),
+            Refusal::Probability { reason } => {
+                write!(out, "the probability could not be computed: {reason}")
+            }
             Refusal::ConstantOccasion { cell, occasion } => write!(
                 out,
                 "the values of group {} at occasion {} do not vary, so that they correlate with nothing",
