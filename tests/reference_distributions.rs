@@ -19,9 +19,8 @@ struct Case {
 }
 
 fn cases(text: &str) -> Vec<Case> {
-    let mut reader = csv::ReaderBuilder::new()
-        .comment(Some(b'#'))
-        .from_reader(text.as_bytes());
+    let mut reader =
+        csv::ReaderBuilder::new().comment(Some(b'#')).from_reader(text.as_bytes());
     reader
         .records()
         .map(|row| {
@@ -71,7 +70,9 @@ fn allowed(case: &Case) -> f64 {
         _ => case.arguments[1],
     };
     match case.function.as_str() {
-        name if name.contains("delta") || name.contains("lambda") => tolerance::NONCENTRALITY_LIMIT,
+        name if name.contains("delta") || name.contains("lambda") => {
+            tolerance::NONCENTRALITY_LIMIT
+        }
         name if name.starts_with("nc") => tolerance::NONCENTRAL,
         _ if largest_df > 1000.0 => tolerance::TAIL_LARGE_DF,
         _ => tolerance::TAIL,
@@ -86,12 +87,7 @@ fn check_file(text: &str) {
     for case in cases {
         let got = compute(&case);
         if case.value.abs() < 1e-300 && case.value != 0.0 || case.value == 0.0 && got < 1e-300 {
-            assert!(
-                got < 1.1e-300,
-                "{} {:?}: {got:e}",
-                case.function,
-                case.arguments
-            );
+            assert!(got < 1.1e-300, "{} {:?}: {got:e}", case.function, case.arguments);
             continue;
         }
         let error = relative_error(got, case.value);
@@ -101,9 +97,7 @@ fn check_file(text: &str) {
                 case.function, case.arguments, case.value
             ));
         }
-        let entry = worst
-            .entry(case.function.clone())
-            .or_insert((0.0, Vec::new()));
+        let entry = worst.entry(case.function.clone()).or_insert((0.0, Vec::new()));
         if error >= entry.0 {
             *entry = (error, case.arguments.clone());
         }
@@ -112,12 +106,7 @@ fn check_file(text: &str) {
     for (function, (error, arguments)) in &worst {
         println!("{function:16} {error:.1e} at {arguments:?}");
     }
-    assert!(
-        failures.is_empty(),
-        "{} values off:\n{}",
-        failures.len(),
-        failures.join("\n")
-    );
+    assert!(failures.is_empty(), "{} values off:\n{}", failures.len(), failures.join("\n"));
 }
 
 #[test]

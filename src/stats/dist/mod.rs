@@ -49,19 +49,11 @@ pub enum DistributionError {
 impl fmt::Display for DistributionError {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
-            Self::OutOfDomain {
-                distribution,
-                argument,
-                value,
-                expected,
-            } => write!(
+            Self::OutOfDomain { distribution, argument, value, expected } => write!(
                 f,
                 "{distribution} distribution: {argument} is {value}, but it must be {expected}"
             ),
-            Self::OutOfReach {
-                distribution,
-                reason,
-            } => {
+            Self::OutOfReach { distribution, reason } => {
                 write!(f, "{distribution} distribution: {reason}")
             }
         }
@@ -89,10 +81,7 @@ impl Tail {
     /// ```
     pub fn reported(p: f64) -> Self {
         if p < SMALLEST_REPORTED_P {
-            Self {
-                p: SMALLEST_REPORTED_P,
-                bound: true,
-            }
+            Self { p: SMALLEST_REPORTED_P, bound: true }
         } else {
             Self { p, bound: false }
         }
@@ -104,25 +93,12 @@ impl Tail {
 pub(crate) struct Domain(pub(crate) &'static str);
 
 impl Domain {
-    pub(crate) fn finite(
-        self,
-        argument: &'static str,
-        value: f64,
-    ) -> Result<(), DistributionError> {
+    pub(crate) fn finite(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
         self.check(value.is_finite(), argument, value, "a finite number")
     }
 
-    pub(crate) fn positive(
-        self,
-        argument: &'static str,
-        value: f64,
-    ) -> Result<(), DistributionError> {
-        self.check(
-            value.is_finite() && value > 0.0,
-            argument,
-            value,
-            "finite and above 0",
-        )
+    pub(crate) fn positive(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
+        self.check(value.is_finite() && value > 0.0, argument, value, "finite and above 0")
     }
 
     pub(crate) fn not_negative(
@@ -130,12 +106,7 @@ impl Domain {
         argument: &'static str,
         value: f64,
     ) -> Result<(), DistributionError> {
-        self.check(
-            value.is_finite() && value >= 0.0,
-            argument,
-            value,
-            "finite and not below 0",
-        )
+        self.check(value.is_finite() && value >= 0.0, argument, value, "finite and not below 0")
     }
 
     pub(crate) fn probability(
@@ -143,19 +114,11 @@ impl Domain {
         argument: &'static str,
         value: f64,
     ) -> Result<(), DistributionError> {
-        self.check(
-            value > 0.0 && value < 1.0,
-            argument,
-            value,
-            "between 0 and 1, both excluded",
-        )
+        self.check(value > 0.0 && value < 1.0, argument, value, "between 0 and 1, both excluded")
     }
 
     pub(crate) fn out_of_reach(self, reason: &'static str) -> DistributionError {
-        DistributionError::OutOfReach {
-            distribution: self.0,
-            reason,
-        }
+        DistributionError::OutOfReach { distribution: self.0, reason }
     }
 
     fn check(
@@ -168,12 +131,7 @@ impl Domain {
         if holds {
             Ok(())
         } else {
-            Err(DistributionError::OutOfDomain {
-                distribution: self.0,
-                argument,
-                value,
-                expected,
-            })
+            Err(DistributionError::OutOfDomain { distribution: self.0, argument, value, expected })
         }
     }
 }

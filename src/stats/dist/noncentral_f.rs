@@ -78,11 +78,7 @@ fn mixture(f: f64, df1: f64, df2: f64, lambda: f64) -> Result<Mixture, Distribut
         // I_y(a, b) - I_y(a + 1, b)
         difference: point.density_factor() / point.a,
     };
-    let mut sum = Mixture {
-        lower: 0.0,
-        upper: 0.0,
-        slope: 0.0,
-    };
+    let mut sum = Mixture { lower: 0.0, upper: 0.0, slope: 0.0 };
     let mut previous = (0.0, 0.0);
     // True once the term no longer counts and the terms shrink.
     let mut add = |term: Term| {
@@ -140,21 +136,13 @@ fn tails(f: f64, df1: f64, df2: f64, lambda: f64) -> Result<Mixture, Distributio
     check(f, df1, df2)?;
     DOMAIN.not_negative("the noncentrality", lambda)?;
     if f == 0.0 {
-        return Ok(Mixture {
-            lower: 0.0,
-            upper: 1.0,
-            slope: 0.0,
-        });
+        return Ok(Mixture { lower: 0.0, upper: 1.0, slope: 0.0 });
     }
     mixture(f, df1, df2, lambda)
 }
 
 fn within_reach(p: f64, f: f64) -> Result<f64, DistributionError> {
-    if p > 1e-290 || f == 0.0 {
-        Ok(p.min(1.0))
-    } else {
-        Err(DOMAIN.out_of_reach(TOO_FAR))
-    }
+    if p > 1e-290 || f == 0.0 { Ok(p.min(1.0)) } else { Err(DOMAIN.out_of_reach(TOO_FAR)) }
 }
 
 /// P(F <= `f`) with `df1` and `df2` degrees of freedom and noncentrality `lambda`.
@@ -232,11 +220,8 @@ fn solve(
     let mut root = first_guess(f, df1, df2, if side == Side::Lower { -z } else { z });
     for _ in 0..200 {
         let here = mixture(f, df1, df2, root * root)?;
-        let (tail, sign) = if side == Side::Lower {
-            (here.upper, 1.0)
-        } else {
-            (here.lower, -1.0)
-        };
+        let (tail, sign) =
+            if side == Side::Lower { (here.upper, 1.0) } else { (here.lower, -1.0) };
         if sign * (tail - target) > 0.0 {
             right = right.min(root);
         } else {
