@@ -7,26 +7,29 @@ D = lambda s: mpf(float(s))      # the double that a program reads
 
 
 def betainc(a, b, x):
-    """I_x(a, b) by the series of 2F1(1, a + b; a + 1; x), positive terms only."""
-    y = 1 - x
-    if x * (b + 1) > y * (a + 1):
-        return 1 - betainc(b, a, y)
-    s = t = mpf(1)
-    n = 0
-    while t > s * mpf(10) ** -38:
-        t *= (a + b + n) / (a + 1 + n) * x
-        s += t
-        n += 1
-    return M.exp(a * M.log(x) + b * M.log(y) + M.loggamma(a + b) - M.loggamma(a + 1) - M.loggamma(b)) * s
+    """I_x(a, b) by the series of 2F1(a + b, 1; a + 1; x), positive terms only; its complement above x = 1/2, with
+    digits to spare for the subtraction."""
+    if x > mpf(1) / 2:
+        with mp.workdps(400):
+            return 1 - betainc(b, a, 1 - x)
+    with mp.workdps(mp.dps + 10):
+        y = 1 - x
+        s = t = mpf(1)
+        n = 0
+        while t > s * mpf(10) ** -mp.dps:
+            t *= (a + b + n) / (a + 1 + n) * x
+            s += t
+            n += 1
+        return M.exp(a * M.log(x) + b * M.log(y) + M.loggamma(a + b) - M.loggamma(a + 1) - M.loggamma(b)) * s
 
 
 def t_sf(t, df):
-    with mp.workdps(60):
+    with mp.workdps(400):
         return betainc(df / 2, mpf(1) / 2, df / (df + t * t)) / 2
 
 
 def f_sf(f, a, b):
-    with mp.workdps(60):
+    with mp.workdps(400):
         return betainc(b / 2, a / 2, b / (b + a * f))
 
 
