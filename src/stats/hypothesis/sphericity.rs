@@ -89,6 +89,8 @@ pub fn epsilons(error: &ErrorMatrix) -> Result<Epsilons, Refusal> {
 pub struct Mauchly {
     /// W = det E / (tr E / q)^q; Mauchly 1940.
     pub w: f64,
+    /// ln W, which is there even where W is too small for a double.
+    pub log_w: f64,
     /// -nu rho ln W with rho = 1 - (2 q^2 + q + 2) / (6 q nu); Anderson 1958.
     pub chi_squared: f64,
     /// q (q + 1) / 2 - 1.
@@ -140,6 +142,7 @@ pub fn mauchly(moments: &Moments, within: &Matrix, kept: &[bool]) -> Result<Mauc
     let second_term = (q + 2.0) * (q - 1.0) * (q - 2.0) * (2.0 * q * q * q + 6.0 * q * q + 3.0 * q + 2.0) / (288.0 * scale * scale);
     Ok(Mauchly {
         w: libm::exp(log_w.value()),
+        log_w: log_w.value(),
         chi_squared: (-log_w * DoubleDouble::from(nu * rho)).value(),
         df: q * (q + 1.0) / 2.0 - 1.0,
         second_term,

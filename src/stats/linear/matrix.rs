@@ -130,6 +130,21 @@ impl Matrix {
         Matrix { entries: self.entries.iter().map(|&entry| entry * factor).collect(), ..*self }
     }
 
+    /// Takes `factor` times row `from` off `row`.
+    pub fn subtract_row(&mut self, row: usize, from: usize, factor: DoubleDouble) {
+        for column in 0..self.columns {
+            let known = factor * self[(from, column)];
+            self[(row, column)] -= known;
+        }
+    }
+
+    /// Divides a row by a number other than zero.
+    pub fn divide_row(&mut self, row: usize, divisor: DoubleDouble) {
+        for column in 0..self.columns {
+            self[(row, column)] = self[(row, column)] / divisor;
+        }
+    }
+
     /// Sum of the diagonal.
     pub fn trace(&self) -> DoubleDouble {
         (0..self.rows.min(self.columns)).map(|index| self[(index, index)]).sum()

@@ -1,4 +1,4 @@
-use super::accumulate::Rows;
+use super::accumulate::{Rows, worth_threads};
 use super::refusal::Refusal;
 use crate::stats::linear::{DoubleDouble, Matrix};
 
@@ -41,6 +41,7 @@ pub struct ErrorMatrix {
     /// Cells kept that have subjects.
     pub cells: usize,
     within: Matrix,
+    pooled: Matrix,
     rounding: Vec<f64>,
 }
 
@@ -65,11 +66,34 @@ impl Moments {
     ///
     /// # Panics
     /// Where lengths do not agree or a cell is out of range: a slip of the caller, not of the data.
-    pub fn new(values: &[f64], occasions: usize, cell: &[u32], cells: usize, kept: Option<&[bool]>) -> Result<Moments, Refusal> {
-        assert_eq!(values.len(), cell.len() * occasions, "one row of values for each subject");
-        assert!(kept.is_none_or(|kept| kept.len() == cell.len()), "one flag for each subject");
-        assert!(cell.iter().all(|&cell| (cell as usize) < cells), "every cell is below the number of cells");
-        let rows = Rows { values, occasions, cell, cells, kept };
+    pub fn new(
+        values: &[f64],
+        occasions: usize,
+        cell: &[u32],
+        cells: usize,
+        kept: Option<&[bool]>,
+    ) -> Result<Moments, Refusal> {
+        assert_eq!(
+            values.len(),
+            cell.len() * occasions,
+            "one row of values for each subject"
+        );
+        assert!(
+            kept.is_none_or(|kept| kept.len() == cell.len()),
+            "one flag for each subject"
+        );
+        assert!(
+            cell.iter().all(|&cell| (cell as usize) < cells),
+            "every cell is below the number of cells"
+        );
+        let rows = Rows {
+            values,
+            occasions,
+            cell,
+            cells,
+            kept,
+            threaded: worth_threads(values.len()),
+        };
         let centres = rows.centres()?;
         let deviations = rows.deviations(&centres.centre);
         let pairs = occasions * (occasions + 1) / 2;
@@ -101,7 +125,10 @@ impl Moments {
             }
             moments
         });
-        Ok(Moments { occasions, cells: cells.collect() })
+        Ok(Moments {
+            occasions,
+            cells: cells.collect(),
+        })
     }
 
     /// Moments that were not read from rows, as where they are drawn directly from their distribution.
@@ -113,7 +140,10 @@ impl Moments {
         for cell in &cells {
             assert_eq!(cell.mean.len(), occasions, "one number of occasions");
             assert_eq!(cell.largest.len(), occasions, "one number of occasions");
-            assert_eq!((cell.cross_products.rows(), cell.cross_products.columns()), (occasions, occasions));
+            assert_eq!(
+                (cell.cross_products.rows(), cell.cross_products.columns()),
+                (occasions, occasions)
+            );
         }
         Moments { occasions, cells }
     }
@@ -146,13 +176,19 @@ impl Moments {
     /// Covariance of two occasions in a cell (a variance where they are the same); none below two subjects.
     pub fn covariance(&self, cell: usize, first: usize, second: usize) -> Option<f64> {
         let cell = &self.cells[cell];
-        (cell.subjects >= 2).then(|| (cell.cross_products[(first, second)] / DoubleDouble::from(cell.subjects - 1)).value())
+        (cell.subjects >= 2).then(|| {
+            (cell.cross_products[(first, second)] / DoubleDouble::from(cell.subjects - 1)).value()
+        })
     }
 
     /// Standard deviation of a cell at an occasion; none below two subjects.
     pub fn standard_deviation(&self, cell: usize, occasion: usize) -> Option<f64> {
         let cell = &self.cells[cell];
-        (cell.subjects >= 2).then(|| (cell.cross_products[(occasion, occasion)] / DoubleDouble::from(cell.subjects - 1)).sqrt().value())
+        (cell.subjects >= 2).then(|| {
+            (cell.cross_products[(occasion, occasion)] / DoubleDouble::from(cell.subjects - 1))
+                .sqrt()
+                .value()
+        })
     }
 
     /// Correlation of two occasions within a cell.
@@ -171,8 +207,11 @@ impl Moments {
                 return Err(Refusal::ConstantOccasion { cell, occasion });
             }
         }
-        let product = moments.cross_products[(first, first)] * moments.cross_products[(second, second)];
-        Ok((moments.cross_products[(first, second)] / product.sqrt()).value().clamp(-1.0, 1.0))
+        let product =
+            moments.cross_products[(first, first)] * moments.cross_products[(second, second)];
+        Ok((moments.cross_products[(first, second)] / product.sqrt())
+            .value()
+            .clamp(-1.0, 1.0))
     }
 
     /// M'EM pooled over the cells kept, for `within` (occasions by contrasts) with orthonormal columns.
@@ -183,7 +222,12 @@ impl Moments {
         let mut pooled = Matrix::zeros(self.occasions, self.occasions);
         let mut rounding = vec![0.0_f64; self.occasions];
         let (mut subjects, mut cells) = (0, 0);
-        for (cell, _) in self.cells.iter().zip(kept).filter(|(cell, kept)| **kept && cell.subjects > 0) {
+        for (cell, _) in self
+            .cells
+            .iter()
+            .zip(kept)
+            .filter(|(cell, kept)| **kept && cell.subjects > 0)
+        {
             pooled.accumulate(&cell.cross_products);
             subjects += cell.subjects;
             cells += 1;
@@ -195,7 +239,15 @@ impl Moments {
             return Err(Refusal::NoErrorDf);
         }
         let df = subjects - cells;
-        Ok(ErrorMatrix { matrix: pooled.congruence(within), df, subjects, cells, within: within.clone(), rounding })
+        Ok(ErrorMatrix {
+            matrix: pooled.congruence(within),
+            df,
+            subjects,
+            cells,
+            within: within.clone(),
+            pooled,
+            rounding,
+        })
     }
 }
 
@@ -211,36 +263,58 @@ impl ErrorMatrix {
     /// The trace is zero by the rule of [`Moments`].
     pub fn trace(&self) -> Result<DoubleDouble, Refusal> {
         let trace = self.matrix.trace();
-        let noise: f64 = (0..self.contrasts()).map(|contrast| self.noise(&self.within.column(contrast))).sum();
-        if trace.value() <= noise { Err(Refusal::NoErrorVariance) } else { Ok(trace) }
+        let noise: f64 = (0..self.contrasts())
+            .map(|contrast| self.noise(&self.within.column(contrast)))
+            .sum();
+        if trace.value() <= noise {
+            Err(Refusal::NoErrorVariance)
+        } else {
+            Ok(trace)
+        }
     }
 
     /// ln det M'EM.
     ///
-    /// The rank is judged by the pivots of an elimination that takes the relatively largest next: a pivot is the sum of
-    /// squares of what is left of a contrast after those before it, and counts as zero by the rule of [`Moments`], or
-    /// below 1e-24 of the contrast's own sum of squares, where the arithmetic ends. Neither judgement changes with the
-    /// units of the occasions.
+    /// M is first brought to a basis in which the occasion with the largest variance enters one contrast only, then the
+    /// next largest, and so on: whatever the units, no contrast drowns in another, and the judgement of the rank does not
+    /// depend on the basis given. The rank is judged by the pivots of an elimination that takes the relatively largest
+    /// next: a pivot is the sum of squares of what is left of a contrast after those before it, and counts as zero by the
+    /// rule of [`Moments`], or below 1e-24 of the contrast's own sum of squares, where the arithmetic ends.
     ///
     /// # Errors
     /// More contrasts than degrees of freedom, or contrasts that are linear copies of others.
     pub fn log_determinant(&self) -> Result<DoubleDouble, Refusal> {
         const PIVOT: f64 = 1e-24;
         let size = self.contrasts();
-        let singular = |rank| Refusal::SingularError { rank, contrasts: size, error_df: self.df };
+        let singular = |rank| Refusal::SingularError {
+            rank,
+            contrasts: size,
+            error_df: self.df,
+        };
         if size > self.df {
             return Err(singular(self.df));
         }
-        let own: Vec<f64> = (0..size).map(|index| self.matrix[(index, index)].value()).collect();
-        let mut left = self.matrix.clone();
-        let mut weights = self.within.transpose();
+        let (mut weights, mut logarithm) = self.graded_basis();
+        let mut left = self.pooled.congruence(&weights.transpose());
+        let own: Vec<f64> = (0..size)
+            .map(|index| left[(index, index)].value())
+            .collect();
         let mut waiting: Vec<usize> = (0..size).collect();
-        let mut logarithm = DoubleDouble::ZERO;
         while !waiting.is_empty() {
             let share = |index: usize| {
-                if own[index] > 0.0 { left[(index, index)].value() / own[index] } else { 0.0 }
+                if own[index] > 0.0 {
+                    left[(index, index)].value() / own[index]
+                } else {
+                    0.0
+                }
             };
-            let best = (0..waiting.len()).fold(0, |best, next| if share(waiting[next]) > share(waiting[best]) { next } else { best });
+            let best = (0..waiting.len()).fold(0, |best, next| {
+                if share(waiting[next]) > share(waiting[best]) {
+                    next
+                } else {
+                    best
+                }
+            });
             let pivot = waiting.swap_remove(best);
             let value = left[(pivot, pivot)];
             if value.value() <= (PIVOT * own[pivot]).max(self.noise(weights.row(pivot))) {
@@ -253,19 +327,58 @@ impl ErrorMatrix {
                     let known = factor * left[(pivot, column)];
                     left[(row, column)] -= known;
                 }
-                for occasion in 0..weights.columns() {
-                    let known = factor * weights[(pivot, occasion)];
-                    weights[(row, occasion)] -= known;
-                }
+                weights.subtract_row(row, pivot, factor);
             }
         }
         Ok(logarithm)
     }
 
+    /// Rows W that span the contrasts, reduced so that each has a 1 where the others have 0, at the occasions of largest
+    /// variance; and 2 ln|det T| with M' = T W, so that det M'EM = det T^2 det WEW'.
+    fn graded_basis(&self) -> (Matrix, DoubleDouble) {
+        // Rows of M' have length 1: an entry below this is what is left of an exact zero.
+        const NEGLIGIBLE: f64 = 1e-15;
+        let mut rows = self.within.transpose();
+        let mut occasions: Vec<usize> = (0..rows.columns()).collect();
+        let variance = |occasion: usize| self.pooled[(occasion, occasion)].value();
+        occasions.sort_by(|&a, &b| variance(b).total_cmp(&variance(a)));
+        let mut waiting: Vec<usize> = (0..rows.rows()).collect();
+        let mut logarithm = DoubleDouble::ZERO;
+        for occasion in occasions {
+            let size = |row: usize| rows[(row, occasion)].value().abs();
+            let Some(best) = (0..waiting.len()).reduce(|best, next| {
+                if size(waiting[next]) > size(waiting[best]) {
+                    next
+                } else {
+                    best
+                }
+            }) else {
+                break;
+            };
+            if size(waiting[best]) <= NEGLIGIBLE {
+                continue;
+            }
+            let pivot = waiting.swap_remove(best);
+            let value = rows[(pivot, occasion)];
+            logarithm += value.abs().ln();
+            rows.divide_row(pivot, value);
+            for row in (0..rows.rows()).filter(|&row| row != pivot) {
+                let factor = rows[(row, occasion)];
+                rows.subtract_row(row, pivot, factor);
+                rows[(row, occasion)] = DoubleDouble::ZERO;
+            }
+        }
+        (rows, logarithm + logarithm)
+    }
+
     /// The sum of squares that rounding of the values alone may leave in a combination of occasions.
     fn noise(&self, weights: &[DoubleDouble]) -> f64 {
-        let variance: f64 =
-            weights.iter().zip(&self.rounding).map(|(weight, unit)| weight.value() * unit).map(|amount| amount * amount).sum();
+        let variance: f64 = weights
+            .iter()
+            .zip(&self.rounding)
+            .map(|(weight, unit)| weight.value() * unit)
+            .map(|amount| amount * amount)
+            .sum();
         variance * self.df as f64
     }
 }
