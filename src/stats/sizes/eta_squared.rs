@@ -81,10 +81,21 @@ pub fn generalized_eta_squared(
 ) -> Result<f64, Refusal> {
     check_sums(effects.iter().map(|e| &e.sum_of_squares).chain(errors))?;
     let own = effects.get(effect).ok_or_else(|| {
-        Refusal::new(format!("there is no effect number {} in the design", effect + 1))
+        Refusal::new(format!(
+            "there is no effect number {} in the design",
+            effect + 1
+        ))
     })?;
-    let measured: f64 = effects.iter().filter(|e| e.measured).map(|e| e.sum_of_squares).sum();
+    let measured: f64 = effects
+        .iter()
+        .filter(|e| e.measured)
+        .map(|e| e.sum_of_squares)
+        .sum();
     let error: f64 = errors.iter().sum();
-    let manipulated = if own.measured { 0.0 } else { own.sum_of_squares };
+    let manipulated = if own.measured {
+        0.0
+    } else {
+        own.sum_of_squares
+    };
     share(own.sum_of_squares, manipulated + measured + error)
 }

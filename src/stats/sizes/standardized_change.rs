@@ -77,12 +77,21 @@ impl PairedSummary {
         check_numbers(n, &[means.0, means.1, sds.0, sds.1, r], &[sds.0, sds.1])?;
         let (sd1, sd2) = sds;
         let r = within_unit(r).ok_or_else(|| {
-            Refusal::new(format!("a correlation lies between -1 and 1, this one is {r}"))
+            Refusal::new(format!(
+                "a correlation lies between -1 and 1, this one is {r}"
+            ))
         })?;
         // (s1 - s2)^2 + 2 (1 - r) s1 s2 loses nothing when r is near 1.
         let variance = (sd1 - sd2) * (sd1 - sd2) + 2.0 * (1.0 - r) * sd1 * sd2;
         let correlation = (sd1 > 0.0 && sd2 > 0.0).then_some(r);
-        Ok(Self { n, change: means.1 - means.0, sd1, sd2, sd_change: variance.sqrt(), correlation })
+        Ok(Self {
+            n,
+            change: means.1 - means.0,
+            sd1,
+            sd2,
+            sd_change: variance.sqrt(),
+            correlation,
+        })
     }
 
     /// A summary with the standard deviation of the change given.
@@ -97,7 +106,11 @@ impl PairedSummary {
         sd_change: f64,
     ) -> Result<Self, Refusal> {
         let (sd1, sd2) = sds;
-        check_numbers(n, &[means.0, means.1, sd1, sd2, sd_change], &[sd1, sd2, sd_change])?;
+        check_numbers(
+            n,
+            &[means.0, means.1, sd1, sd2, sd_change],
+            &[sd1, sd2, sd_change],
+        )?;
         let correlation = if sd1 > 0.0 && sd2 > 0.0 {
             let apart = (sd_change - (sd1 - sd2)) * (sd_change + (sd1 - sd2));
             let r = 1.0 - apart / (2.0 * sd1 * sd2);
@@ -110,7 +123,14 @@ impl PairedSummary {
         } else {
             None
         };
-        Ok(Self { n, change: means.1 - means.0, sd1, sd2, sd_change, correlation })
+        Ok(Self {
+            n,
+            change: means.1 - means.0,
+            sd1,
+            sd2,
+            sd_change,
+            correlation,
+        })
     }
 
     /// The correlation of the two occasions; absent where one of them does not vary.
@@ -136,7 +156,9 @@ fn check_numbers(n: usize, all: &[f64], sds: &[f64]) -> Result<(), Refusal> {
         )));
     }
     match sds.iter().find(|s| **s < 0.0) {
-        Some(bad) => Err(Refusal::new(format!("a standard deviation cannot be negative ({bad})"))),
+        Some(bad) => Err(Refusal::new(format!(
+            "a standard deviation cannot be negative ({bad})"
+        ))),
         None => Ok(()),
     }
 }
@@ -154,7 +176,13 @@ pub fn standardizer_value(
     summary: &PairedSummary,
     standardizer: Standardizer,
 ) -> Result<f64, Refusal> {
-    let PairedSummary { sd1, sd2, sd_change, correlation, .. } = *summary;
+    let PairedSummary {
+        sd1,
+        sd2,
+        sd_change,
+        correlation,
+        ..
+    } = *summary;
     let value = match standardizer {
         Standardizer::AverageSd => 0.5 * (sd1 + sd2),
         Standardizer::RootMeanSquareSd => (0.5 * (sd1 * sd1 + sd2 * sd2)).sqrt(),
@@ -202,7 +230,15 @@ pub fn standardized_change(
     standardizer: Standardizer,
 ) -> Result<f64, Refusal> {
     let value = standardizer_value(summary, standardizer)?;
-    Ok(summary.change / value)
+    let d = summary.change / value;
+    if d.is_finite() {
+        Ok(d)
+    } else {
+        Err(Refusal::new(format!(
+            "the change over `{}` ({value}) is too large for double precision",
+            standardizer.name()
+        )))
+    }
 }
 
 /// The interval of a standardized change.
@@ -263,11 +299,22 @@ fn exact_interval(summary: &PairedSummary, level: f64) -> Result<ChangeInterval,
     let root_n = (summary.n as f64).sqrt();
     let df = summary.n as f64 - 1.0;
     let (lower, upper) = noncentral_t::noncentrality_limits(d * root_n, df, level)?;
-    Ok(ChangeInterval { lower: lower / root_n, upper: upper / root_n, standard_error: None })
+    Ok(ChangeInterval {
+        lower: lower / root_n,
+        upper: upper / root_n,
+        standard_error: None,
+    })
 }
 
 fn root_mean_square_variance(summary: &PairedSummary, d: f64) -> Result<f64, Refusal> {
-    let PairedSummary { n, sd1, sd2, sd_change, correlation, .. } = *summary;
+    let PairedSummary {
+        n,
+        sd1,
+        sd2,
+        sd_change,
+        correlation,
+        ..
+    } = *summary;
     let m = n as f64 - 1.0;
     // Where an occasion does not vary its covariance with the other is 0, whatever r.
     let r = correlation.unwrap_or(0.0);
@@ -278,7 +325,9 @@ fn root_mean_square_variance(summary: &PairedSummary, d: f64) -> Result<f64, Ref
 }
 
 fn baseline_variance(summary: &PairedSummary, d: f64) -> Result<f64, Refusal> {
-    let PairedSummary { n, sd1, sd_change, .. } = *summary;
+    let PairedSummary {
+        n, sd1, sd_change, ..
+    } = *summary;
     let m = n as f64 - 1.0;
     Ok(d * d / (2.0 * m) + sd_change * sd_change / (m * sd1 * sd1))
 }
@@ -297,7 +346,10 @@ fn no_such_interval(standardizer: Standardizer, method: IntervalMethod) -> Refus
         (IntervalMethod::Bonett, _) => format!(
             "Bonett (2008) gives no interval for `{name}`; a bootstrap interval can be named instead"
         ),
-        (IntervalMethod::NoncentralT, Standardizer::RootMeanSquareSd | Standardizer::BaselineSd) => {
+        (
+            IntervalMethod::NoncentralT,
+            Standardizer::RootMeanSquareSd | Standardizer::BaselineSd,
+        ) => {
             format!(
                 "`{name}` does not follow a noncentral t in paired data, only `change sd` does; \
                  name Bonett's interval or a bootstrap one"
