@@ -7,11 +7,12 @@
 //! a report. Elementary functions come from `libm`, so that the bits do not
 //! depend on the processor.
 //!
-//! The general library at hand, `statrs`, is not used for these: measured
-//! against 50-digit values its F tail cancels (all digits gone by p = 1e-50), its
-//! t tail keeps 9 digits and is 0 once t squared overflows, its quantiles lose
-//! up to 13 digits at a million df and can hang below 1e-120, and its logarithms
-//! follow the processor. It serves the tests as a second opinion.
+//! The general library at hand, `statrs` 0.19, serves the tests as a second
+//! opinion only. On the reference values of `tests/reference_distributions.rs`
+//! its relative errors are: normal tail 9e-11; t tail 9e-9, and 0 once t squared
+//! overflows; F tail 5e-9 at p = 1e-30 and 8e-4 at F(1e6, 1e6) = 1.0001;
+//! chi-squared tail 3e-10 at 1e6 df; t quantile 6e-5 at 1e6 df and wrong
+//! altogether at p = 1e-12, 1 df. Its logarithms follow the processor.
 
 pub mod beta;
 pub mod chi_squared;
