@@ -6,6 +6,13 @@
 //! underflows to 0: [`Tail::reported`] turns it into a bound before it reaches
 //! a report. Elementary functions come from `libm`, so that the bits do not
 //! depend on the processor.
+//!
+//! The general library at hand, `statrs` 0.19, serves the tests as a second
+//! opinion only. On the reference values of `tests/reference_distributions.rs`
+//! its relative errors are: normal tail 9e-11; t tail 9e-9, and 0 once t squared
+//! overflows; F tail 5e-9 at p = 1e-30 and 8e-4 at F(1e6, 1e6) = 1.0001;
+//! chi-squared tail 3e-10 at 1e6 df; t quantile 6e-5 at 1e6 df and wrong
+//! altogether at p = 1e-12, 1 df. Its logarithms follow the processor.
 
 pub mod beta;
 pub mod chi_squared;
@@ -49,10 +56,19 @@ pub enum DistributionError {
 impl fmt::Display for DistributionError {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
-            Self::OutOfDomain { distribution, argument, value, expected } => {
-                write!(f, "{distribution} distribution: {argument} is {value}, but it must be {expected}")
-            }
-            Self::OutOfReach { distribution, reason } => {
+            Self::OutOfDomain {
+                distribution,
+                argument,
+                value,
+                expected,
+            } => write!(
+                f,
+                "{distribution} distribution: {argument} is {value}, but it must be {expected}"
+            ),
+            Self::OutOfReach {
+                distribution,
+                reason,
+            } => {
                 write!(f, "{distribution} distribution: {reason}")
             }
         }
@@ -79,7 +95,14 @@ impl Tail {
     /// assert_eq!(Tail::reported(0.0), Tail { p: 1e-300, bound: true });
     /// ```
     pub fn reported(p: f64) -> Self {
-        if p < SMALLEST_REPORTED_P { Self { p: SMALLEST_REPORTED_P, bound: true } } else { Self { p, bound: false } }
+        if p < SMALLEST_REPORTED_P {
+            Self {
+                p: SMALLEST_REPORTED_P,
+                bound: true,
+            }
+        } else {
+            Self { p, bound: false }
+        }
     }
 }
 
@@ -88,27 +111,76 @@ impl Tail {
 pub(crate) struct Domain(pub(crate) &'static str);
 
 impl Domain {
-    pub(crate) fn finite(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
+    pub(crate) fn finite(
+        self,
+        argument: &'static str,
+        value: f64,
+    ) -> Result<(), DistributionError> {
         self.check(value.is_finite(), argument, value, "a finite number")
     }
 
-    pub(crate) fn positive(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
-        self.check(value.is_finite() && value > 0.0, argument, value, "finite and above 0")
+    pub(crate) fn positive(
+        self,
+        argument: &'static str,
+        value: f64,
+    ) -> Result<(), DistributionError> {
+        self.check(
+            value.is_finite() && value > 0.0,
+            argument,
+            value,
+            "finite and above 0",
+        )
     }
 
-    pub(crate) fn not_negative(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
-        self.check(value.is_finite() && value >= 0.0, argument, value, "finite and not below 0")
+    pub(crate) fn not_negative(
+        self,
+        argument: &'static str,
+        value: f64,
+    ) -> Result<(), DistributionError> {
+        self.check(
+            value.is_finite() && value >= 0.0,
+            argument,
+            value,
+            "finite and not below 0",
+        )
     }
 
-    pub(crate) fn probability(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
-        self.check(value > 0.0 && value < 1.0, argument, value, "between 0 and 1, both excluded")
+    pub(crate) fn probability(
+        self,
+        argument: &'static str,
+        value: f64,
+    ) -> Result<(), DistributionError> {
+        self.check(
+            value > 0.0 && value < 1.0,
+            argument,
+            value,
+            "between 0 and 1, both excluded",
+        )
     }
 
     pub(crate) fn out_of_reach(self, reason: &'static str) -> DistributionError {
-        DistributionError::OutOfReach { distribution: self.0, reason }
+        DistributionError::OutOfReach {
+            distribution: self.0,
+            reason,
+        }
     }
 
-    fn check(self, holds: bool, argument: &'static str, value: f64, expected: &'static str) -> Result<(), DistributionError> {
-        if holds { Ok(()) } else { Err(DistributionError::OutOfDomain { distribution: self.0, argument, value, expected }) }
+    fn check(
+        self,
+        holds: bool,
+        argument: &'static str,
+        value: f64,
+        expected: &'static str,
+    ) -> Result<(), DistributionError> {
+        if holds {
+            Ok(())
+        } else {
+            Err(DistributionError::OutOfDomain {
+                distribution: self.0,
+                argument,
+                value,
+                expected,
+            })
+        }
     }
 }

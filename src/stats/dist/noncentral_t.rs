@@ -198,10 +198,15 @@ impl ScaleRule {
 
     /// E Phi(sign (t S - delta)) and E phi(t S - delta).
     fn tail_and_density(&self, delta: f64, sign: f64) -> (f64, f64) {
-        self.points.iter().fold((0.0, 0.0), |(tail, density), &(shifted, weight)| {
-            let x = shifted - delta;
-            (tail + weight * normal::tail(-sign * x), density + weight * normal::density(x))
-        })
+        self.points
+            .iter()
+            .fold((0.0, 0.0), |(tail, density), &(shifted, weight)| {
+                let x = shifted - delta;
+                (
+                    tail + weight * normal::tail(-sign * x),
+                    density + weight * normal::density(x),
+                )
+            })
     }
 
     /// The delta whose tail on the side of `sign` is `target`, with z its normal quantile.
@@ -223,20 +228,19 @@ impl ScaleRule {
             } else {
                 f64::NAN
             };
-            let next = if newton > near && newton < far {
+            // The steps converge quadratically: after one this small nothing is left to gain.
+            if (newton - along).abs() <= 1e-8 * along.abs().max(1.0) {
+                return Ok(sign * newton);
+            }
+            along = if newton > near && newton < far {
                 newton
             } else if near.is_finite() && far.is_finite() {
                 0.5 * (near + far)
             } else if near.is_finite() {
-                along + z.max(1.0)
+                along + z.abs().max(1.0)
             } else {
-                along - z.max(1.0)
+                along - z.abs().max(1.0)
             };
-            let moved = (next - along).abs();
-            along = next;
-            if moved <= 1e-12 * along.abs().max(1.0) {
-                return Ok(sign * along);
-            }
         }
         Err(unsettled)
     }

@@ -1,6 +1,7 @@
 //! The standard normal distribution.
 
 use std::f64::consts::{FRAC_1_SQRT_2, SQRT_2, TAU};
+use std::ops::RangeInclusive;
 
 use libm::{erfc, exp, fma, log};
 
@@ -8,8 +9,8 @@ use super::{DistributionError, Domain};
 
 const DOMAIN: Domain = Domain("normal");
 
-/// From here on the rounding of z / sqrt 2 shows in the tail and is put right.
-const ROUNDING_SHOWS_FROM: f64 = 5.0;
+/// Where the rounding of z / sqrt 2 shows in the tail, which is then put right.
+const ROUNDING_SHOWS: RangeInclusive<f64> = 5.0..=40.0;
 
 /// The part of 1 / sqrt 2 that its double leaves out.
 const FRAC_1_SQRT_2_REST: f64 = -4.833_646_656_726_457e-17;
@@ -18,7 +19,7 @@ const FRAC_1_SQRT_2_REST: f64 = -4.833_646_656_726_457e-17;
 pub(super) fn tail(z: f64) -> f64 {
     let x = z * FRAC_1_SQRT_2;
     let upper = 0.5 * erfc(x);
-    if z < ROUNDING_SHOWS_FROM || z > 40.0 {
+    if !ROUNDING_SHOWS.contains(&z) {
         return upper;
     }
     let rest = fma(z, FRAC_1_SQRT_2, -x) + z * FRAC_1_SQRT_2_REST;
@@ -84,7 +85,11 @@ fn quantile_above_median(p: f64) -> f64 {
     for _ in 0..20 {
         let upper = tail(z);
         let hazard = density(z) / upper;
-        let excess = if p > 0.1 { (upper - p) / upper } else { log(upper) - log_p };
+        let excess = if p > 0.1 {
+            (upper - p) / upper
+        } else {
+            log(upper) - log_p
+        };
         let step = excess / hazard;
         z += step;
         if step.abs() <= 1e-16 * z.abs().max(SQRT_2) {

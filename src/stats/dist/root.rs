@@ -18,21 +18,23 @@ pub(super) fn falling_log_tail<E>(
     const LONGEST_STEP: f64 = 20.0;
     let (mut left, mut right) = (f64::NEG_INFINITY, f64::INFINITY);
     let mut u = start;
-    let mut last_step = f64::INFINITY;
     for _ in 0..500 {
         let (value, slope) = log_tail(u).map_err(Some)?;
         let excess = value - target;
-        if excess == 0.0 {
-            return Ok(u);
-        }
         if excess > 0.0 {
             left = u;
         } else {
             right = u;
         }
         let newton = u - excess / slope;
-        let usable = newton.is_finite() && newton > left && newton < right;
-        let next = if usable {
+        // The steps converge quadratically: after one this small nothing is left to gain.
+        if (newton - u).abs() <= 1e-9 {
+            return Ok(newton);
+        }
+        if right - left <= 4e-16 * u.abs().max(1.0) {
+            return Ok(u);
+        }
+        u = if newton > left && newton < right {
             newton.clamp(u - LONGEST_STEP, u + LONGEST_STEP)
         } else if left.is_finite() && right.is_finite() {
             0.5 * (left + right)
@@ -41,14 +43,6 @@ pub(super) fn falling_log_tail<E>(
         } else {
             u - 1.0
         };
-        let step = (next - u).abs();
-        let scale = u.abs().max(1.0);
-        // Settled once steps are at rounding level, or have stopped shrinking near it.
-        if step <= 1e-16 * scale || (step < 1e-12 * scale && step >= last_step) {
-            return Ok(next);
-        }
-        last_step = step;
-        u = next;
     }
     Err(None)
 }

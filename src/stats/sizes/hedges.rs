@@ -25,8 +25,9 @@ fn check(m: f64) -> Result<(), Refusal> {
 /// `m` not finite and above 1.
 ///
 /// ```
+/// // Gamma(3/2) / [sqrt(3/2) Gamma(1)] is the root of pi / 6.
 /// let j = aforesaid::stats::sizes::hedges_j_exact(3.0).unwrap();
-/// assert!((j - (2.0 / (3.0 * std::f64::consts::PI)).sqrt() * 1.5707963267948966).abs() < 1e-14);
+/// assert!((j - (std::f64::consts::PI / 6.0).sqrt()).abs() < 1e-14);
 /// ```
 pub fn hedges_j_exact(m: f64) -> Result<f64, Refusal> {
     check(m)?;
