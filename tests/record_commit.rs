@@ -369,7 +369,7 @@ fn what_was_taken_in_can_be_given_up_without_a_trace() {
     let taken = study
         .receive(Copying::Keep)
         .unwrap()
-        .reading(DATA)
+        .reading(Path::new("visits.csv"), DATA)
         .finish()
         .unwrap();
     assert_eq!(
@@ -420,4 +420,38 @@ fn names_that_lead_out_of_a_record_are_refused() {
         );
         assert_eq!(complete(&root).runs().count(), 1);
     }
+}
+
+/// `copied` in the event speaks of all files of a run, so that none is kept unless all are.
+#[test]
+fn a_run_keeps_all_its_files_or_none() {
+    let (_home, root) = place();
+    let world = FaultWorld::sound();
+    let mut unblinded = seal(&world, &root)
+        .unwrap()
+        .log_unblinded(Opens::Allocation)
+        .unwrap();
+    let mut incoming = unblinded.receive(Copying::Keep).unwrap();
+    io::copy(&mut &DATA[..], &mut incoming).unwrap();
+    let data = incoming.finish().unwrap();
+    let allocation = Some(
+        unblinded
+            .receive(Copying::HashOnly)
+            .unwrap()
+            .finish()
+            .unwrap(),
+    );
+    let facts = RunFacts {
+        data,
+        allocation,
+        content: sha256(b""),
+        decisions: sha256(b""),
+    };
+    drop(unblinded.commit(facts, files()).unwrap());
+    let state = complete(&root);
+    assert!(matches!(
+        state.ledger.events[2].what,
+        Happening::Run { copied: false, .. }
+    ));
+    assert!(!names(&root).contains(&"data".to_owned()));
 }

@@ -270,6 +270,13 @@ fn links_are_refused_and_not_followed() {
             kind: DefectKind::IsLink,
         };
         assert!(defects.contains(&link), "{place}: {defects:?}");
+        let state = state(&root);
+        if ["data", "records"].contains(&place) {
+            let world = FaultWorld::sound();
+            let mut later = state.verify_data(&world, &root).unwrap();
+            later.extend(state.verify_record(&world, &root, 1).unwrap());
+            assert!(later.contains(&link), "{place}: {later:?}");
+        }
         let before = outside.metadata().unwrap().modified().unwrap();
         assert!(matches!(
             Study::open(&FaultWorld::sound(), &root),

@@ -65,10 +65,11 @@ impl Incoming {
         })
     }
 
-    /// Passes on what `source` gives while taking it in.
-    pub fn reading<R: Read>(self, source: R) -> Reading<R> {
+    /// Passes on what `source` gives while taking it in; `path` is for error messages.
+    pub fn reading<R: Read>(self, path: &Path, source: R) -> Reading<R> {
         Reading {
             source,
+            path: path.to_path_buf(),
             incoming: self,
         }
     }
@@ -117,6 +118,7 @@ impl Write for Incoming {
 /// A reader that takes in what it passes on.
 pub struct Reading<R> {
     source: R,
+    path: PathBuf,
     incoming: Incoming,
 }
 
@@ -127,10 +129,7 @@ impl<R: Read> Reading<R> {
     /// [`StudyError::Machine`] if the source cannot be read to its end or its copy could not be written.
     pub fn finish(mut self) -> Result<Received, StudyError> {
         let rest = io::copy(&mut self.source, &mut self.incoming);
-        rest.map_err(StudyError::machine(
-            "read to its end",
-            Path::new("the file"),
-        ))?;
+        rest.map_err(StudyError::machine("read", &self.path))?;
         self.incoming.finish()
     }
 }
@@ -292,9 +291,13 @@ impl<'w> Unblinded<'w> {
             .into_iter()
             .flatten()
             .collect();
-        for file in &received {
-            keep(world, &study.root, file)?;
+        let copied = received.iter().all(|file| file.pending.is_some());
+        if copied {
+            received
+                .iter()
+                .try_for_each(|file| keep(world, &study.root, file))?;
         }
+        study.discard_received()?;
         make_folder(world, &at(&study.root, "records"))?;
         let target = at(&study.root, &place);
         world
@@ -310,7 +313,7 @@ impl<'w> Unblinded<'w> {
             data: facts.data.hash,
             content: facts.content,
             allocation: facts.allocation.as_ref().map(|file| file.hash),
-            copied: received.iter().all(|file| file.pending.is_some()),
+            copied,
             decisions: facts.decisions,
             manifest: manifest_hash,
         })?;
@@ -351,9 +354,7 @@ fn keep(world: &dyn World, root: &Path, file: &Received) -> Result<(), StudyErro
                 }
                 .into());
             }
-            world
-                .remove_file(&pending)
-                .map_err(StudyError::machine("clear", &pending))
+            Ok(())
         }
         _ => Err(Defect {
             place,

@@ -388,7 +388,7 @@ impl StudyState {
     }
 }
 
-fn not_a_study(root: &Path) -> StudyError {
+pub(super) fn not_a_study(root: &Path) -> StudyError {
     StudyError::refused(
         root,
         format!("this is no study folder (there is no {LEDGER} in it)"),
@@ -481,7 +481,8 @@ fn contradictions(events: &[Event]) -> Vec<Defect> {
                 let plain = !file.contains('/') && super::format::is_plain_path(file);
                 (!plain).then(|| format!("it names the file {file:?}, which is no plain name"))
             }
-            Happening::DataChecked { .. } | Happening::Corrected { .. } => None,
+            Happening::Corrected { record, .. } => due("record", *record, records.max(1)),
+            Happening::DataChecked { .. } => None,
         };
         found.extend(wrong.map(|what| Defect {
             place: LEDGER.to_owned(),

@@ -2,13 +2,15 @@
 use std::collections::BTreeMap;
 use std::path::{Path, PathBuf};
 
+use serde::de::IgnoredAny;
+
 use super::error::{Defect, DefectKind, StudyError};
 use super::format::{
     LEDGER, LOCK, PENDING, RELEASE, SEAL_FORMAT, Seal, UtcTime, entries, is_plain_path, plan_folder,
 };
 use super::ledger::{Event, Happening, Ledger, Opens};
 use super::run::{Copying, Incoming, Unblinded};
-use super::state::{SealedFolder, StudyState, Unfinished, at};
+use super::state::{SealedFolder, StudyState, Unfinished, at, not_a_study};
 use crate::canon::chain::Chain;
 use crate::canon::hash::{Digest, sha256};
 use crate::canon::json::{self, CanonError};
@@ -48,6 +50,8 @@ impl<'w> Study<'w> {
     /// [`StudyError::Refused`] if something stands there, [`StudyError::Held`] if another command is sealing there, [`StudyError::Machine`] if it
     /// cannot be written; then nothing is left behind.
     pub fn seal(world: &'w dyn World, root: &Path, plan: &NewPlan<'_>) -> Result<Self, StudyError> {
+        json::from_file_bytes::<IgnoredAny>(plan.resolved)
+            .map_err(|error| unwritable("resolved.json", error))?;
         let pending = pending_beside(root)?;
         check_target(world, root)?;
         clear_pending_seal(world, &pending)?;
@@ -86,7 +90,11 @@ impl<'w> Study<'w> {
     /// [`StudyError::Held`], [`StudyError::Broken`] with the first defect, [`StudyError::Refused`] if it is no study folder, [`StudyError::Machine`].
     pub fn open(world: &'w dyn World, root: &Path) -> Result<Self, StudyError> {
         // Looking first keeps a mistyped path free of a lock file.
-        StudyState::read(world, root)?;
+        let ledger = root.join(LEDGER);
+        let kind = world.kind(&ledger, Links::Report);
+        if kind.map_err(StudyError::machine("look at", &ledger))? == Kind::Nothing {
+            return Err(not_a_study(root));
+        }
         let lock = take_lock(world, root)?;
         let state = StudyState::read(world, root)?;
         let mut study = Self {

@@ -4,11 +4,13 @@ use std::collections::{BTreeMap, BTreeSet};
 use std::io::{self, Read};
 use std::path::{Path, PathBuf};
 
+use serde::de::IgnoredAny;
+
 use super::error::{Defect, DefectKind, StudyError};
 use super::format::{FileEntry, MANIFEST, Manifest, Seal};
 use super::state::{SealedFolder, at, limit};
 use crate::canon::hash::{Digest, Hasher, sha256};
-use crate::canon::json::CanonError;
+use crate::canon::json::{self, CanonError};
 use crate::world::{Kind, Links, World};
 
 /// Folders in each other deeper than this are nobody's record.
@@ -51,8 +53,29 @@ impl<'a> Reader<'a> {
             .map_err(StudyError::machine("look at", &path))
     }
 
+    /// Whether every folder on the way to a place is a folder and no link; a link is a defect.
+    fn reachable(&mut self, place: &str) -> Result<bool, StudyError> {
+        for (end, _) in place.match_indices('/') {
+            match self.kind(&place[..end])? {
+                Kind::Folder => {}
+                Kind::Link => {
+                    self.defect(&place[..end], DefectKind::IsLink);
+                    return Ok(false);
+                }
+                _ => {
+                    self.defect(place, DefectKind::Missing);
+                    return Ok(false);
+                }
+            }
+        }
+        Ok(true)
+    }
+
     /// The names in a folder; `None` if it is not there (no defect) or is no folder (a defect).
     pub fn folder(&mut self, place: &str) -> Result<Option<Vec<String>>, StudyError> {
+        if !self.reachable(place)? {
+            return Ok(None);
+        }
         match self.kind(place)? {
             Kind::Folder => {}
             Kind::Nothing => return Ok(None),
@@ -78,6 +101,9 @@ impl<'a> Reader<'a> {
 
     /// The size of a regular file; anything else is a defect.
     pub fn regular_file(&mut self, place: &str) -> Result<Option<u64>, StudyError> {
+        if !self.reachable(place)? {
+            return Ok(None);
+        }
         let kind = match self.kind(place)? {
             Kind::File(size) => return Ok(Some(size)),
             Kind::Nothing => DefectKind::Missing,
@@ -189,6 +215,8 @@ impl<'a> Reader<'a> {
                 sha256(resolved),
                 "its seal",
             );
+            let form = json::from_file_bytes::<IgnoredAny>(resolved);
+            self.form(&inside("resolved.json"), form);
         }
         self.listing(&inside("templates"), &seal.templates, &[])?;
         let mut templates = BTreeMap::new();

@@ -45,7 +45,9 @@ pub fn files() -> BTreeMap<String, Vec<u8>> {
 
 pub fn run<'w>(world: &'w dyn World, root: &Path) -> Result<Committed<'w>, StudyError> {
     let mut study = Study::open(world, root)?;
-    let mut reading = study.receive(Copying::Keep)?.reading(DATA);
+    let mut reading = study
+        .receive(Copying::Keep)?
+        .reading(Path::new("visits.csv"), DATA);
     let mut header = [0; 11];
     reading
         .read_exact(&mut header)
