@@ -4,6 +4,7 @@ mod common;
 
 use std::collections::BTreeMap;
 use std::fs;
+use std::path::Path;
 
 use aforesaid::canon::chain::Chain;
 use aforesaid::canon::hash::{Digest, sha256};
@@ -338,4 +339,57 @@ fn decisions_are_bound_to_each_other_and_to_what_they_were_taken_on() {
             ..
         }
     ));
+}
+
+/// Every byte of every file, one at a time: changed, and each file with its last byte gone or one more.
+#[test]
+fn no_byte_of_the_folder_can_change_unseen() {
+    let (_home, root) = recorded();
+    let world = FaultWorld::sound();
+    let found = |place: &str| {
+        let state = StudyState::read(&world, &root).unwrap();
+        let mut defects = state.defects.clone();
+        defects.extend(state.verify_data(&world, &root).unwrap());
+        defects.extend(state.verify_record(&world, &root, 1).unwrap());
+        let line = state.unfinished.contains(&Unfinished::LedgerLine) && place == "ledger.jsonl";
+        line || defects.iter().any(|defect| defect.place == place)
+    };
+    for place in every_file(&root, "") {
+        let original = file(&root, &place);
+        assert!(!found(&place), "{place} is sound before it is touched");
+        let mut changes: Vec<Vec<u8>> = vec![[&original[..], b"\n"].concat()];
+        changes.extend(original.split_last().map(|(_, shorter)| shorter.to_vec()));
+        for at in 0..original.len() {
+            let mut changed = original.clone();
+            changed[at] ^= 1;
+            changes.push(changed);
+        }
+        for changed in changes {
+            fs::write(root.join(&place), &changed).unwrap();
+            assert!(
+                found(&place),
+                "{place}: {:?}",
+                String::from_utf8_lossy(&changed)
+            );
+        }
+        fs::write(root.join(&place), &original).unwrap();
+    }
+    complete(&root);
+}
+
+fn every_file(root: &Path, folder: &str) -> Vec<String> {
+    let mut all = Vec::new();
+    for name in names(&root.join(folder)) {
+        let place = if folder.is_empty() {
+            name
+        } else {
+            format!("{folder}/{name}")
+        };
+        if root.join(&place).is_dir() {
+            all.extend(every_file(root, &place));
+        } else {
+            all.push(place);
+        }
+    }
+    all
 }
