@@ -177,7 +177,7 @@ pub struct RunFacts {
 
 /// A study whose event `unblinded` is on the disk: now the arms may be opened, and a record may be committed.
 ///
-/// Dropped without [`Unblinded::commit`] or [`Unblinded::abandon`], it leaves an open `unblinded`, which the next writer logs as `interrupted`.
+/// Dropped without [`Unblinded::commit`] or [`Unblinded::abandon`], its copies are cleared, but it leaves an open `unblinded`, which the next writer logs as `interrupted`.
 pub struct Unblinded<'w> {
     study: Study<'w>,
     event: Digest,

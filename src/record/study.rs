@@ -184,7 +184,8 @@ impl<'w> Study<'w> {
         )
     }
 
-    /// Clears what this command took in with [`Study::receive`] and will not use, as when the data do not fit the plan.
+    /// Clears what this command took in with [`Study::receive`] and will not use, as when the data do not fit the plan. Dropping the
+    /// study does the same, but cannot tell of a failure.
     ///
     /// # Errors
     /// [`StudyError::Machine`] if it cannot be cleared.
@@ -288,6 +289,13 @@ impl<'w> Study<'w> {
             // The failure itself is what the caller reports; what cannot be cleared now, the next writer clears.
             let _ = self.clear_unfinished(Some(why));
         }
+    }
+}
+
+impl Drop for Study<'_> {
+    /// A command that gives up early leaves no copy behind; one that was killed leaves it to the next writer.
+    fn drop(&mut self) {
+        let _ = self.discard_received();
     }
 }
 
