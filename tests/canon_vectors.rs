@@ -1,9 +1,7 @@
 //! Canonical JSON, SHA-256 and the chains, against what others publish or compute.
 use aforesaid::canon::chain::{Chain, LinkError};
 use aforesaid::canon::hash::{Digest, Hasher, sha256};
-use aforesaid::canon::json::{
-    CanonError, MAX_DEPTH, file_bytes, from_canonical, from_file_bytes, read_lines, to_canonical,
-};
+use aforesaid::canon::json::{CanonError, MAX_DEPTH, file_bytes, from_canonical, from_file_bytes, read_lines, to_canonical};
 use aforesaid::canon::number::Finite;
 use proptest::prelude::*;
 use serde_json::{Value, json};
@@ -19,26 +17,11 @@ fn hashes_of_the_published_messages() {
     let three_blocks = b"abcdefghbcdefghicdefghijdefghijkefghijklfghijklmghijklmnhijklmnoijklmnopjklmnopqklmnopqrlmnopqrsmnopqrstnopqrstu";
     let million = vec![b'a'; 1_000_000];
     let examples: [(&[u8], &str); 5] = [
-        (
-            b"",
-            "e3b0c44298fc1c149afbf4c8996fb92427ae41e4649b934ca495991b7852b855",
-        ),
-        (
-            b"abc",
-            "ba7816bf8f01cfea414140de5dae2223b00361a396177a9cb410ff61f20015ad",
-        ),
-        (
-            two_blocks,
-            "248d6a61d20638b8e5c026930c3e6039a33ce45964ff2167f6ecedd419db06c1",
-        ),
-        (
-            three_blocks,
-            "cf5b16a778af8380036ce59e7b0492370b249b11e8f07a51afac45037afee9d1",
-        ),
-        (
-            &million,
-            "cdc76e5c9914fb9281a1c7e284d73e67f1809a48a497200e046d39ccc7112cd0",
-        ),
+        (b"", "e3b0c44298fc1c149afbf4c8996fb92427ae41e4649b934ca495991b7852b855"),
+        (b"abc", "ba7816bf8f01cfea414140de5dae2223b00361a396177a9cb410ff61f20015ad"),
+        (two_blocks, "248d6a61d20638b8e5c026930c3e6039a33ce45964ff2167f6ecedd419db06c1"),
+        (three_blocks, "cf5b16a778af8380036ce59e7b0492370b249b11e8f07a51afac45037afee9d1"),
+        (&million, "cdc76e5c9914fb9281a1c7e284d73e67f1809a48a497200e046d39ccc7112cd0"),
     ];
     for (message, expected) in examples {
         assert_eq!(sha256(message).to_string(), expected);
@@ -54,11 +37,7 @@ fn a_hash_in_text_is_64_lower_case_digits() {
     assert_eq!(abc.to_string().parse::<Digest>(), Ok(abc));
     assert_eq!(abc.short(), "ba78 16bf 8f01 cfea");
     assert_eq!(canonical_text(&abc), format!("\"{abc}\""));
-    for wrong in [
-        abc.to_string().to_uppercase(),
-        abc.to_string()[1..].to_owned(),
-        "é".repeat(32),
-    ] {
+    for wrong in [abc.to_string().to_uppercase(), abc.to_string()[1..].to_owned(), "é".repeat(32)] {
         assert!(wrong.parse::<Digest>().is_err(), "{wrong}");
     }
 }
@@ -96,22 +75,11 @@ fn numbers_are_written_as_rfc_8785_lists_them() {
     for (bits, text) in NUMBERS {
         let number = f64::from_bits(bits);
         assert_eq!(canonical_text(&number), text);
-        assert_eq!(
-            from_canonical::<f64>(text.as_bytes()),
-            Ok(if number == 0.0 { 0.0 } else { number })
-        );
-        assert_eq!(
-            from_canonical::<Value>(text.as_bytes()).map(|v| canonical_text(&v)),
-            Ok(text.to_owned())
-        );
+        assert_eq!(from_canonical::<f64>(text.as_bytes()), Ok(if number == 0.0 { 0.0 } else { number }));
+        assert_eq!(from_canonical::<Value>(text.as_bytes()).map(|v| canonical_text(&v)), Ok(text.to_owned()));
     }
     // Section 3.2.2.3: the places where ECMAScript turns to an exponent.
-    for (number, text) in [
-        (1e20, "100000000000000000000"),
-        (1e21, "1e+21"),
-        (1e-6, "0.000001"),
-        (1e-7, "1e-7"),
-    ] {
+    for (number, text) in [(1e20, "100000000000000000000"), (1e21, "1e+21"), (1e-6, "0.000001"), (1e-7, "1e-7")] {
         assert_eq!(canonical_text(&number), text);
     }
 }
@@ -120,23 +88,14 @@ fn numbers_are_written_as_rfc_8785_lists_them() {
 fn what_has_no_number_in_json_is_refused_and_not_made_null() {
     for number in [f64::NAN, f64::INFINITY, f64::NEG_INFINITY] {
         assert_eq!(to_canonical(&number), Err(CanonError::NotFinite));
-        assert_eq!(
-            to_canonical(&[Some(1.0), Some(number)]),
-            Err(CanonError::NotFinite)
-        );
+        assert_eq!(to_canonical(&[Some(1.0), Some(number)]), Err(CanonError::NotFinite));
         assert_eq!(Finite::new(number), None);
     }
     assert_eq!(canonical_text(&Finite::new(-0.0).unwrap()), "0");
     assert_eq!(from_canonical::<Finite>(b"3").map(Finite::get), Ok(3.0));
     let uneven = 9_007_199_254_740_993_u64; // 2^53 + 1, which no double holds
-    assert_eq!(
-        to_canonical(&uneven),
-        Err(CanonError::WholeNumberTooLarge(uneven.to_string()))
-    );
-    assert_eq!(
-        from_canonical::<Value>(b"{\"n\":9007199254740993}"),
-        Err(CanonError::NotCanonical { offset: 5 })
-    );
+    assert_eq!(to_canonical(&uneven), Err(CanonError::WholeNumberTooLarge(uneven.to_string())));
+    assert_eq!(from_canonical::<Value>(b"{\"n\":9007199254740993}"), Err(CanonError::NotCanonical { offset: 5 }));
 }
 
 /// RFC 8785 sections 3.2.2 and 3.2.3, the examples of literals, text and sorting (from memory).
@@ -174,21 +133,11 @@ fn anything_but_the_canonical_form_is_refused_where_it_differs() {
         (r#"{"a":1e0}"#, not_canonical(6)),
         (r#"{"a":"\u00e9"}"#, not_canonical(6)),
         (r#"{"a":"\/"}"#, not_canonical(6)),
-        (
-            r#"{"a":1,"b":2,"a":1}"#,
-            CanonError::KeyTwice {
-                key: "a".into(),
-                offset: Some(15),
-            },
-        ),
+        (r#"{"a":1,"b":2,"a":1}"#, CanonError::KeyTwice { key: "a".into(), offset: Some(15) }),
         ("{\"a\":1}\n", not_canonical(7)),
     ];
     for (text, expected) in cases {
-        assert_eq!(
-            from_canonical::<Value>(text.as_bytes()),
-            Err(expected),
-            "{text}"
-        );
+        assert_eq!(from_canonical::<Value>(text.as_bytes()), Err(expected), "{text}");
     }
     for (text, expected) in [
         (&br#"{"a":"\ud83d"}"#[..], "hex escape"),
@@ -210,57 +159,24 @@ fn depth_has_one_limit_for_writing_and_reading() {
     let nested = |depth: usize| format!("{}{}", "[".repeat(depth), "]".repeat(depth));
     let deepest: Value = from_canonical(nested(MAX_DEPTH).as_bytes()).unwrap();
     assert_eq!(canonical_text(&deepest), nested(MAX_DEPTH));
-    assert_eq!(
-        to_canonical(&[deepest]),
-        Err(CanonError::TooDeep { offset: None })
-    );
+    assert_eq!(to_canonical(&[deepest]), Err(CanonError::TooDeep { offset: None }));
     for depth in [MAX_DEPTH + 1, 1_000_000] {
         let error = from_canonical::<Value>(nested(depth).as_bytes());
-        assert_eq!(
-            error,
-            Err(CanonError::TooDeep {
-                offset: Some(MAX_DEPTH)
-            })
-        );
+        assert_eq!(error, Err(CanonError::TooDeep { offset: Some(MAX_DEPTH) }));
     }
 }
 
 #[test]
 fn files_and_lines_end_in_one_line_feed() {
     assert_eq!(file_bytes(&json!({"a": 1})).unwrap(), b"{\"a\":1}\n");
-    assert_eq!(
-        from_file_bytes::<Value>(b"{\"a\":1}\n"),
-        Ok(json!({"a": 1}))
-    );
-    assert_eq!(
-        from_file_bytes::<Value>(b"{\"a\":1}"),
-        Err(CanonError::LineFeed { offset: 7 })
-    );
-    assert_eq!(
-        from_file_bytes::<Value>(b"{\"a\":1}\n\n"),
-        Err(CanonError::LineFeed { offset: 8 })
-    );
-    assert_eq!(
-        from_file_bytes::<Value>(b"{\"a\":1}\r\n"),
-        Err(CanonError::NotCanonical { offset: 7 })
-    );
+    assert_eq!(from_file_bytes::<Value>(b"{\"a\":1}\n"), Ok(json!({"a": 1})));
+    assert_eq!(from_file_bytes::<Value>(b"{\"a\":1}"), Err(CanonError::LineFeed { offset: 7 }));
+    assert_eq!(from_file_bytes::<Value>(b"{\"a\":1}\n\n"), Err(CanonError::LineFeed { offset: 8 }));
+    assert_eq!(from_file_bytes::<Value>(b"{\"a\":1}\r\n"), Err(CanonError::NotCanonical { offset: 7 }));
     let found = read_lines(b"{\"a\":1}\n{\"a\": 2}\n{\"a\"");
-    assert_eq!(
-        found
-            .lines
-            .iter()
-            .map(|l| (l.number, l.start))
-            .collect::<Vec<_>>(),
-        [(1, 0), (2, 8)]
-    );
-    assert_eq!(
-        found.lines[1].read::<Value>(),
-        Err(CanonError::NotCanonical { offset: 13 })
-    );
-    assert_eq!(
-        found.unterminated.map(|l| (l.start, l.bytes)),
-        Some((17, &b"{\"a\""[..]))
-    );
+    assert_eq!(found.lines.iter().map(|l| (l.number, l.start)).collect::<Vec<_>>(), [(1, 0), (2, 8)]);
+    assert_eq!(found.lines[1].read::<Value>(), Err(CanonError::NotCanonical { offset: 13 }));
+    assert_eq!(found.unterminated.map(|l| (l.start, l.bytes)), Some((17, &b"{\"a\""[..])));
     assert_eq!(read_lines(b"{}\n").unterminated, None);
 }
 
@@ -272,9 +188,7 @@ fn a_shape_that_does_not_fit_is_named() {
         #[serde(rename = "x")]
         _x: f64,
     }
-    let Err(CanonError::WrongShape { offset: 9, message }) =
-        from_canonical::<Point>(br#"{"x":1,"y":2}"#)
-    else {
+    let Err(CanonError::WrongShape { offset: 9, message }) = from_canonical::<Point>(br#"{"x":1,"y":2}"#) else {
         panic!("an unknown key was taken");
     };
     assert!(message.contains("unknown field `y`"), "{message}");
@@ -286,17 +200,12 @@ fn a_shape_that_does_not_fit_is_named() {
 fn chains_are_as_another_program_computes_them() {
     let mut ledger = Chain::ledger(&sha256(b"seal"));
     assert_eq!(ledger.head().to_string(), LEDGER[0]);
-    let first = ledger
-        .append(&json!({"sequence": 1, "kind": "sealed", "plan": 1}))
-        .unwrap();
+    let first = ledger.append(&json!({"sequence": 1, "kind": "sealed", "plan": 1})).unwrap();
     assert_eq!(first.hash.to_string(), LEDGER[1]);
     let entry = json!({"sequence": 2, "kind": "data checked", "zebra": "é", "data": null});
     let second = ledger.append(&entry).unwrap();
     assert_eq!(second.hash.to_string(), LEDGER[2]);
-    let expected = format!(
-        "{{\"data\":null,\"hash\":\"{}\",\"kind\":\"data checked\",\"sequence\":2,\"zebra\":\"é\"}}\n",
-        LEDGER[2]
-    );
+    let expected = format!("{{\"data\":null,\"hash\":\"{}\",\"kind\":\"data checked\",\"sequence\":2,\"zebra\":\"é\"}}\n", LEDGER[2]);
     assert_eq!(String::from_utf8(second.line.clone()).unwrap(), expected);
 
     let mut again = Chain::ledger(&sha256(b"seal"));
@@ -304,26 +213,16 @@ fn chains_are_as_another_program_computes_them() {
         assert_eq!(again.follow(link.line.trim_ascii_end()), Ok(link.hash));
     }
     let mut swapped = Chain::ledger(&sha256(b"seal"));
-    assert!(
-        matches!(swapped.follow(second.line.trim_ascii_end()), Err(LinkError::Hash { found, .. }) if found == second.hash)
-    );
+    assert!(matches!(swapped.follow(second.line.trim_ascii_end()), Err(LinkError::Hash { found, .. }) if found == second.hash));
     assert_eq!(swapped, Chain::ledger(&sha256(b"seal")));
 
     let hashes = [b"meaning".as_slice(), b"data", b"unblinded"].map(sha256);
-    let root = |allocation: Option<&Digest>| {
-        Chain::decisions(&hashes[0], &hashes[1], allocation, &hashes[2])
-    };
-    assert_eq!(
-        root(Some(&sha256(b"allocation"))).head().to_string(),
-        DECISIONS[0]
-    );
+    let root = |allocation: Option<&Digest>| Chain::decisions(&hashes[0], &hashes[1], allocation, &hashes[2]);
+    assert_eq!(root(Some(&sha256(b"allocation"))).head().to_string(), DECISIONS[0]);
     let mut decisions = root(None);
     assert_eq!(decisions.head().to_string(), DECISIONS[1]);
     let entry = json!({"sequence": 1, "step": "omnibus", "verdict": "significant", "evidence": {"p": 0.0074}, "rule": {"level": 0.05}});
-    assert_eq!(
-        decisions.append(&entry).unwrap().hash.to_string(),
-        DECISIONS[2]
-    );
+    assert_eq!(decisions.append(&entry).unwrap().hash.to_string(), DECISIONS[2]);
 }
 
 proptest! {

@@ -56,12 +56,9 @@ impl fmt::Display for LinkError {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
             Self::Form(error) => error.fmt(f),
-            Self::Hash { computed, found } => write!(
-                f,
-                "its hash is {}, but the entry before it and its own bytes give {}",
-                found.short(),
-                computed.short()
-            ),
+            Self::Hash { computed, found } => {
+                write!(f, "its hash is {}, but the entry before it and its own bytes give {}", found.short(), computed.short())
+            }
         }
     }
 }
@@ -71,31 +68,15 @@ impl std::error::Error for LinkError {}
 impl Chain {
     /// The ledger's chain before its first event, from the hash of the first plan's seal.json.
     pub fn ledger(first_seal: &Digest) -> Self {
-        Self {
-            entry_prefix: "aforesaid event 1\n",
-            head: joined("aforesaid ledger 1\n", &[first_seal.bytes()]),
-        }
+        Self { entry_prefix: "aforesaid event 1\n", head: joined("aforesaid ledger 1\n", &[first_seal.bytes()]) }
     }
 
     /// The chain of a run's decisions before its first: bound to the plan's meaning, the data, the separate allocation if
     /// there is one, and the event `unblinded` that went before.
-    pub fn decisions(
-        meaning: &Digest,
-        data: &Digest,
-        allocation: Option<&Digest>,
-        unblinded: &Digest,
-    ) -> Self {
+    pub fn decisions(meaning: &Digest, data: &Digest, allocation: Option<&Digest>, unblinded: &Digest) -> Self {
         let allocation = allocation.unwrap_or(&Digest::ZERO);
-        let parts: [&[u8]; 4] = [
-            meaning.bytes(),
-            data.bytes(),
-            allocation.bytes(),
-            unblinded.bytes(),
-        ];
-        Self {
-            entry_prefix: "aforesaid decision 1\n",
-            head: joined("aforesaid decisions 1\n", &parts),
-        }
+        let parts: [&[u8]; 4] = [meaning.bytes(), data.bytes(), allocation.bytes(), unblinded.bytes()];
+        Self { entry_prefix: "aforesaid decision 1\n", head: joined("aforesaid decisions 1\n", &parts) }
     }
 
     /// The hash of the last entry, or `h_0` if there is none.

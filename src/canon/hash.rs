@@ -27,10 +27,7 @@ impl Digest {
     /// assert_eq!(sha256(b"abc").short(), "ba78 16bf 8f01 cfea");
     /// ```
     pub fn short(&self) -> String {
-        let groups: Vec<String> = self.0[..8]
-            .chunks(2)
-            .map(|pair| format!("{:02x}{:02x}", pair[0], pair[1]))
-            .collect();
+        let groups: Vec<String> = self.0[..8].chunks(2).map(|pair| format!("{:02x}{:02x}", pair[0], pair[1])).collect();
         groups.join(" ")
     }
 }

@@ -9,7 +9,7 @@ use serde::{Deserialize, Deserializer, Serialize, Serializer};
 /// assert_eq!(Finite::new(0.25).map(Finite::get), Some(0.25));
 /// assert_eq!(Finite::new(f64::NAN), None);
 /// ```
-#[derive(Debug, Clone, Copy, PartialEq, PartialOrd)]
+#[derive(Debug, Clone, Copy, Default, PartialEq, PartialOrd)]
 pub struct Finite(f64);
 
 impl Finite {
@@ -33,7 +33,6 @@ impl Serialize for Finite {
 impl<'de> Deserialize<'de> for Finite {
     fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
         let value = f64::deserialize(deserializer)?;
-        Self::new(value)
-            .ok_or_else(|| D::Error::invalid_value(Unexpected::Float(value), &"a finite number"))
+        Self::new(value).ok_or_else(|| D::Error::invalid_value(Unexpected::Float(value), &"a finite number"))
     }
 }

@@ -1,1 +1,3 @@
-//! To be written.
+//! Tables, CSV, the contract between plan and data, content hash.
+
+pub mod trial;

@@ -1,1 +1,5 @@
-//! To be written.
+//! From the text of a plan to a sealed plan: `Source -> SyntaxTree -> ResolvedPlan -> CheckedPlan -> SealedPlan`.
+
+pub mod resolved;
+pub mod seal;
+pub mod syntax;

@@ -1,1 +1,8 @@
-//! To be written.
+//! Statistics: knows nothing of plans, files or reports.
+
+pub mod adjust;
+pub mod dist;
+pub mod hypothesis;
+pub mod linear;
+pub mod model;
+pub mod sizes;

@@ -71,10 +71,9 @@ impl CanonError {
     pub fn offset(&self) -> Option<usize> {
         match self {
             Self::KeyTwice { offset, .. } | Self::TooDeep { offset } => *offset,
-            Self::NotJson { offset, .. }
-            | Self::NotCanonical { offset }
-            | Self::LineFeed { offset }
-            | Self::WrongShape { offset, .. } => Some(*offset),
+            Self::NotJson { offset, .. } | Self::NotCanonical { offset } | Self::LineFeed { offset } | Self::WrongShape { offset, .. } => {
+                Some(*offset)
+            }
             _ => None,
         }
     }
@@ -82,13 +81,8 @@ impl CanonError {
     /// The same error in a text of which what was read begins at byte `start`.
     fn moved(mut self, start: usize) -> Self {
         match &mut self {
-            Self::KeyTwice {
-                offset: Some(offset),
-                ..
-            }
-            | Self::TooDeep {
-                offset: Some(offset),
-            }
+            Self::KeyTwice { offset: Some(offset), .. }
+            | Self::TooDeep { offset: Some(offset) }
             | Self::NotJson { offset, .. }
             | Self::NotCanonical { offset }
             | Self::LineFeed { offset }
@@ -104,10 +98,7 @@ impl fmt::Display for CanonError {
         match self {
             Self::NotFinite => write!(f, "a number that is NaN or infinite has no form in JSON"),
             Self::WholeNumberTooLarge(number) => {
-                write!(
-                    f,
-                    "the whole number {number} is too large to be written exactly"
-                )
+                write!(f, "the whole number {number} is too large to be written exactly")
             }
             Self::KeyNotText => write!(f, "the key of an object must be text"),
             Self::Unwritable(message) => f.write_str(message),

@@ -22,10 +22,7 @@ use super::{CanonError, MAX_DEPTH, to_canonical};
 /// ```
 pub fn from_canonical<T: DeserializeOwned>(bytes: &[u8]) -> Result<T, CanonError> {
     check(bytes)?;
-    serde_json::from_slice(bytes).map_err(|error| CanonError::WrongShape {
-        offset: offset_of(&error, bytes),
-        message: message_of(&error),
-    })
+    serde_json::from_slice(bytes).map_err(|error| CanonError::WrongShape { offset: offset_of(&error, bytes), message: message_of(&error) })
 }
 
 /// Reads a whole file: canonical JSON and one line feed, nothing after it.
@@ -36,9 +33,7 @@ pub fn from_file_bytes<T: DeserializeOwned>(bytes: &[u8]) -> Result<T, CanonErro
     match bytes.strip_suffix(b"\n") {
         Some(body) if body.ends_with(b"\n") => Err(CanonError::LineFeed { offset: body.len() }),
         Some(body) => from_canonical(body),
-        None => Err(CanonError::LineFeed {
-            offset: bytes.len(),
-        }),
+        None => Err(CanonError::LineFeed { offset: bytes.len() }),
     }
 }
 
@@ -52,15 +47,9 @@ pub fn without_key(bytes: &[u8], key: &str) -> Result<Vec<u8>, CanonError> {
     match check(bytes)? {
         Tree::Object(members) => {
             let kept = members.iter().filter(|(name, _)| name != key);
-            object(
-                kept.map(|(name, value)| Ok((name.clone(), to_canonical(value)?)))
-                    .collect::<Result<_, CanonError>>()?,
-            )
+            object(kept.map(|(name, value)| Ok((name.clone(), to_canonical(value)?))).collect::<Result<_, CanonError>>()?)
         }
-        _ => Err(CanonError::WrongShape {
-            offset: 0,
-            message: "an object is expected".into(),
-        }),
+        _ => Err(CanonError::WrongShape { offset: 0, message: "an object is expected".into() }),
     }
 }
 
@@ -96,17 +85,10 @@ impl Line<'_> {
 
 /// Splits a file into lines at line feeds, reading none of them.
 pub fn read_lines(bytes: &[u8]) -> Lines<'_> {
-    let mut found = Lines {
-        lines: Vec::new(),
-        unterminated: None,
-    };
+    let mut found = Lines { lines: Vec::new(), unterminated: None };
     let mut start = 0;
     for (index, piece) in bytes.split_inclusive(|byte| *byte == b'\n').enumerate() {
-        let line = |bytes| Line {
-            number: index + 1,
-            start,
-            bytes,
-        };
+        let line = |bytes| Line { number: index + 1, start, bytes };
         match piece.strip_suffix(b"\n") {
             Some(body) => found.lines.push(line(body)),
             None => found.unterminated = Some(line(piece)),
@@ -122,35 +104,21 @@ fn check(bytes: &[u8]) -> Result<Tree, CanonError> {
         let offset = offset_of(&error, bytes);
         match error.classify() {
             // A tree takes every shape, so the one thing it complains of itself is a key that stands twice.
-            Category::Data => CanonError::KeyTwice {
-                key: message_of(&error),
-                offset: Some(offset),
-            },
-            _ => CanonError::NotJson {
-                offset,
-                message: message_of(&error),
-            },
+            Category::Data => CanonError::KeyTwice { key: message_of(&error), offset: Some(offset) },
+            _ => CanonError::NotJson { offset, message: message_of(&error) },
         }
     })?;
     let canonical = match to_canonical(&tree) {
         Ok(canonical) => canonical,
         // serde_json reads such a number digit by digit, where canonical JSON would have rounded it.
         Err(CanonError::WholeNumberTooLarge(digits)) => {
-            let at = bytes
-                .windows(digits.len())
-                .position(|window| window == digits.as_bytes());
-            return Err(CanonError::NotCanonical {
-                offset: at.unwrap_or(0),
-            });
+            let at = bytes.windows(digits.len()).position(|window| window == digits.as_bytes());
+            return Err(CanonError::NotCanonical { offset: at.unwrap_or(0) });
         }
         Err(error) => return Err(error),
     };
     if canonical != bytes {
-        let same = canonical
-            .iter()
-            .zip(bytes)
-            .take_while(|(a, b)| a == b)
-            .count();
+        let same = canonical.iter().zip(bytes).take_while(|(a, b)| a == b).count();
         return Err(CanonError::NotCanonical { offset: same });
     }
     Ok(tree)
@@ -172,9 +140,7 @@ fn check_depth(bytes: &[u8]) -> Result<(), CanonError> {
         match byte {
             b'"' => in_text = true,
             b'[' | b'{' if depth == MAX_DEPTH => {
-                return Err(CanonError::TooDeep {
-                    offset: Some(offset),
-                });
+                return Err(CanonError::TooDeep { offset: Some(offset) });
             }
             b'[' | b'{' => depth += 1,
             b']' | b'}' => depth = depth.saturating_sub(1),
@@ -186,9 +152,7 @@ fn check_depth(bytes: &[u8]) -> Result<(), CanonError> {
 
 /// serde_json gives line and column (both from 1, the column in bytes).
 fn offset_of(error: &serde_json::Error, bytes: &[u8]) -> usize {
-    let before = bytes
-        .split_inclusive(|byte| *byte == b'\n')
-        .take(error.line().saturating_sub(1));
+    let before = bytes.split_inclusive(|byte| *byte == b'\n').take(error.line().saturating_sub(1));
     let line_start: usize = before.map(<[u8]>::len).sum();
     (line_start + error.column().saturating_sub(1)).min(bytes.len())
 }
@@ -221,9 +185,7 @@ impl Serialize for Tree {
             Self::Double(value) => serializer.serialize_f64(*value),
             Self::Text(value) => serializer.serialize_str(value),
             Self::Array(items) => serializer.collect_seq(items),
-            Self::Object(members) => {
-                serializer.collect_map(members.iter().map(|(key, value)| (key, value)))
-            }
+            Self::Object(members) => serializer.collect_map(members.iter().map(|(key, value)| (key, value))),
         }
     }
 }

@@ -1,7 +1,7 @@
 //! The writer: a serializer of its own, because serde_json's turns NaN into null without a word.
 use serde::ser::{
-    Serialize, SerializeMap, SerializeSeq, SerializeStruct, SerializeStructVariant, SerializeTuple,
-    SerializeTupleStruct, SerializeTupleVariant, Serializer,
+    Serialize, SerializeMap, SerializeSeq, SerializeStruct, SerializeStructVariant, SerializeTuple, SerializeTupleStruct,
+    SerializeTupleVariant, Serializer,
 };
 
 use super::{CanonError, MAX_DEPTH};
@@ -35,10 +35,7 @@ pub fn file_bytes<T: Serialize + ?Sized>(value: &T) -> Result<Vec<u8>, CanonErro
 pub(super) fn object(mut members: Vec<(String, Vec<u8>)>) -> Result<Vec<u8>, CanonError> {
     members.sort_by(|(a, _), (b, _)| a.encode_utf16().cmp(b.encode_utf16()));
     if let Some(pair) = members.windows(2).find(|pair| pair[0].0 == pair[1].0) {
-        return Err(CanonError::KeyTwice {
-            key: pair[0].0.clone(),
-            offset: None,
-        });
+        return Err(CanonError::KeyTwice { key: pair[0].0.clone(), offset: None });
     }
     let mut out = vec![b'{'];
     for (index, (key, value)) in members.iter().enumerate() {
@@ -62,19 +59,12 @@ fn double(value: f64) -> Result<Vec<u8>, CanonError> {
     if !value.is_finite() {
         return Err(CanonError::NotFinite);
     }
-    Ok(ryu_js::Buffer::new()
-        .format_finite(value)
-        .as_bytes()
-        .to_vec())
+    Ok(ryu_js::Buffer::new().format_finite(value).as_bytes().to_vec())
 }
 
 fn whole(text: String, nearest: f64) -> Result<Vec<u8>, CanonError> {
     let written = double(nearest)?;
-    if written == text.as_bytes() {
-        Ok(written)
-    } else {
-        Err(CanonError::WholeNumberTooLarge(text))
-    }
+    if written == text.as_bytes() { Ok(written) } else { Err(CanonError::WholeNumberTooLarge(text)) }
 }
 
 #[derive(Clone, Copy)]
@@ -87,36 +77,17 @@ impl Writer {
         if self.depth == MAX_DEPTH {
             return Err(CanonError::TooDeep { offset: None });
         }
-        Ok(Self {
-            depth: self.depth + 1,
-        })
+        Ok(Self { depth: self.depth + 1 })
     }
 
     fn array(self, variant: Option<&'static str>) -> Result<ArrayWriter, CanonError> {
-        let outer = if variant.is_some() {
-            self.inside()?
-        } else {
-            self
-        };
-        Ok(ArrayWriter {
-            inner: outer.inside()?,
-            out: vec![b'['],
-            variant,
-        })
+        let outer = if variant.is_some() { self.inside()? } else { self };
+        Ok(ArrayWriter { inner: outer.inside()?, out: vec![b'['], variant })
     }
 
     fn object(self, variant: Option<&'static str>) -> Result<ObjectWriter, CanonError> {
-        let outer = if variant.is_some() {
-            self.inside()?
-        } else {
-            self
-        };
-        Ok(ObjectWriter {
-            inner: outer.inside()?,
-            key: None,
-            members: Vec::new(),
-            variant,
-        })
+        let outer = if variant.is_some() { self.inside()? } else { self };
+        Ok(ObjectWriter { inner: outer.inside()?, key: None, members: Vec::new(), variant })
     }
 }
 
@@ -191,20 +162,11 @@ impl Serializer for Writer {
         self.serialize_none()
     }
 
-    fn serialize_unit_variant(
-        self,
-        _name: &'static str,
-        _index: u32,
-        variant: &'static str,
-    ) -> Result<Vec<u8>, CanonError> {
+    fn serialize_unit_variant(self, _name: &'static str, _index: u32, variant: &'static str) -> Result<Vec<u8>, CanonError> {
         string(variant)
     }
 
-    fn serialize_newtype_struct<T: Serialize + ?Sized>(
-        self,
-        _name: &'static str,
-        value: &T,
-    ) -> Result<Vec<u8>, CanonError> {
+    fn serialize_newtype_struct<T: Serialize + ?Sized>(self, _name: &'static str, value: &T) -> Result<Vec<u8>, CanonError> {
         value.serialize(self)
     }
 
@@ -226,11 +188,7 @@ impl Serializer for Writer {
         self.array(None)
     }
 
-    fn serialize_tuple_struct(
-        self,
-        _name: &'static str,
-        _length: usize,
-    ) -> Result<ArrayWriter, CanonError> {
+    fn serialize_tuple_struct(self, _name: &'static str, _length: usize) -> Result<ArrayWriter, CanonError> {
         self.array(None)
     }
 
@@ -248,11 +206,7 @@ impl Serializer for Writer {
         self.object(None)
     }
 
-    fn serialize_struct(
-        self,
-        _name: &'static str,
-        _length: usize,
-    ) -> Result<ObjectWriter, CanonError> {
+    fn serialize_struct(self, _name: &'static str, _length: usize) -> Result<ObjectWriter, CanonError> {
         self.object(None)
     }
 

@@ -1,0 +1,10 @@
+//! stub
+use crate::plan::resolved::ResolvedPlan;
+/// stub
+pub struct SealedPlan(ResolvedPlan);
+impl SealedPlan {
+    /// stub
+    pub fn resolved(&self) -> &ResolvedPlan {
+        &self.0
+    }
+}

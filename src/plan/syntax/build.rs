@@ -1,0 +1,250 @@
+//! From the parser's events to the tree, refusing what a plan may not hold.
+
+use super::tree::{Entry, Node, Value};
+use super::{DEEPEST_NESTING, scalar};
+use crate::text::diagnostic::Diagnostic;
+use crate::text::source::{Source, Span};
+use saphyr_parser::{Event, Parser, ScalarStyle, ScanError};
+use std::collections::HashMap;
+
+/// Turns the parser's places, which count characters, into bytes.
+struct Bytes<'s> {
+    text: &'s str,
+    /// Byte of each character; empty for ASCII, where they are the same.
+    of_character: Vec<u32>,
+}
+
+impl<'s> Bytes<'s> {
+    fn new(text: &'s str) -> Self {
+        let of_character = if text.is_ascii() { Vec::new() } else { text.char_indices().map(|(byte, _)| byte as u32).collect() };
+        Bytes { text, of_character }
+    }
+
+    fn at(&self, character: usize) -> usize {
+        if self.of_character.is_empty() {
+            character.min(self.text.len())
+        } else {
+            self.of_character.get(character).map_or(self.text.len(), |byte| *byte as usize)
+        }
+    }
+
+    fn span(&self, span: &saphyr_parser::Span) -> Span {
+        let start = self.at(span.start.index());
+        let end = self.at(span.end.index()).max(start);
+        // An empty value ends where it starts; a block's end lies on the next line.
+        let kept = self.text[start..end].trim_end().len();
+        Span::new(start, start + kept)
+    }
+}
+
+/// A list or map that is still open.
+struct Open {
+    start: usize,
+    content: Content,
+}
+
+enum Content {
+    List(Vec<Node>),
+    Map { entries: Vec<Entry>, seen: HashMap<String, Span>, key: Option<(String, Span)> },
+}
+
+struct Builder<'s> {
+    source: &'s Source,
+    bytes: Bytes<'s>,
+    open: Vec<Open>,
+    root: Option<Node>,
+    findings: Vec<Diagnostic>,
+    documents: usize,
+}
+
+/// The tree of a text and what was refused.
+pub(super) fn build(source: &Source) -> (Option<Node>, Vec<Diagnostic>) {
+    let mut builder =
+        Builder { source, bytes: Bytes::new(source.text()), open: Vec::new(), root: None, findings: Vec::new(), documents: 0 };
+    for event in Parser::new_from_str(source.text()) {
+        let goes_on = match event {
+            Ok((event, span)) => builder.take(event, &span),
+            Err(error) => {
+                let finding = builder.syntax_error(&error);
+                builder.findings.push(finding);
+                false
+            }
+        };
+        if !goes_on {
+            break;
+        }
+    }
+    let root = if builder.findings.is_empty() { builder.root } else { None };
+    (root, builder.findings)
+}
+
+impl Builder<'_> {
+    /// Takes an event in; `false` where reading on makes no sense.
+    fn take(&mut self, event: Event<'_>, span: &saphyr_parser::Span) -> bool {
+        let place = self.bytes.span(span);
+        match event {
+            Event::Alias(_) => {
+                self.refuse(
+                    "yaml-alias",
+                    "a plan has no aliases (`*name`)",
+                    place,
+                    "write the value out, so that a reader need not look for it",
+                );
+                self.add(Node { span: place, value: Value::Null });
+            }
+            Event::Scalar(text, style, anchor, tag) => {
+                self.loose(anchor, tag.is_some(), place);
+                let value = if style == ScalarStyle::Plain { scalar::plain(&text) } else { Some(Value::Text(text.into_owned())) };
+                let value = value.unwrap_or_else(|| {
+                    self.refuse(
+                        "number-not-finite",
+                        "this is not a finite number",
+                        place,
+                        "write a finite number, or quote the text if it is a name",
+                    );
+                    Value::Null
+                });
+                self.add(Node { span: place, value });
+            }
+            Event::SequenceStart(anchor, tag) => {
+                self.loose(anchor, tag.is_some(), place);
+                return self.start(place, Content::List(Vec::new()));
+            }
+            Event::MappingStart(anchor, tag) => {
+                self.loose(anchor, tag.is_some(), place);
+                return self.start(place, Content::Map { entries: Vec::new(), seen: HashMap::new(), key: None });
+            }
+            Event::SequenceEnd | Event::MappingEnd => self.end(place),
+            Event::DocumentStart(_) => {
+                self.documents += 1;
+                if self.documents == 2 {
+                    self.refuse(
+                        "yaml-documents",
+                        "a second document starts here",
+                        place,
+                        "a plan is one document; remove the `---` or put the rest into another file",
+                    );
+                    return false;
+                }
+            }
+            Event::Nothing | Event::StreamStart | Event::StreamEnd | Event::DocumentEnd => {}
+        }
+        true
+    }
+
+    fn refuse(&mut self, rule: &str, message: &str, place: Span, hint: &str) {
+        let finding = Diagnostic::error(rule, message).at(self.source.label(place, "here")).hint(hint);
+        self.findings.push(finding);
+    }
+
+    fn loose(&mut self, anchor: usize, tagged: bool, place: Span) {
+        if anchor != 0 {
+            self.refuse(
+                "yaml-anchor",
+                "a plan has no anchors (`&name`)",
+                place,
+                "remove it; write each value where it belongs, or quote text that starts with `&`",
+            );
+        }
+        if tagged {
+            self.refuse("yaml-tag", "a plan has no tags (`!name`)", place, "remove it, or quote text that starts with `!`");
+        }
+    }
+
+    fn start(&mut self, place: Span, content: Content) -> bool {
+        if self.open.len() == DEEPEST_NESTING {
+            self.refuse("yaml-too-deep", "lists and maps are nested too deep", place, "no part of a plan nests deeper than a few levels");
+            return false;
+        }
+        self.open.push(Open { start: place.start, content });
+        true
+    }
+
+    fn end(&mut self, place: Span) {
+        let Some(Open { start, content }) = self.open.pop() else { return };
+        let value = match content {
+            Content::List(items) => Value::List(items),
+            Content::Map { entries, .. } => Value::Map(entries),
+        };
+        let mut end = place.end.max(start);
+        // The end of a block is noticed only at the next token; the block ends with its last part.
+        let last = match &value {
+            Value::List(items) => items.last().map(|node| node.span.end),
+            Value::Map(entries) => entries.last().map(|entry| entry.node.span.end.max(entry.key_span.end)),
+            _ => None,
+        };
+        if let Some(last) = last {
+            let closed_by_bracket = self.bytes.text.as_bytes().get(end.wrapping_sub(1)).is_some_and(|byte| matches!(byte, b']' | b'}'));
+            if !closed_by_bracket || end < last {
+                end = last;
+            }
+        }
+        self.add(Node { span: Span::new(start, end), value });
+    }
+
+    fn add(&mut self, node: Node) {
+        match self.open.last_mut() {
+            None => self.root = (node.value != Value::Null).then_some(node),
+            Some(Open { content: Content::List(items), .. }) => items.push(node),
+            Some(Open { content: Content::Map { entries, seen, key }, .. }) => match key.take() {
+                None => {
+                    let text = match &node.value {
+                        Value::Null => Some(self.bytes.text[node.span.start..node.span.end].to_owned()),
+                        _ => node.text().map(str::to_owned),
+                    };
+                    let place = node.span;
+                    let Some(text) = text else {
+                        self.refuse("yaml-key", "a list or map cannot be a key", place, "write a name before the colon");
+                        if let Some(Open { content: Content::Map { key, .. }, .. }) = self.open.last_mut() {
+                            *key = Some((String::new(), place));
+                        }
+                        return;
+                    };
+                    let finding = if text == "<<" {
+                        Some(
+                            Diagnostic::error("yaml-merge-key", "a plan has no merge keys (`<<`)")
+                                .at(self.source.label(place, "here"))
+                                .hint("write the entries out"),
+                        )
+                    } else if text.is_empty() {
+                        Some(
+                            Diagnostic::error("yaml-key", "a key is missing before the colon")
+                                .at(self.source.label(place, "here"))
+                                .hint("write a name before the colon"),
+                        )
+                    } else {
+                        seen.get(&text).map(|first| {
+                            Diagnostic::error("yaml-duplicate-key", format!("the key `{text}` stands twice in one map"))
+                                .at(self.source.label(place, "the second"))
+                                .at(self.source.label(*first, "the first"))
+                                .hint("remove one of them; nothing is silently overridden")
+                        })
+                    };
+                    seen.entry(text.clone()).or_insert(place);
+                    *key = Some((text, place));
+                    self.findings.extend(finding);
+                }
+                Some((text, key_span)) => entries.push(Entry { key: text, key_span, node }),
+            },
+        }
+    }
+
+    fn syntax_error(&self, error: &ScanError) -> Diagnostic {
+        let at = self.bytes.at(error.marker().index());
+        let text = self.bytes.text;
+        let start = text[..at].rfind('\n').map_or(0, |line| line + 1);
+        let line = text[start..].lines().next().unwrap_or("");
+        let hint = if line.trim_start_matches(' ').starts_with('\t') {
+            "indent with spaces; a tab has no width in YAML"
+        } else if error.info().contains("recursion") || error.info().contains("depth") {
+            "no part of a plan nests deeper than a few levels"
+        } else if line.matches(": ").count() > 1 {
+            "a second `: ` on one line needs quotes round the text that holds it"
+        } else {
+            "look at the indentation, and at quotes, brackets and colons on this line and the one before"
+        };
+        Diagnostic::error("yaml-syntax", format!("this is not YAML: {}", error.info()))
+            .at(self.source.label(Span::new(at, (at + 1).min(text.len()).max(at)), "here"))
+            .hint(hint)
+    }
+}

@@ -1,0 +1,9 @@
+//! What the values come down to: counts, means and cross-products per between cell, and why a quantity is refused.
+
+mod accumulate;
+mod moments;
+mod refusal;
+
+pub(crate) use moments::rounding_unit;
+pub use moments::{CellMoments, ErrorMatrix, Moments};
+pub use refusal::Refusal;

@@ -1,0 +1,276 @@
+use super::accumulate::Rows;
+use super::refusal::Refusal;
+use crate::stats::linear::{DoubleDouble, Matrix};
+
+/// Count, means and centred cross-products of the subjects of one between cell.
+#[derive(Clone, Debug)]
+pub struct CellMoments {
+    /// Number of subjects.
+    pub subjects: usize,
+    /// Mean at each occasion; zero where there is no subject.
+    pub mean: Vec<DoubleDouble>,
+    /// Centred cross-products, occasions by occasions, not divided by anything.
+    pub cross_products: Matrix,
+    /// Largest magnitude of a value at each occasion, by which "no variance" is judged against rounding.
+    pub largest: Vec<f64>,
+}
+
+/// Everything that the tests need of the values, cell by cell.
+///
+/// # What counts as zero
+///
+/// A value read from text is off by up to half a unit in its last place, so that a variance that ought to be zero may not
+/// come out as zero. A sum of squares of a combination of occasions with weights w is treated as zero when it is
+/// at most df sum_k (w_k u_k)^2 with u_k = 4 eps max|y_k|, eps = 2^-52 and the largest magnitude taken over the
+/// cells concerned. [`ErrorMatrix`] applies this one rule to traces and to the pivots by which a rank is judged.
+#[derive(Clone, Debug)]
+pub struct Moments {
+    occasions: usize,
+    cells: Vec<CellMoments>,
+}
+
+/// M'EM for orthonormal contrasts M between occasions, pooled over the cells kept.
+#[derive(Clone, Debug)]
+pub struct ErrorMatrix {
+    /// M'EM, contrasts by contrasts.
+    pub matrix: Matrix,
+    /// Error degrees of freedom: subjects less cells, both among the cells kept.
+    pub df: usize,
+    /// Subjects of the cells kept.
+    pub subjects: usize,
+    /// Cells kept that have subjects.
+    pub cells: usize,
+    within: Matrix,
+    rounding: Vec<f64>,
+}
+
+impl Moments {
+    /// Reads `values` (one row of `occasions` values for each subject) in two passes; `cell` gives the between cell of each
+    /// subject, counted from 0 and below `cells`; `kept`, where given, says which subjects take part.
+    ///
+    /// The result is the same, bit for bit, whatever the number of threads; it depends on the order of the subjects in
+    /// the last bits, so callers sort them by identifier.
+    ///
+    /// ```
+    /// use aforesaid::stats::model::Moments;
+    /// let values = [1e12 + 1.0, 2.0, 1e12 + 2.0, 4.0, 1e12 + 3.0, 9.0]; // invented
+    /// let moments = Moments::new(&values, 2, &[0, 0, 0], 1, None).unwrap();
+    /// assert_eq!(moments.mean(0, 1), 5.0);
+    /// assert_eq!(moments.covariance(0, 0, 0), Some(1.0));
+    /// assert_eq!(moments.covariance(0, 0, 1), Some(3.5));
+    /// ```
+    ///
+    /// # Errors
+    /// No subject, a value that is not finite, or magnitudes beyond 1e70 or (all of an occasion) below 1e-60.
+    ///
+    /// # Panics
+    /// Where lengths do not agree or a cell is out of range: a slip of the caller, not of the data.
+    pub fn new(values: &[f64], occasions: usize, cell: &[u32], cells: usize, kept: Option<&[bool]>) -> Result<Moments, Refusal> {
+        assert_eq!(values.len(), cell.len() * occasions, "one row of values for each subject");
+        assert!(kept.is_none_or(|kept| kept.len() == cell.len()), "one flag for each subject");
+        assert!(cell.iter().all(|&cell| (cell as usize) < cells), "every cell is below the number of cells");
+        let rows = Rows { values, occasions, cell, cells, kept };
+        let centres = rows.centres()?;
+        let deviations = rows.deviations(&centres.centre);
+        let pairs = occasions * (occasions + 1) / 2;
+        let cells = (0..cells).map(|cell| {
+            let subjects = centres.count[cell];
+            let places = cell * occasions..(cell + 1) * occasions;
+            let centre = &centres.centre[places.clone()];
+            let mut moments = CellMoments {
+                subjects,
+                mean: centre.iter().map(|&centre| centre.into()).collect(),
+                cross_products: Matrix::zeros(occasions, occasions),
+                largest: centres.largest[places.clone()].to_vec(),
+            };
+            if subjects == 0 {
+                return moments;
+            }
+            let count = DoubleDouble::from(subjects);
+            let sum = &deviations.sum[places];
+            let product = &deviations.product[cell * pairs..(cell + 1) * pairs];
+            let mut pair = 0;
+            for first in 0..occasions {
+                moments.mean[first] += sum[first] / count;
+                for second in 0..=first {
+                    let centred = product[pair] - sum[first] * sum[second] / count;
+                    moments.cross_products[(first, second)] = centred;
+                    moments.cross_products[(second, first)] = centred;
+                    pair += 1;
+                }
+            }
+            moments
+        });
+        Ok(Moments { occasions, cells: cells.collect() })
+    }
+
+    /// Moments that were not read from rows, as where they are drawn directly from their distribution.
+    ///
+    /// # Panics
+    /// Where a cell has another number of occasions than the first.
+    pub fn from_cells(cells: Vec<CellMoments>) -> Moments {
+        let occasions = cells.first().map_or(0, |cell| cell.mean.len());
+        for cell in &cells {
+            assert_eq!(cell.mean.len(), occasions, "one number of occasions");
+            assert_eq!(cell.largest.len(), occasions, "one number of occasions");
+            assert_eq!((cell.cross_products.rows(), cell.cross_products.columns()), (occasions, occasions));
+        }
+        Moments { occasions, cells }
+    }
+
+    /// Number of occasions, b.
+    pub fn occasions(&self) -> usize {
+        self.occasions
+    }
+
+    /// The cells, in the order of the plan.
+    pub fn cells(&self) -> &[CellMoments] {
+        &self.cells
+    }
+
+    /// Subjects in all cells.
+    pub fn subjects(&self) -> usize {
+        self.cells.iter().map(|cell| cell.subjects).sum()
+    }
+
+    /// Subjects of each cell.
+    pub fn cell_sizes(&self) -> Vec<usize> {
+        self.cells.iter().map(|cell| cell.subjects).collect()
+    }
+
+    /// Mean of a cell at an occasion.
+    pub fn mean(&self, cell: usize, occasion: usize) -> f64 {
+        self.cells[cell].mean[occasion].value()
+    }
+
+    /// Covariance of two occasions in a cell (a variance where they are the same); none below two subjects.
+    pub fn covariance(&self, cell: usize, first: usize, second: usize) -> Option<f64> {
+        let cell = &self.cells[cell];
+        (cell.subjects >= 2).then(|| (cell.cross_products[(first, second)] / DoubleDouble::from(cell.subjects - 1)).value())
+    }
+
+    /// Standard deviation of a cell at an occasion; none below two subjects.
+    pub fn standard_deviation(&self, cell: usize, occasion: usize) -> Option<f64> {
+        let cell = &self.cells[cell];
+        (cell.subjects >= 2).then(|| (cell.cross_products[(occasion, occasion)] / DoubleDouble::from(cell.subjects - 1)).sqrt().value())
+    }
+
+    /// Correlation of two occasions within a cell.
+    ///
+    /// # Errors
+    /// An empty cell, or an occasion whose variance there is zero by the rule of [`Moments`].
+    pub fn correlation(&self, cell: usize, first: usize, second: usize) -> Result<f64, Refusal> {
+        let moments = &self.cells[cell];
+        if moments.subjects == 0 {
+            return Err(Refusal::EmptyCell { cell });
+        }
+        for occasion in [first, second] {
+            let unit = rounding_unit(moments.largest[occasion]);
+            let df = (moments.subjects - 1) as f64;
+            if moments.cross_products[(occasion, occasion)].value() <= df * unit * unit {
+                return Err(Refusal::ConstantOccasion { cell, occasion });
+            }
+        }
+        let product = moments.cross_products[(first, first)] * moments.cross_products[(second, second)];
+        Ok((moments.cross_products[(first, second)] / product.sqrt()).value().clamp(-1.0, 1.0))
+    }
+
+    /// M'EM pooled over the cells kept, for `within` (occasions by contrasts) with orthonormal columns.
+    ///
+    /// # Errors
+    /// No error degrees of freedom among the cells kept.
+    pub fn error(&self, within: &Matrix, kept: &[bool]) -> Result<ErrorMatrix, Refusal> {
+        let mut pooled = Matrix::zeros(self.occasions, self.occasions);
+        let mut rounding = vec![0.0_f64; self.occasions];
+        let (mut subjects, mut cells) = (0, 0);
+        for (cell, _) in self.cells.iter().zip(kept).filter(|(cell, kept)| **kept && cell.subjects > 0) {
+            pooled.accumulate(&cell.cross_products);
+            subjects += cell.subjects;
+            cells += 1;
+            for (unit, &largest) in rounding.iter_mut().zip(&cell.largest) {
+                *unit = unit.max(rounding_unit(largest));
+            }
+        }
+        if subjects <= cells {
+            return Err(Refusal::NoErrorDf);
+        }
+        let df = subjects - cells;
+        Ok(ErrorMatrix { matrix: pooled.congruence(within), df, subjects, cells, within: within.clone(), rounding })
+    }
+}
+
+impl ErrorMatrix {
+    /// Number of contrasts, q.
+    pub fn contrasts(&self) -> usize {
+        self.matrix.rows()
+    }
+
+    /// tr M'EM.
+    ///
+    /// # Errors
+    /// The trace is zero by the rule of [`Moments`].
+    pub fn trace(&self) -> Result<DoubleDouble, Refusal> {
+        let trace = self.matrix.trace();
+        let noise: f64 = (0..self.contrasts()).map(|contrast| self.noise(&self.within.column(contrast))).sum();
+        if trace.value() <= noise { Err(Refusal::NoErrorVariance) } else { Ok(trace) }
+    }
+
+    /// ln det M'EM.
+    ///
+    /// The rank is judged by the pivots of an elimination that takes the relatively largest next: a pivot is the sum of
+    /// squares of what is left of a contrast after those before it, and counts as zero by the rule of [`Moments`], or
+    /// below 1e-24 of the contrast's own sum of squares, where the arithmetic ends. Neither judgement changes with the
+    /// units of the occasions.
+    ///
+    /// # Errors
+    /// More contrasts than degrees of freedom, or contrasts that are linear copies of others.
+    pub fn log_determinant(&self) -> Result<DoubleDouble, Refusal> {
+        const PIVOT: f64 = 1e-24;
+        let size = self.contrasts();
+        let singular = |rank| Refusal::SingularError { rank, contrasts: size, error_df: self.df };
+        if size > self.df {
+            return Err(singular(self.df));
+        }
+        let own: Vec<f64> = (0..size).map(|index| self.matrix[(index, index)].value()).collect();
+        let mut left = self.matrix.clone();
+        let mut weights = self.within.transpose();
+        let mut waiting: Vec<usize> = (0..size).collect();
+        let mut logarithm = DoubleDouble::ZERO;
+        while !waiting.is_empty() {
+            let share = |index: usize| {
+                if own[index] > 0.0 { left[(index, index)].value() / own[index] } else { 0.0 }
+            };
+            let best = (0..waiting.len()).fold(0, |best, next| if share(waiting[next]) > share(waiting[best]) { next } else { best });
+            let pivot = waiting.swap_remove(best);
+            let value = left[(pivot, pivot)];
+            if value.value() <= (PIVOT * own[pivot]).max(self.noise(weights.row(pivot))) {
+                return Err(singular(size - waiting.len() - 1));
+            }
+            logarithm += value.ln();
+            for &row in &waiting {
+                let factor = left[(row, pivot)] / value;
+                for &column in &waiting {
+                    let known = factor * left[(pivot, column)];
+                    left[(row, column)] -= known;
+                }
+                for occasion in 0..weights.columns() {
+                    let known = factor * weights[(pivot, occasion)];
+                    weights[(row, occasion)] -= known;
+                }
+            }
+        }
+        Ok(logarithm)
+    }
+
+    /// The sum of squares that rounding of the values alone may leave in a combination of occasions.
+    fn noise(&self, weights: &[DoubleDouble]) -> f64 {
+        let variance: f64 =
+            weights.iter().zip(&self.rounding).map(|(weight, unit)| weight.value() * unit).map(|amount| amount * amount).sum();
+        variance * self.df as f64
+    }
+}
+
+/// 4 eps max|y|: what a value may be off by, with room.
+pub(crate) fn rounding_unit(largest: f64) -> f64 {
+    4.0 * f64::EPSILON * largest
+}
