@@ -90,6 +90,11 @@ impl Builder<'_> {
                 self.add(Node { span: place, value: Value::Null });
             }
             Event::Scalar(text, style, anchor, tag) => {
+                let place = match style {
+                    // Nothing was written: the parser names the token after it.
+                    ScalarStyle::Plain if text.is_empty() => Span::new(place.start, place.start),
+                    _ => self.quoted(style, place),
+                };
                 self.loose(anchor, tag.is_some(), place);
                 let value = if style == ScalarStyle::Plain { scalar::plain(&text) } else { Some(Value::Text(text.into_owned())) };
                 let value = value.unwrap_or_else(|| {
@@ -132,6 +137,26 @@ impl Builder<'_> {
             Event::Nothing | Event::StreamStart | Event::StreamEnd | Event::DocumentEnd => {}
         }
         true
+    }
+
+    /// The place up to the closing quote; the parser's goes on over space and comments.
+    fn quoted(&self, style: ScalarStyle, place: Span) -> Span {
+        let quote = match style {
+            ScalarStyle::SingleQuoted => b'\'',
+            ScalarStyle::DoubleQuoted => b'"',
+            _ => return place,
+        };
+        let bytes = self.bytes.text.as_bytes();
+        let mut at = place.start + 1;
+        while at < place.end {
+            match bytes[at] {
+                b'\\' if quote == b'"' => at += 2,
+                b'\'' if quote == b'\'' && bytes.get(at + 1) == Some(&b'\'') => at += 2,
+                byte if byte == quote => return Span::new(place.start, at + 1),
+                _ => at += 1,
+            }
+        }
+        place
     }
 
     fn refuse(&mut self, (rule, message, hint): Refusal, place: Span) {
