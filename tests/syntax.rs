@@ -46,6 +46,7 @@ const REFUSED: &[Case] = &[
     ("title: \"a\\0b\"\n", &[("control-character", 1, 8)]),
     ("title: \u{202e}desrever\n", &[("control-character", 1, 8)]),
     ("title: a\u{2028}b: c\n", &[("control-character", 1, 9)]),
+    ("alpha: 0.5\ralpha: 0.05\n", &[("control-character", 1, 11)]),
     ("\u{feff}plan: 1\n", &[("control-character", 1, 1)]),
     ("", &[("plan-empty", 1, 1)]),
     ("\n  \n\n", &[("plan-empty", 1, 1)]),

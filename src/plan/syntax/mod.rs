@@ -113,7 +113,9 @@ fn unreadable(source: &Source) -> Option<Diagnostic> {
                 .at(source.label(Span::default(), "")),
         );
     }
-    if let Some((at, character)) = text.char_indices().find(|(_, c)| is_refused(*c) && *c != '\r') {
+    let bytes = text.as_bytes();
+    let refused = |(at, c): &(usize, char)| is_refused(*c) && !(*c == '\r' && bytes.get(at + 1) == Some(&b'\n'));
+    if let Some((at, character)) = text.char_indices().find(refused) {
         return Some(control_character(source, Span::new(at, at + character.len_utf8()), character));
     }
     directive(source)
@@ -126,7 +128,10 @@ fn is_refused(character: char) -> bool {
 fn control_character(source: &Source, place: Span, character: char) -> Diagnostic {
     Diagnostic::error("control-character", format!("the plan holds a character that cannot be seen (U+{:04X})", character as u32))
         .at(source.label(place, "here"))
-        .hint("remove it: what a reader sees must be all that the plan says")
+        .hint(match character {
+            '\r' => "end lines with LF or CRLF; a carriage return alone hides what stands before it",
+            _ => "remove it: what a reader sees must be all that the plan says",
+        })
 }
 
 /// A line such as `%YAML 1.1` before the plan, which could change what words mean.
