@@ -2,6 +2,7 @@
 pub mod audit;
 pub mod canon;
 pub mod cli;
+pub mod conduct;
 pub mod data;
 pub mod execute;
 pub mod plan;
