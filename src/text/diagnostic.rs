@@ -14,6 +14,9 @@ pub enum Severity {
     Error,
 }
 
+/// Characters of a long line kept on each side of a place.
+const LINE_REACH: usize = 256;
+
 /// One place that a diagnostic points at. Lines and columns count from one, columns in characters.
 #[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
 pub struct Label {
@@ -30,9 +33,42 @@ pub struct Label {
     /// The text of the lines from `line` on, for rendering; not part of the machine-readable form.
     #[serde(skip)]
     pub excerpt: String,
+    /// Column of the excerpt's first character: 1 unless the start of a very long line was left out.
+    #[serde(skip)]
+    pub excerpt_column: usize,
     /// What is to be seen there.
     #[serde(rename = "label")]
     pub text: String,
+}
+
+impl Label {
+    /// A place within one line, given the line's text: for readers that keep no [`Source`](super::source::Source).
+    ///
+    /// ```
+    /// use aforesaid::text::diagnostic::Label;
+    /// let label = Label::in_line("visits.csv", 3, 4..6, "07,x2", "not a number");
+    /// assert_eq!((label.line, label.column, label.end_column), (3, 4, 6));
+    /// ```
+    pub fn in_line(
+        file: impl Into<String>,
+        line: usize,
+        columns: std::ops::Range<usize>,
+        line_text: &str,
+        text: impl Into<String>,
+    ) -> Self {
+        let before = columns.start.saturating_sub(LINE_REACH).max(1);
+        let excerpt = line_text.chars().skip(before - 1).take(2 * LINE_REACH).collect();
+        Label {
+            file: file.into(),
+            line,
+            column: columns.start,
+            end_line: line,
+            end_column: columns.end,
+            excerpt,
+            excerpt_column: before,
+            text: text.into(),
+        }
+    }
 }
 
 /// A finding: what, where, why it matters, what to do.

@@ -18,12 +18,20 @@ impl Span {
     }
 }
 
+/// A label keeps at most this many bytes of a line before and after its place.
+const REACH: usize = 512;
+
+/// Characters are counted once up to every so many bytes, so that a place in a line of megabytes is found at once.
+const STRIDE: usize = 256;
+
 /// A text with its name (as the person typed it) and an index of its lines.
 #[derive(Debug, Clone)]
 pub struct Source {
     name: String,
     text: String,
     line_starts: Vec<usize>,
+    /// How many characters start before each multiple of `STRIDE`; empty where every character is one byte.
+    characters_before: Vec<usize>,
 }
 
 impl Source {
@@ -40,7 +48,8 @@ impl Source {
         let text = text.into();
         let mut line_starts = vec![0];
         line_starts.extend(text.bytes().enumerate().filter(|(_, byte)| *byte == b'\n').map(|(at, _)| at + 1));
-        Source { name: name.into(), text, line_starts }
+        let characters_before = if text.is_ascii() { Vec::new() } else { characters_before(text.as_bytes()) };
+        Source { name: name.into(), text, line_starts, characters_before }
     }
 
     /// The name given.
@@ -62,18 +71,42 @@ impl Source {
         let byte = byte.min(self.text.len());
         let line = self.line_index(byte);
         let start = self.line_starts[line];
-        let column = self.text.as_bytes()[start..byte].iter().filter(|b| (**b & 0xC0) != 0x80).count();
-        (line + 1, column + 1)
+        (line + 1, self.characters_up_to(byte) - self.characters_up_to(start) + 1)
     }
 
-    /// A label for a span, carrying the lines it touches (at most the first and the two after it).
+    fn characters_up_to(&self, byte: usize) -> usize {
+        match self.characters_before.get(byte / STRIDE) {
+            None => byte,
+            Some(before) => before + count_characters(&self.text.as_bytes()[byte / STRIDE * STRIDE..byte]),
+        }
+    }
+
+    /// A label for a span, carrying the lines it touches (at most the first and the two after it, and of a very long
+    /// line only what stands near the place).
     pub fn label(&self, span: Span, text: impl Into<String>) -> Label {
         let (line, column) = self.line_and_column(span.start);
         let (end_line, end_column) = self.line_and_column(span.end.max(span.start));
         let last = end_line.min(line + 2);
-        let from = self.line_starts[line - 1];
+        let place = span.start.min(self.text.len());
+        let near = self.text.ceil_char_boundary(place.saturating_sub(REACH));
+        let from = self.line_starts[line - 1].max(near.min(place));
         let to = self.line_starts.get(last).copied().unwrap_or(self.text.len());
+        let to = to.min(self.text.floor_char_boundary(place + REACH)).max(from);
         let excerpt = self.text[from..to].trim_end_matches(['\n', '\r']).to_owned();
-        Label { file: self.name.clone(), line, column, end_line, end_column, excerpt, text: text.into() }
+        let (_, excerpt_column) = self.line_and_column(from);
+        Label { file: self.name.clone(), line, column, end_line, end_column, excerpt, excerpt_column, text: text.into() }
     }
+}
+
+fn count_characters(bytes: &[u8]) -> usize {
+    bytes.iter().filter(|byte| (**byte & 0xC0) != 0x80).count()
+}
+
+fn characters_before(bytes: &[u8]) -> Vec<usize> {
+    let mut before = vec![0];
+    before.extend(bytes.chunks(STRIDE).scan(0, |sum, chunk| {
+        *sum += count_characters(chunk);
+        Some(*sum)
+    }));
+    before
 }

@@ -1,5 +1,8 @@
 //! The nearest right name for a misspelt one.
 
+/// Longer names are compared for equality only.
+const LONGEST_NAME: usize = 200;
+
 /// The candidate that a person most likely meant, if any is near.
 ///
 /// A name that differs only by case or white space comes first; else the nearest by edits (a swap counts as one), where
@@ -19,8 +22,9 @@ pub fn nearest<'c>(name: &str, candidates: impl IntoIterator<Item = &'c str>) ->
         if other == folded {
             return Some(candidate);
         }
-        let longer = folded.chars().count().max(other.chars().count());
-        if longer > 200 {
+        let (one, two) = (folded.chars().count(), other.chars().count());
+        let longer = one.max(two);
+        if longer > LONGEST_NAME || one.abs_diff(two) * 3 > longer {
             continue;
         }
         let distance = strsim::damerau_levenshtein(&folded, &other);

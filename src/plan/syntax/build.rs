@@ -1,26 +1,30 @@
 //! From the parser's events to the tree, refusing what a plan may not hold.
 
 use super::tree::{Entry, Node, Value};
-use super::{DEEPEST_NESTING, scalar};
+use super::trouble::{self, Refusal};
+use super::{DEEPEST_NESTING, scalar, shortened};
 use crate::text::diagnostic::Diagnostic;
 use crate::text::source::{Source, Span};
-use saphyr_parser::{Event, Parser, ScalarStyle, ScanError};
+use saphyr_parser::{Event, Parser, ScalarStyle};
 use std::collections::HashMap;
 
+/// Reading stops after so many findings: a person mends them and looks again.
+const MOST_FINDINGS: usize = 100;
+
 /// Turns the parser's places, which count characters, into bytes.
-struct Bytes<'s> {
+pub(super) struct Bytes<'s> {
     text: &'s str,
     /// Byte of each character; empty for ASCII, where they are the same.
     of_character: Vec<u32>,
 }
 
 impl<'s> Bytes<'s> {
-    fn new(text: &'s str) -> Self {
+    pub(super) fn new(text: &'s str) -> Self {
         let of_character = if text.is_ascii() { Vec::new() } else { text.char_indices().map(|(byte, _)| byte as u32).collect() };
         Bytes { text, of_character }
     }
 
-    fn at(&self, character: usize) -> usize {
+    pub(super) fn at(&self, character: usize) -> usize {
         if self.of_character.is_empty() {
             character.min(self.text.len())
         } else {
@@ -32,7 +36,7 @@ impl<'s> Bytes<'s> {
         let start = self.at(span.start.index());
         let end = self.at(span.end.index()).max(start);
         // An empty value ends where it starts; a block's end lies on the next line.
-        let kept = self.text[start..end].trim_end().len();
+        let kept = self.text[start..end].trim_end_matches([' ', '\t', '\r', '\n']).len();
         Span::new(start, start + kept)
     }
 }
@@ -50,7 +54,7 @@ enum Content {
 
 struct Builder<'s> {
     source: &'s Source,
-    bytes: Bytes<'s>,
+    bytes: &'s Bytes<'s>,
     open: Vec<Open>,
     root: Option<Node>,
     findings: Vec<Diagnostic>,
@@ -58,19 +62,17 @@ struct Builder<'s> {
 }
 
 /// The tree of a text and what was refused.
-pub(super) fn build(source: &Source) -> (Option<Node>, Vec<Diagnostic>) {
-    let mut builder =
-        Builder { source, bytes: Bytes::new(source.text()), open: Vec::new(), root: None, findings: Vec::new(), documents: 0 };
+pub(super) fn build(source: &Source, bytes: &Bytes<'_>) -> (Option<Node>, Vec<Diagnostic>) {
+    let mut builder = Builder { source, bytes, open: Vec::new(), root: None, findings: Vec::new(), documents: 0 };
     for event in Parser::new_from_str(source.text()) {
         let goes_on = match event {
             Ok((event, span)) => builder.take(event, &span),
             Err(error) => {
-                let finding = builder.syntax_error(&error);
-                builder.findings.push(finding);
+                builder.findings.push(trouble::finding(source, bytes.at(error.marker().index()), error.info()));
                 false
             }
         };
-        if !goes_on {
+        if !goes_on || builder.findings.len() >= MOST_FINDINGS {
             break;
         }
     }
@@ -84,26 +86,29 @@ impl Builder<'_> {
         let place = self.bytes.span(span);
         match event {
             Event::Alias(_) => {
-                self.refuse(
-                    "yaml-alias",
-                    "a plan has no aliases (`*name`)",
-                    place,
-                    "write the value out, so that a reader need not look for it",
-                );
+                self.refuse(trouble::ALIAS, place);
                 self.add(Node { span: place, value: Value::Null });
             }
             Event::Scalar(text, style, anchor, tag) => {
+                let place = match style {
+                    // Nothing was written: the parser names the token after it.
+                    ScalarStyle::Plain if text.is_empty() => Span::new(place.start, place.start),
+                    _ => self.quoted(style, place),
+                };
                 self.loose(anchor, tag.is_some(), place);
                 let value = if style == ScalarStyle::Plain { scalar::plain(&text) } else { Some(Value::Text(text.into_owned())) };
                 let value = value.unwrap_or_else(|| {
                     self.refuse(
-                        "number-not-finite",
-                        "this is not a finite number",
+                        ("number-not-finite", "this is not a finite number", "write a finite number, or quote the text if it is a name"),
                         place,
-                        "write a finite number, or quote the text if it is a name",
                     );
                     Value::Null
                 });
+                if let Value::Text(text) = &value
+                    && let Some(unseen) = text.chars().find(|c| super::is_refused(*c))
+                {
+                    self.findings.push(super::control_character(self.source, place, unseen));
+                }
                 self.add(Node { span: place, value });
             }
             Event::SequenceStart(anchor, tag) => {
@@ -119,10 +124,12 @@ impl Builder<'_> {
                 self.documents += 1;
                 if self.documents == 2 {
                     self.refuse(
-                        "yaml-documents",
-                        "a second document starts here",
+                        (
+                            "yaml-documents",
+                            "a second document starts here",
+                            "a plan is one document; remove the `---` or put the rest into another file",
+                        ),
                         place,
-                        "a plan is one document; remove the `---` or put the rest into another file",
                     );
                     return false;
                 }
@@ -132,28 +139,67 @@ impl Builder<'_> {
         true
     }
 
-    fn refuse(&mut self, rule: &str, message: &str, place: Span, hint: &str) {
+    /// The place up to the closing quote; the parser's goes on over space and comments.
+    fn quoted(&self, style: ScalarStyle, place: Span) -> Span {
+        let quote = match style {
+            ScalarStyle::SingleQuoted => b'\'',
+            ScalarStyle::DoubleQuoted => b'"',
+            _ => return place,
+        };
+        let bytes = self.bytes.text.as_bytes();
+        let mut at = place.start + 1;
+        while at < place.end {
+            match bytes[at] {
+                b'\\' if quote == b'"' => at += 2,
+                b'\'' if quote == b'\'' && bytes.get(at + 1) == Some(&b'\'') => at += 2,
+                byte if byte == quote => return Span::new(place.start, at + 1),
+                _ => at += 1,
+            }
+        }
+        place
+    }
+
+    fn refuse(&mut self, (rule, message, hint): Refusal, place: Span) {
         let finding = Diagnostic::error(rule, message).at(self.source.label(place, "here")).hint(hint);
         self.findings.push(finding);
     }
 
     fn loose(&mut self, anchor: usize, tagged: bool, place: Span) {
         if anchor != 0 {
-            self.refuse(
-                "yaml-anchor",
-                "a plan has no anchors (`&name`)",
-                place,
-                "remove it; write each value where it belongs, or quote text that starts with `&`",
-            );
+            self.refuse(trouble::ANCHOR, self.property(place.start, '&'));
         }
         if tagged {
-            self.refuse("yaml-tag", "a plan has no tags (`!name`)", place, "remove it, or quote text that starts with `!`");
+            self.refuse(trouble::TAG, self.property(place.start, '!'));
         }
+    }
+
+    /// Where the anchor or tag of the value at `start` stands: there or just before it.
+    fn property(&self, start: usize, mark: char) -> Span {
+        let text = self.bytes.text;
+        let ends = |c: char| c.is_ascii_whitespace() || matches!(c, ',' | '[' | ']' | '{' | '}');
+        let mut at = start;
+        for word in text[start..].split_ascii_whitespace().take(2) {
+            at += text[at..].find(|c: char| !c.is_ascii_whitespace()).unwrap_or(0);
+            if word.starts_with(mark) {
+                return Span::new(at, at + word.find(ends).unwrap_or(word.len()));
+            }
+            at += word.len();
+        }
+        let mut before = &text[..start];
+        for _ in 0..2 {
+            before = before.trim_ascii_end();
+            let from = before.rfind(ends).map_or(0, |end| end + 1);
+            if before[from..].starts_with(mark) {
+                return Span::new(from, before.len());
+            }
+            before = &before[..from];
+        }
+        Span::new(start, start)
     }
 
     fn start(&mut self, place: Span, content: Content) -> bool {
         if self.open.len() == DEEPEST_NESTING {
-            self.refuse("yaml-too-deep", "lists and maps are nested too deep", place, "no part of a plan nests deeper than a few levels");
+            self.refuse(trouble::TOO_DEEP, place);
             return false;
         }
         self.open.push(Open { start: place.start, content });
@@ -173,11 +219,11 @@ impl Builder<'_> {
             Value::Map(entries) => entries.last().map(|entry| entry.node.span.end.max(entry.key_span.end)),
             _ => None,
         };
-        if let Some(last) = last {
-            let closed_by_bracket = self.bytes.text.as_bytes().get(end.wrapping_sub(1)).is_some_and(|byte| matches!(byte, b']' | b'}'));
-            if !closed_by_bracket || end < last {
-                end = last;
-            }
+        let bracketed = matches!(self.bytes.text.as_bytes().get(start), Some(b'[' | b'{'));
+        if let Some(last) = last
+            && !bracketed
+        {
+            end = last;
         }
         self.add(Node { span: Span::new(start, end), value });
     }
@@ -194,7 +240,7 @@ impl Builder<'_> {
                     };
                     let place = node.span;
                     let Some(text) = text else {
-                        self.refuse("yaml-key", "a list or map cannot be a key", place, "write a name before the colon");
+                        self.refuse(("yaml-key", "a list or map cannot be a key", "write a name before the colon"), place);
                         if let Some(Open { content: Content::Map { key, .. }, .. }) = self.open.last_mut() {
                             *key = Some((String::new(), place));
                         }
@@ -212,9 +258,15 @@ impl Builder<'_> {
                                 .at(self.source.label(place, "here"))
                                 .hint("write a name before the colon"),
                         )
+                    } else if text.contains(['\n', '\t']) {
+                        Some(
+                            Diagnostic::error("yaml-key", "a key goes over more than one line, or holds a tab")
+                                .at(self.source.label(place, "here"))
+                                .hint("write the name on one line; the quote before it may not be closed"),
+                        )
                     } else {
                         seen.get(&text).map(|first| {
-                            Diagnostic::error("yaml-duplicate-key", format!("the key `{text}` stands twice in one map"))
+                            Diagnostic::error("yaml-duplicate-key", format!("the key `{}` stands twice in one map", shortened(&text)))
                                 .at(self.source.label(place, "the second"))
                                 .at(self.source.label(*first, "the first"))
                                 .hint("remove one of them; nothing is silently overridden")
@@ -227,24 +279,5 @@ impl Builder<'_> {
                 Some((text, key_span)) => entries.push(Entry { key: text, key_span, node }),
             },
         }
-    }
-
-    fn syntax_error(&self, error: &ScanError) -> Diagnostic {
-        let at = self.bytes.at(error.marker().index());
-        let text = self.bytes.text;
-        let start = text[..at].rfind('\n').map_or(0, |line| line + 1);
-        let line = text[start..].lines().next().unwrap_or("");
-        let hint = if line.trim_start_matches(' ').starts_with('\t') {
-            "indent with spaces; a tab has no width in YAML"
-        } else if error.info().contains("recursion") || error.info().contains("depth") {
-            "no part of a plan nests deeper than a few levels"
-        } else if line.matches(": ").count() > 1 {
-            "a second `: ` on one line needs quotes round the text that holds it"
-        } else {
-            "look at the indentation, and at quotes, brackets and colons on this line and the one before"
-        };
-        Diagnostic::error("yaml-syntax", format!("this is not YAML: {}", error.info()))
-            .at(self.source.label(Span::new(at, (at + 1).min(text.len()).max(at)), "here"))
-            .hint(hint)
     }
 }

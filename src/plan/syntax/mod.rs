@@ -8,8 +8,10 @@ mod agree;
 mod build;
 mod scalar;
 pub mod tree;
+mod trouble;
 
 use crate::text::diagnostic::Diagnostic;
+use crate::text::render::is_unseen;
 use crate::text::source::{Source, Span};
 use tree::Node;
 
@@ -18,6 +20,9 @@ pub const LARGEST_PLAN: usize = 4 << 20;
 
 /// Maps and lists may be nested this deep.
 pub const DEEPEST_NESTING: usize = 64;
+
+/// Names in messages are cut after this many characters.
+const LONGEST_QUOTED: usize = 80;
 
 /// What came of parsing.
 #[derive(Debug, Clone, PartialEq)]
@@ -50,20 +55,24 @@ pub fn decode(name: &str, bytes: &[u8]) -> Result<Source, Box<Diagnostic>> {
     let bytes = bytes.strip_prefix(b"\xEF\xBB\xBF").unwrap_or(bytes);
     match std::str::from_utf8(bytes) {
         Ok(text) => Ok(Source::new(name, text)),
-        Err(error) => {
-            let readable = String::from_utf8_lossy(&bytes[..error.valid_up_to()]).into_owned();
-            let source = Source::new(name, readable);
-            let end = source.text().len();
-            Err(Box::new(
-                Diagnostic::error(
-                    "not-utf-8",
-                    format!("the plan is not UTF-8 text: byte {:#04x} is out of place", bytes[error.valid_up_to()]),
-                )
-                .at(source.label(Span::new(end, end), "after this"))
-                .hint("save the file as UTF-8"),
-            ))
-        }
+        Err(error) => Err(Box::new(not_utf_8(name, bytes, &error))),
     }
+}
+
+fn not_utf_8(name: &str, bytes: &[u8], error: &std::str::Utf8Error) -> Diagnostic {
+    let at = error.valid_up_to();
+    // Only the lines up to the bad byte can be shown.
+    let source = Source::new(name, String::from_utf8_lossy(&bytes[..at]));
+    let message = match error.error_len() {
+        None => "the plan is not whole: it ends in the middle of a character".to_owned(),
+        Some(_) => format!("the plan is not UTF-8 text: byte {:#04x} is out of place", bytes[at]),
+    };
+    let hint = match bytes {
+        [0xFF, 0xFE, ..] | [0xFE, 0xFF, ..] => "the file seems to be UTF-16; save it as UTF-8",
+        [b'P', b'K', 3, 4, ..] => "this seems to be an archive or an office document; a plan is plain text",
+        _ => "save the file as UTF-8",
+    };
+    Diagnostic::error("not-utf-8", message).at(source.label(Span::new(at, at), "after this")).hint(hint)
 }
 
 /// Parses a plan.
@@ -78,7 +87,8 @@ pub fn parse(source: &Source) -> Parsed {
     if let Some(finding) = unreadable(source) {
         return Parsed::refused(vec![finding]);
     }
-    let (root, findings) = build::build(source);
+    let bytes = build::Bytes::new(source.text());
+    let (root, findings) = build::build(source, &bytes);
     if !findings.is_empty() {
         return Parsed::refused(findings);
     }
@@ -103,10 +113,44 @@ fn unreadable(source: &Source) -> Option<Diagnostic> {
                 .at(source.label(Span::default(), "")),
         );
     }
-    let (at, character) = text.char_indices().find(|(_, c)| c.is_control() && !matches!(c, '\n' | '\r' | '\t'))?;
-    Some(
-        Diagnostic::error("control-character", format!("the plan holds a control character (U+{:04X})", character as u32))
-            .at(source.label(Span::new(at, at + character.len_utf8()), "here"))
-            .hint("remove it; it cannot be seen in an editor and has no meaning in a plan"),
-    )
+    if let Some((at, character)) = text.char_indices().find(|(_, c)| is_refused(*c) && *c != '\r') {
+        return Some(control_character(source, Span::new(at, at + character.len_utf8()), character));
+    }
+    directive(source)
+}
+
+fn is_refused(character: char) -> bool {
+    character.is_control() && !matches!(character, '\n' | '\t') || is_unseen(character)
+}
+
+fn control_character(source: &Source, place: Span, character: char) -> Diagnostic {
+    Diagnostic::error("control-character", format!("the plan holds a character that cannot be seen (U+{:04X})", character as u32))
+        .at(source.label(place, "here"))
+        .hint("remove it: what a reader sees must be all that the plan says")
+}
+
+/// A line such as `%YAML 1.1` before the plan, which could change what words mean.
+fn directive(source: &Source) -> Option<Diagnostic> {
+    let text = source.text();
+    let mut at = 0;
+    for line in text.split_inclusive('\n') {
+        let words = line.trim_ascii();
+        if line.starts_with('%') {
+            let (rule, message, hint) = trouble::DIRECTIVE;
+            return Some(Diagnostic::error(rule, message).at(source.label(Span::new(at, at + words.len()), "here")).hint(hint));
+        }
+        if !words.is_empty() && !words.starts_with('#') {
+            return None;
+        }
+        at += line.len();
+    }
+    None
+}
+
+/// A name as messages quote it: the start of a very long one.
+fn shortened(name: &str) -> String {
+    match name.char_indices().nth(LONGEST_QUOTED) {
+        Some((end, _)) => format!("{}...", &name[..end]),
+        None => name.to_owned(),
+    }
 }

@@ -21,7 +21,11 @@ fn number(text: &str) -> Option<f64> {
     if matches!(unsigned, ".inf" | ".Inf" | ".INF") || matches!(text, ".nan" | ".NaN" | ".NAN") {
         return Some(f64::INFINITY);
     }
-    let whole = |digits: &str, radix| u64::from_str_radix(digits, radix).ok().map(|value| value as f64);
+    // `from_str_radix` would take a sign.
+    let whole = |digits: &str, radix| {
+        let value = u64::from_str_radix(digits, radix).ok().filter(|_| digits.starts_with(|c: char| c.is_ascii_hexdigit()));
+        value.map(|value| value as f64)
+    };
     if let Some(digits) = text.strip_prefix("0x") {
         return whole(digits, 16);
     }
