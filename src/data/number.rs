@@ -30,13 +30,40 @@ const DIGITS: usize = 19;
 /// assert_eq!(parse(b"inf", b'.'), None);
 /// ```
 pub fn parse(text: &[u8], decimal: u8) -> Option<f64> {
-    let (negative, start) = match text.first()? {
-        b'-' => (true, 1),
-        b'+' => (false, 1),
-        _ => (false, 0),
+    if let Some((value, length)) = plain_prefix(text, decimal)
+        && length == text.len()
+    {
+        return Some(value);
+    }
+    is_number(text, decimal).then(|| by_the_standard_library(text, decimal)).flatten()
+}
+
+/// Whether a text is a number: sign, digits with at most one decimal mark, exponent.
+fn is_number(text: &[u8], decimal: u8) -> bool {
+    let text = match text {
+        [b'+' | b'-', rest @ ..] => rest,
+        text => text,
     };
-    let mut at = start;
+    let digits = |text: &[u8]| text.iter().take_while(|byte| byte.is_ascii_digit()).count();
+    let whole = digits(text);
+    let rest = &text[whole..];
+    let (places, rest) = match rest.first() {
+        Some(mark) if *mark == decimal => {
+            let places = digits(&rest[1..]);
+            (places, &rest[1 + places..])
+        }
+        _ => (0, rest),
+    };
+    whole + places > 0 && (rest.is_empty() || is_exponent(rest))
+}
+
+/// The number that `text` begins with, and its length, where it is a plain decimal that one operation reads exactly. What
+/// follows is for the caller to look at.
+pub(super) fn plain_prefix(text: &[u8], decimal: u8) -> Option<(f64, usize)> {
+    let negative = *text.first()? == b'-';
+    let start = usize::from(negative);
     let mut significand = 0_u64;
+    let mut at = start;
     while let Some(digit) = digit_at(text, at) {
         significand = significand.wrapping_mul(10).wrapping_add(digit);
         at += 1;
@@ -53,18 +80,9 @@ pub fn parse(text: &[u8], decimal: u8) -> Option<f64> {
         places = at - first;
         digits += places;
     }
-    if digits == 0 {
-        return None;
-    }
-    let exact = digits <= DIGITS && significand <= EXACT;
-    if at == text.len() && exact && places < TENS.len() {
-        let size = significand as f64 / TENS[places];
-        return Some(if negative { -size } else { size });
-    }
-    if at < text.len() && !is_exponent(&text[at..]) {
-        return None;
-    }
-    by_the_standard_library(text, decimal)
+    let exact = (1..=DIGITS).contains(&digits) && significand <= EXACT;
+    let size = exact.then(|| significand as f64 / TENS[places])?;
+    Some((if negative { -size } else { size }, at))
 }
 
 fn digit_at(text: &[u8], at: usize) -> Option<u64> {

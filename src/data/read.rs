@@ -7,7 +7,7 @@ use super::problems::{Problems, quoted};
 use super::quick::Quick;
 use super::rows::{Broken, Row, TakeRows, each_row};
 use super::schema::{Needed, Role, Schema, text_of};
-use super::table::{Checked, Gathered, NO_CELL, Sorted, Table};
+use super::table::{Checked, Gathered, Sorted, Table};
 use crate::plan::resolved::ResolvedPlan;
 use crate::text::diagnostic::Diagnostic;
 use std::collections::HashSet;
@@ -172,7 +172,8 @@ impl<'p> Reading<'p> {
     }
 
     fn store(&mut self, row: &Row<'_>, identifier: &[u8], occasion: Option<usize>, cell: Option<usize>) {
-        let Some((subject, new)) = self.gathered.subject(identifier, row.line, self.schema.one_row) else {
+        let line = row.line.min(u32::MAX as usize) as u32;
+        let Some(subject) = self.gathered.subject(identifier, line) else {
             return self.problems.add("too-many-subjects", |problems| {
                 Diagnostic::error("too-many-subjects", "the identifiers of the subjects fill more than four gigabytes")
                     .at(problems.line(row.line, "here"))
@@ -183,8 +184,9 @@ impl<'p> Reading<'p> {
             self.store_cell(row, subject, cell as u32);
         }
         if self.schema.one_row {
-            if !new {
-                self.duplicate(row, identifier, self.gathered.lines[subject] as usize, None);
+            let first = self.gathered.lines[subject];
+            if first != line {
+                self.duplicate(row, identifier, first as usize, None);
                 return;
             }
         } else if let Some(occasion) = occasion {
@@ -194,7 +196,7 @@ impl<'p> Reading<'p> {
                 self.duplicate(row, identifier, first, Some(occasion));
                 return;
             }
-            *seen = row.line.min(u32::MAX as usize) as u32;
+            *seen = line;
         }
         for (outcome, fixed, value) in &self.values {
             if let Some(occasion) = fixed.or(occasion) {
@@ -204,10 +206,7 @@ impl<'p> Reading<'p> {
     }
 
     fn store_cell(&mut self, row: &Row<'_>, subject: usize, cell: u32) {
-        let known = &mut self.gathered.cell[subject];
-        if *known == NO_CELL {
-            *known = cell;
-        } else if *known != cell && self.changed.insert(subject) && !self.schema.one_row {
+        if !self.gathered.set_cell(subject, cell) && self.changed.insert(subject) && !self.schema.one_row {
             let (identifier, first) = (self.gathered.identifier(subject), self.gathered.lines[subject] as usize);
             let arms = self.schema.needed.iter().filter(|needed| matches!(needed.role, Role::Between { .. }));
             let field = arms.clone().next().map_or(0, |needed| needed.field);

@@ -54,13 +54,24 @@ pub(super) struct Gathered {
     /// Line of each row by subject and occasion, zero where there is none; empty where a subject has one row.
     pub seen: Vec<u32>,
     occasions: usize,
+    one_row: bool,
     arms: bool,
+    /// Whether an identifier that comes after the last one in one of these orders must be new.
+    ascending: [bool; ORDERS],
+}
+
+/// Orders in which files list their subjects: by bytes, or the shorter first (as numbers are).
+const ORDERS: usize = 2;
+
+fn is_after(one: &[u8], other: &[u8]) -> [bool; ORDERS] {
+    let by_bytes = one > other;
+    [by_bytes, one.len() > other.len() || (one.len() == other.len() && by_bytes)]
 }
 
 impl Gathered {
     /// For so many outcomes and occasions; `one_row`: a subject has one row.
     pub fn new(outcomes: usize, occasions: usize, one_row: bool, arms: bool) -> Self {
-        Gathered { values: vec![Vec::new(); outcomes], occasions: if one_row && outcomes == 0 { 0 } else { occasions }, arms, ..Gathered::default() }
+        Gathered { values: vec![Vec::new(); outcomes], occasions, one_row, arms, ascending: [true; ORDERS], ..Gathered::default() }
     }
 
     /// How many subjects.
@@ -74,27 +85,70 @@ impl Gathered {
         &self.identifiers[start..self.ends[subject] as usize]
     }
 
-    /// The number of a subject, and whether it is new. `None` where identifiers fill more than four gigabytes.
-    pub fn subject(&mut self, identifier: &[u8], line: usize, one_row: bool) -> Option<(usize, bool)> {
-        let hash = hash_of(identifier);
-        if let Some(subject) = self.index.find(hash, |subject| self.identifier(subject) == identifier) {
-            return Some((subject, false));
+    /// The number of a subject, who is taken up if new. `None` where identifiers fill more than four gigabytes.
+    pub fn subject(&mut self, identifier: &[u8], line: u32) -> Option<usize> {
+        match self.find(identifier, None) {
+            Some(subject) => Some(subject),
+            None => self.add(identifier, line),
         }
+    }
+
+    /// The number of a subject who is known; `guess` is looked at first. Only where subjects come in no order is there an
+    /// index to be searched.
+    pub fn find(&mut self, identifier: &[u8], guess: Option<usize>) -> Option<usize> {
+        let last = self.len().checked_sub(1)?;
+        if let Some(guess) = guess
+            && guess <= last
+            && self.identifier(guess) == identifier
+        {
+            return Some(guess);
+        }
+        if self.index.is_empty() {
+            let after = is_after(identifier, self.identifier(last));
+            if (0..ORDERS).any(|order| self.ascending[order] && after[order]) {
+                return None;
+            }
+            for subject in 0..=last {
+                let key = Key::of(self.identifier(subject));
+                self.index.insert(key, subject as u32);
+            }
+        }
+        let key = Key::of(identifier);
+        self.index.find(key, |subject| self.identifier(subject) == identifier)
+    }
+
+    /// Takes up a subject who is not known yet. `None` where identifiers fill more than four gigabytes.
+    pub fn add(&mut self, identifier: &[u8], line: u32) -> Option<usize> {
         let subject = self.len();
         let end = u32::try_from(self.identifiers.len() + identifier.len()).ok()?;
+        if let Some(last) = subject.checked_sub(1) {
+            let after = is_after(identifier, self.identifier(last));
+            (0..ORDERS).for_each(|order| self.ascending[order] &= after[order]);
+        }
         self.identifiers.extend_from_slice(identifier);
         self.ends.push(end);
-        self.index.insert(hash, subject as u32);
-        self.lines.push(line.min(u32::MAX as usize) as u32);
+        if !self.index.is_empty() {
+            self.index.insert(Key::of(identifier), subject as u32);
+        }
+        self.lines.push(line);
         if self.arms {
             self.cell.push(NO_CELL);
         }
         let occasions = self.occasions;
         self.values.iter_mut().for_each(|values| values.resize(values.len() + occasions, f64::NAN));
-        if !one_row {
+        if !self.one_row {
             self.seen.resize(self.seen.len() + occasions, 0);
         }
-        Some((subject, true))
+        Some(subject)
+    }
+
+    /// Sets the between cell of a subject; whether it agrees with what was known.
+    pub fn set_cell(&mut self, subject: usize, cell: u32) -> bool {
+        let known = &mut self.cell[subject];
+        if *known == NO_CELL {
+            *known = cell;
+        }
+        *known == cell
     }
 
     /// Everything in the order of the identifiers' bytes.
@@ -109,13 +163,12 @@ impl Gathered {
         order.iter().for_each(|subject| subjects.push(self.identifier(*subject as usize)));
         self.identifiers = Vec::new();
         self.ends = Vec::new();
-        let mut walk = Walk::new(order);
-        walk.apply(&mut self.lines, 1);
+        reorder(&mut self.lines, &order, 1);
         if self.arms {
-            walk.apply(&mut self.cell, 1);
+            reorder(&mut self.cell, &order, 1);
         }
         for values in &mut self.values {
-            walk.apply(values, self.occasions);
+            reorder(values, &order, self.occasions);
         }
         Sorted { subjects, lines: self.lines, values: self.values, cell: self.cell }
     }
@@ -163,104 +216,89 @@ pub(super) struct Sorted {
     pub cell: Vec<u32>,
 }
 
-/// A permutation applied in place, by its cycles.
-struct Walk {
-    /// For each place, where its content comes from.
-    from: Vec<u32>,
+/// Puts rows of `width` items into an order. One copy at a time: by now the index is gone, and makes room for it.
+fn reorder<T: Copy>(items: &mut Vec<T>, order: &[u32], width: usize) {
+    let mut ordered = Vec::with_capacity(items.len());
+    for from in order {
+        ordered.extend_from_slice(&items[*from as usize * width..][..width]);
+    }
+    *items = ordered;
 }
 
-impl Walk {
-    fn new(from: Vec<u32>) -> Self {
-        Walk { from }
+/// An identifier in a nutshell: itself where it has eight bytes at most, else a hash.
+#[derive(Clone, Copy, PartialEq, Eq, Default)]
+struct Key {
+    bytes: u64,
+    /// Length, or [`HASHED`].
+    length: u32,
+}
+
+/// Length of a key that is a hash.
+const HASHED: u32 = 9;
+
+impl Key {
+    fn of(identifier: &[u8]) -> Self {
+        if identifier.len() < HASHED as usize {
+            return Key { bytes: key(identifier), length: identifier.len() as u32 };
+        }
+        let words = identifier.chunks(8).map(key);
+        Key { bytes: words.fold(identifier.len() as u64, |hash, word| mix(hash, word)), length: HASHED }
     }
 
-    /// Moves rows of `width` items. The highest bit of an entry marks what was moved, and is cleared again.
-    fn apply<T: Copy>(&mut self, items: &mut [T], width: usize) {
-        const MOVED: u32 = 1 << 31;
-        if width == 0 || items.is_empty() {
-            return;
-        }
-        let mut held: Vec<T> = Vec::with_capacity(width);
-        for start in 0..self.from.len() {
-            if self.from[start] & MOVED != 0 {
-                continue;
-            }
-            held.clear();
-            held.extend_from_slice(&items[start * width..][..width]);
-            let mut at = start;
-            loop {
-                let from = self.from[at] as usize;
-                self.from[at] |= MOVED;
-                if from == start {
-                    items[at * width..][..width].copy_from_slice(&held);
-                    break;
-                }
-                items.copy_within(from * width..(from + 1) * width, at * width);
-                at = from;
-            }
-        }
-        self.from.iter_mut().for_each(|from| *from &= !MOVED);
+    fn place(self, mask: usize) -> usize {
+        mix(self.bytes, u64::from(self.length)) as usize & mask
     }
 }
 
-/// Numbers of subjects by the hash of their identifiers: open addressing, half full at most.
+/// For finding, not for proving: a folded product.
+fn mix(one: u64, other: u64) -> u64 {
+    let product = u128::from(one ^ 0xD6E8_FEB8_6659_FD93) * u128::from(other ^ 0x9E37_79B9_7F4A_7C15);
+    (product >> 64) as u64 ^ product as u64
+}
+
+/// Numbers of subjects by their identifiers: open addressing, half full at most. An entry is a key and the number plus one.
 #[derive(Default)]
 struct Index {
-    /// Upper half: the hash; lower half: number of the subject, plus one.
-    slots: Vec<u64>,
+    slots: Vec<(Key, u32)>,
     count: usize,
 }
 
 impl Index {
-    fn find(&self, hash: u32, is_it: impl Fn(usize) -> bool) -> Option<usize> {
+    fn is_empty(&self) -> bool {
+        self.count == 0
+    }
+
+    fn find(&self, key: Key, is_it: impl Fn(usize) -> bool) -> Option<usize> {
         let mask = self.slots.len().checked_sub(1)?;
-        let mut at = hash as usize & mask;
+        let mut at = key.place(mask);
         loop {
-            let slot = self.slots[at];
-            if slot == 0 {
-                return None;
-            }
-            if (slot >> 32) as u32 == hash && is_it(slot as u32 as usize - 1) {
-                return Some(slot as u32 as usize - 1);
+            let (other, subject) = self.slots[at];
+            let subject = (subject as usize).checked_sub(1)?;
+            if other == key && (key.length < HASHED || is_it(subject)) {
+                return Some(subject);
             }
             at = (at + 1) & mask;
         }
     }
 
-    fn insert(&mut self, hash: u32, subject: u32) {
+    fn insert(&mut self, key: Key, subject: u32) {
         if self.count * 2 >= self.slots.len() {
-            let wider = vec![0; (self.slots.len() * 2).max(64)];
+            let wider = vec![(Key::default(), 0); (self.slots.len() * 2).max(64)];
             let slots = std::mem::replace(&mut self.slots, wider);
-            slots.into_iter().filter(|slot| *slot != 0).for_each(|slot| self.place(slot));
+            slots.into_iter().filter(|(_, subject)| *subject != 0).for_each(|slot| self.place(slot));
         }
-        self.place(u64::from(hash) << 32 | u64::from(subject + 1));
+        self.place((key, subject + 1));
         self.count += 1;
     }
 
-    fn place(&mut self, slot: u64) {
+    fn place(&mut self, slot: (Key, u32)) {
         let mask = self.slots.len() - 1;
-        let mut at = (slot >> 32) as usize & mask;
-        while self.slots[at] != 0 {
+        let mut at = slot.0.place(mask);
+        while self.slots[at].1 != 0 {
             at = (at + 1) & mask;
         }
         self.slots[at] = slot;
     }
-}
-
-/// A hash for finding, not for proving: eight bytes at a time, mixed by a folded product.
-fn hash_of(bytes: &[u8]) -> u32 {
-    const ODD: u64 = 0x9E37_79B9_7F4A_7C15;
-    let mix = |hash: u64, word: u64| {
-        let product = u128::from(hash ^ word) * u128::from(ODD | 1);
-        (product >> 64) as u64 ^ product as u64
-    };
-    let mut words = bytes.chunks_exact(8);
-    let mut hash = bytes.len() as u64 ^ 0xD6E8_FEB8_6659_FD93;
-    for word in &mut words {
-        hash = mix(hash, key(word));
-    }
-    let hash = mix(mix(hash, key(words.remainder())), ODD.rotate_left(23));
-    (hash >> 32) as u32 ^ hash as u32
 }
 
 #[cfg(test)]
@@ -273,8 +311,10 @@ mod tests {
         fn sorts_by_bytes(identifiers in proptest::collection::vec("(AB-00)?[a-c]{0,3}(12345678)?[a-b\u{e9}]{1,3}", 1..60)) {
             let mut gathered = Gathered::new(1, 2, false, true);
             for (line, identifier) in identifiers.iter().enumerate() {
-                let (subject, new) = gathered.subject(identifier.as_bytes(), line + 2, false).unwrap();
-                prop_assert_eq!(new, !identifiers[..line].contains(identifier));
+                let known = gathered.len();
+                let subject = gathered.subject(identifier.as_bytes(), line as u32 + 2).unwrap();
+                let new = !identifiers[..line].contains(identifier);
+                prop_assert_eq!(subject == known, new);
                 if new {
                     gathered.cell[subject] = line as u32;
                     gathered.values[0][subject * 2] = line as f64;
