@@ -18,6 +18,22 @@ impl Subjects {
         subjects
     }
 
+    /// From identifiers that are already sorted and distinct, one after the other, and where each ends.
+    pub(super) fn from_parts(bytes: Vec<u8>, ends: Vec<u32>) -> Self {
+        Subjects { bytes, ends }
+    }
+
+    /// Room for so many identifiers of so many bytes together.
+    pub(super) fn with_capacity(count: usize, bytes: usize) -> Self {
+        Subjects { bytes: Vec::with_capacity(bytes), ends: Vec::with_capacity(count) }
+    }
+
+    /// Adds the next identifier, greater than all before.
+    pub(super) fn push(&mut self, identifier: &[u8]) {
+        self.bytes.extend_from_slice(identifier);
+        self.ends.push(self.bytes.len() as u32);
+    }
+
     /// How many.
     pub fn len(&self) -> usize {
         self.ends.len()
@@ -30,8 +46,13 @@ impl Subjects {
 
     /// The identifier of a subject.
     pub fn get(&self, subject: usize) -> &str {
+        std::str::from_utf8(self.bytes(subject)).unwrap_or("")
+    }
+
+    /// The bytes of the identifier of a subject, by which subjects are sorted.
+    pub fn bytes(&self, subject: usize) -> &[u8] {
         let start = if subject == 0 { 0 } else { self.ends[subject - 1] as usize };
-        std::str::from_utf8(&self.bytes[start..self.ends[subject] as usize]).unwrap_or("")
+        &self.bytes[start..self.ends[subject] as usize]
     }
 }
 
