@@ -3,7 +3,7 @@
 use super::output::{Failure, Terminal};
 use super::{DONE, main};
 use crate::record::error::StudyError;
-use crate::world::{Kind, Links, folder_of};
+use crate::world::{Kind, Links};
 use std::path::{Path, PathBuf};
 
 const PLAN: &str = include_str!("../../plans/wrist-study.yaml");
@@ -59,7 +59,7 @@ fn inputs_folder(folder: &Path) -> Result<PathBuf, Failure> {
         Some(name) => {
             let mut name = name.to_os_string();
             name.push("-inputs");
-            Ok(folder_of(folder).join(name))
+            Ok(folder.with_file_name(name))
         }
         None => Err(Failure::other(format!("`{}` has no name to make a folder of", folder.display()), "name a folder that does not exist yet")),
     }
