@@ -48,7 +48,10 @@ fn sentence(chained: &ChainedDecision) -> String {
             format!("The family **{step}** was judged together ({}, alpha {alpha}): {}.", markdown(control), markdown(&decision.verdict))
         }
         "conclusion" => format!("{}{}", upper_first(&markdown(&decision.verdict)), if decision.verdict.ends_with('.') { "" } else { "." }),
-        _ => format!("**{step}**: {} ({seen}).", markdown(&decision.verdict)),
+        _ => match decision.rule.get("threshold").and_then(Value::as_f64) {
+            Some(threshold) => format!("**{step}**: {} (threshold {threshold}): {seen}.", markdown(&decision.verdict)),
+            None => format!("**{step}**: {} ({seen}).", markdown(&decision.verdict)),
+        },
     }
 }
 
@@ -85,7 +88,11 @@ fn one(key: &str, object: &serde_json::Map<String, Value>) -> String {
     let name = markdown(object.get("ref").and_then(Value::as_str).unwrap_or(key));
     let verdict = object.get("verdict").and_then(Value::as_str).map(|verdict| format!(" is {}", markdown(verdict))).unwrap_or_default();
     let numbers = numbers_of(object);
-    if numbers.is_empty() { format!("{name}{verdict}") } else { format!("{name}{verdict} ({})", numbers.join(", ")) }
+    match (numbers.is_empty(), verdict.is_empty()) {
+        (true, _) => format!("{name}{verdict}"),
+        (false, false) => format!("{name}{verdict} ({})", numbers.join(", ")),
+        (false, true) => format!("{name} has {}", numbers.join(", ")),
+    }
 }
 
 fn numbers_of(object: &serde_json::Map<String, Value>) -> Vec<String> {

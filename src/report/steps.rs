@@ -144,39 +144,46 @@ fn size(entry: &Entry, wanted: &str) -> String {
 }
 
 fn omnibus(step: &StepResult) -> Table {
-    let mut table = Table::new(&["Effect", "#SS", "#df", "#error SS", "#error df", "#F", "#epsilon", "#p uncorrected", "#df used", "#p", "#level", "Verdict", "#partial eta squared"]);
+    let mut table =
+        Table::new(&["Effect", "Verdict", "#SS", "#df", "#error SS", "#error df", "#F", "#epsilon", "#p uncorrected", "#p", "#partial eta squared"]);
     for entry in &step.results {
-        let epsilon = match entry.details.get("epsilon") {
-            Some(Detail::Named(named)) => named.get("greenhouse-geisser").map(|value| numbers::significant(value.get(), 4)).unwrap_or_default(),
-            _ => String::new(),
+        let epsilons = match entry.details.get("epsilon") {
+            Some(Detail::Named(named)) => Some(named),
+            _ => None,
         };
         let df1 = entry.statistic.as_ref().and_then(|statistic| statistic.df.first().copied());
         table.row([
             name(entry),
+            markdown(entry.verdict.as_deref().unwrap_or("")),
             tables::number(entry.detail("sum_of_squares")),
             df1.map(|df| tables::df(&[df])).unwrap_or_default(),
             tables::number(entry.detail("error_sum_of_squares")),
             entry.detail("df_error").map(|df| tables::df(&[df])).unwrap_or_default(),
             entry.statistic.as_ref().map_or_else(|| state(entry).to_owned(), |statistic| numbers::significant(statistic.value.get(), 4)),
-            epsilon,
+            epsilons.map(|named| tables::number(named.get("greenhouse-geisser").copied())).unwrap_or_default(),
             tables::p(entry.detail("p_uncorrected"), false),
-            corrected_df(entry),
             tables::p(entry.p, entry.p_bound),
-            entry.level.map(|level| level.get().to_string()).unwrap_or_default(),
-            markdown(entry.verdict.as_deref().unwrap_or("")),
             size(entry, "partial eta squared"),
         ]);
-        if let Some(Detail::Named(named)) = entry.details.get("epsilon") {
+        if let Some(named) = epsilons {
             let all: Vec<String> = named.iter().map(|(name, value)| format!("{name} {}", numbers::significant(value.get(), 4))).collect();
             let correction = match entry.details.get("correction") {
                 Some(Detail::Text(correction)) => correction.as_str(),
                 _ => "none",
             };
-            table.notes.push(format!("{}: epsilons {}; correction used: {correction}.", name(entry), all.join(", ")));
+            table.notes.push(format!("{}: epsilons {}; correction used: {correction}; p on {} df.", name(entry), all.join(", "), corrected_df(entry)));
         }
     }
+    test_level(step, &mut table);
     reasons(step, &mut table);
     table
+}
+
+/// The level that the tests of a step were judged at, which they share.
+fn test_level(step: &StepResult, table: &mut Table) {
+    if let Some(level) = step.results.iter().find_map(|entry| entry.level) {
+        table.notes.push(format!("Judged at the level {}.", level.get()));
+    }
 }
 
 fn corrected_df(entry: &Entry) -> String {
@@ -188,23 +195,25 @@ fn corrected_df(entry: &Entry) -> String {
 
 fn tests(step: &StepResult, unit: &str) -> Table {
     let estimate = if unit.is_empty() { "#estimate".to_owned() } else { format!("#estimate ({})", markdown(unit)) };
-    let mut table = Table::new(&["Hypothesis", &estimate, "#interval", "#F", "#df", "#p", "#adjusted p", "#level", "Verdict", "#partial eta squared"]);
+    let mut table = Table::new(&["Hypothesis", "Verdict", &estimate, "#interval", "#F", "#df", "#p", "#adjusted p", "#partial eta squared"]);
     for entry in &step.results {
         let error = entry.standard_error_of();
-        let level = entry.detail("interval_level").map(percent).map(|level| format!(" ({level} %)")).unwrap_or_default();
         let interval = tables::interval(entry.interval_of(), error);
         table.row([
             name(entry),
+            markdown(entry.verdict.as_deref().unwrap_or("")),
             tables::estimate(entry.estimate_of(), error),
-            if interval.is_empty() { interval } else { format!("{interval}{level}") },
+            interval,
             entry.statistic.as_ref().map_or_else(|| state(entry).to_owned(), |statistic| numbers::significant(statistic.value.get(), 4)),
             corrected_df(entry),
             tables::p(entry.p, entry.p_bound),
             tables::p(entry.p_adjusted, false),
-            entry.level.map(|level| level.get().to_string()).unwrap_or_default(),
-            markdown(entry.verdict.as_deref().unwrap_or("")),
             size(entry, "partial eta squared"),
         ]);
+    }
+    test_level(step, &mut table);
+    if let Some(level) = step.results.iter().find_map(|entry| entry.detail("interval_level")) {
+        table.notes.push(format!("Intervals have a level of {} %.", percent(level)));
     }
     if step.results.iter().any(|entry| entry.p_adjusted.is_some() && entry.interval_of().is_some()) {
         table.notes.push("Intervals are for each comparison by itself; the verdicts follow the adjusted p, so that the two need not agree.".to_owned());
