@@ -24,6 +24,8 @@ pub(super) struct Quick<'p> {
     subject_column: Vec<u8>,
     /// Subject of the row before.
     last: Option<usize>,
+    /// Whether subjects come in the order in which they came before, as in a file sorted by occasion.
+    in_turn: bool,
     batch: Vec<Taken>,
     /// Outcome and value of each cell of the batch, rows one after the other.
     values: Vec<(usize, Option<usize>, f64)>,
@@ -103,6 +105,7 @@ impl<'p> Quick<'p> {
             arms: schema.arms,
             subject_column: schema.needed[0].column.as_bytes().to_vec(),
             last: None,
+            in_turn: true,
             batch: Vec::with_capacity(BATCH),
             values: Vec::new(),
             checks: Vec::new(),
@@ -212,7 +215,9 @@ impl<'p> Quick<'p> {
             let row = &self.batch[number];
             let identifier = &bytes[row.identifier.0..row.identifier.1];
             let before = if number > 0 { Some(self.batch[number - 1].subject) } else { self.last };
-            let found = if row.as_before { before } else { gathered.find(identifier, before.map(|before| before + 1)) };
+            let next = before.map(|before| before + 1);
+            let found = if row.as_before { before } else { gathered.find(identifier, next.filter(|_| self.in_turn)) };
+            self.in_turn = row.as_before || found.is_none() || found == next;
             let Some(subject) = found.or_else(|| self.new_subject(identifier, line + number, gathered)) else { return number };
             self.batch[number].subject = subject;
         }
