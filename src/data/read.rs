@@ -212,9 +212,9 @@ impl<'p> Reading<'p> {
             let field = arms.clone().next().map_or(0, |needed| needed.field);
             let written: Vec<&str> = arms.map(|needed| text_of(row.cell(needed.field))).collect();
             self.problems.add("arm-changes", |problems| {
-                Diagnostic::error("arm-changes", format!("the arm of subject {} changes between rows", quoted(text_of(identifier))))
+                Diagnostic::error("arm-changes", format!("subject {} is in another arm than on line {first}", quoted(text_of(identifier))))
                     .at(problems.cell(row, field, format!("{} here", quoted(&written.join("; ")))))
-                    .at(problems.line(first, "another arm from this line on"))
+                    .at(problems.line(first, "another arm here"))
                     .hint("a subject stays in the arm it was allocated to, whatever it received later")
             });
         }
@@ -231,9 +231,9 @@ impl<'p> Reading<'p> {
                 None => String::new(),
             };
             let subject = self.schema.needed[0].field;
-            Diagnostic::error("duplicate-row", format!("subject {} has a second row{at}", quoted(text_of(identifier))))
+            Diagnostic::error("duplicate-row", format!("subject {} has a second row{at}; the first is on line {first}", quoted(text_of(identifier))))
                 .at(problems.cell(row, subject, "again here"))
-                .at(problems.line(first, "first on this line"))
+                .at(problems.line(first, "first here"))
                 .hint("the plan cannot say which row counts; keep one")
         });
     }
