@@ -76,7 +76,10 @@ fn headers() {
         &[
             ("semicolons", of(LONG, "person;visit;score\na;start;12,5\n")),
             ("tabs", of(LONG, "person\tvisit\tscore\na\tstart\t12\n")),
-            ("commas where semicolons are announced", of(&format!("{LONG}, separator: ';', decimal: ','"), "person,visit,score\na,start,12\n")),
+            (
+                "commas where semicolons are announced",
+                of(&format!("{LONG}, separator: ';', decimal: ','"), "person,visit,score\na,start,12\n"),
+            ),
             ("a column missing, and another misspelt", of(LONG_WITH_ARMS, "person,Visit,score\na,start,1\n")),
             ("space around a name", of(LONG, "person, visit,score\na,start,1\n")),
             ("twice the same name", of(LONG, "person,visit,score,score,note,note\na,start,1,1,x,x\n")),

@@ -61,15 +61,20 @@ fn read_all(bytes: &[u8]) {
 
 fn cell() -> impl Strategy<Value = String> {
     let known = [
-        "a", "b", "b2", "start", "week 6", "month 6", "Week 6", "usual", "extra", "1", "-0", "2.5", "99.75", "7", "NA", "", " ", "1e2", "1,5", "\"x\"",
-        "101", "inf", "north", "44", "person", "\u{e9}", "c ",
+        "a", "b", "b2", "start", "week 6", "month 6", "Week 6", "usual", "extra", "1", "-0", "2.5", "99.75", "7", "NA", "", " ", "1e2",
+        "1,5", "\"x\"", "101", "inf", "north", "44", "person", "\u{e9}", "c ",
     ];
     prop_oneof![9 => prop::sample::select(known.to_vec()).prop_map(str::to_owned), 1 => "[ -~]{0,4}"]
 }
 
 fn table() -> impl Strategy<Value = String> {
     let header = prop::sample::select(vec![
-        "person,visit,score", "person,visit,score,arm", "arm,score,visit,person", "person,visit,score,arm,site,age", "arm,s1,s2,s3,person", "person,arm",
+        "person,visit,score",
+        "person,visit,score,arm",
+        "arm,score,visit,person",
+        "person,visit,score,arm,site,age",
+        "arm,s1,s2,s3,person",
+        "person,arm",
         "person;visit;score",
     ]);
     let row = (0..3_usize, 0..3_usize, prop::collection::vec(cell(), 0..7));
@@ -98,7 +103,9 @@ fn table() -> impl Strategy<Value = String> {
 
 /// The same file with a quotation mark in every row, so that no row is read the quick way.
 fn with_a_quoted_column(text: &str) -> String {
-    let row = |(at, line): (usize, &str)| if line.is_empty() { String::new() } else { format!("{},{line}\n", if at == 0 { "more" } else { "\"\"" }) };
+    let row = |(at, line): (usize, &str)| {
+        if line.is_empty() { String::new() } else { format!("{},{line}\n", if at == 0 { "more" } else { "\"\"" }) }
+    };
     text.split('\n').enumerate().map(row).collect()
 }
 

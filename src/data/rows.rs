@@ -154,7 +154,8 @@ impl Cutter {
                 return ControlFlow::Continue(());
             }
             self.bounds.clear();
-            self.bounds.extend((0..record.len()).filter_map(|field| record.range(field)).map(|range| (range.start as u32, range.end as u32)));
+            self.bounds
+                .extend((0..record.len()).filter_map(|field| record.range(field)).map(|range| (range.start as u32, range.end as u32)));
             taker.row(&Row { line: self.line, raw, text: record.as_slice(), bounds: &self.bounds })?;
             self.line += count_lines(&bytes[start..end]);
             // The crate leaves the second half of CRLF to the next row; its line is counted by now.
