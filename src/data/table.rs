@@ -242,7 +242,7 @@ impl Key {
             return Key { bytes: key(identifier), length: identifier.len() as u32 };
         }
         let words = identifier.chunks(8).map(key);
-        Key { bytes: words.fold(identifier.len() as u64, |hash, word| mix(hash, word)), length: HASHED }
+        Key { bytes: words.fold(identifier.len() as u64, mix), length: HASHED }
     }
 
     fn place(self, mask: usize) -> usize {
