@@ -42,7 +42,8 @@ fn long_data_are_read_by_subject_and_occasion() {
     assert_eq!(table.cell, Some(vec![0, 1, 1, 0]));
     assert_eq!(table.rows, 11);
     assert_eq!(table.lines, [2, 5, 8, 10]);
-    let expected = [Some(1.0), Some(2.5), None, Some(4.0), None, Some(60.0), Some(0.0), None, Some(9.0), Some(10.0), Some(11.0), Some(12.0)];
+    let expected =
+        [Some(1.0), Some(2.5), None, Some(4.0), None, Some(60.0), Some(0.0), None, Some(9.0), Some(10.0), Some(11.0), Some(12.0)];
     assert_eq!(values(&table), [expected]);
     assert!(table.values[0][6].is_sign_positive());
 }
@@ -58,7 +59,11 @@ fn other_forms() -> Vec<(&'static str, String)> {
     let numbers = TIDY.replace(",2.5,", ", 25e-1 ,").replace(",60,", ",+0060.00,").replace(",-0,", ",0.0,").replace(",10,", ",1E1,");
     let missing = TIDY.replace("a1,month 6,,usual\n", "").replace(",NA,", ",,");
     let blank = TIDY.replace('\n', "\n\n");
-    let extra = lines.iter().enumerate().map(|(at, line)| if at == 0 { format!("note,{line}\n") } else { format!("\"x,\n{at}\",{line}\n") }).collect();
+    let extra = lines
+        .iter()
+        .enumerate()
+        .map(|(at, line)| if at == 0 { format!("note,{line}\n") } else { format!("\"x,\n{at}\",{line}\n") })
+        .collect();
     lines[1..].reverse();
     let reversed = lines.join("\n");
     vec![
@@ -240,8 +245,10 @@ fn a_blind_look_at_an_allocation_shows_no_arm_and_no_order() {
     assert!(looks.iter().all(|look| *look == looks[0]), "{looks:#?}");
     assert!(looks[0].contains("`z9`") && looks[0].contains("`c3`"), "{}", looks[0]);
     for faulty in ["a1,ARM\na1,ARM\n", "a1\n", "a1,ARM,\n", ",ARM\n"] {
-        let looks: Vec<String> =
-            ["usual", "extra", ""].iter().map(|arm| blind_look(&plan, TIDY, Some(&format!("person,arm\n{}", faulty.replace("ARM", arm))))).collect();
+        let looks: Vec<String> = ["usual", "extra", ""]
+            .iter()
+            .map(|arm| blind_look(&plan, TIDY, Some(&format!("person,arm\n{}", faulty.replace("ARM", arm)))))
+            .collect();
         assert!(looks.iter().all(|look| *look == looks[0]), "{looks:#?}");
     }
 }

@@ -44,8 +44,10 @@ pub fn bind(plan: &ResolvedPlan, table: Table, allocation: Option<Allocation>) -
     let design = &plan.design;
     let mut sizes = vec![0_usize; design.cells()];
     cell.iter().filter(|cell| **cell != NO_CELL).for_each(|cell| sizes[*cell as usize] += 1);
-    let small: Vec<Diagnostic> =
-        (0..sizes.len()).filter(|cell| sizes[*cell] < LEAST).map(|cell| too_small(&design.cell_levels(cell), sizes[cell], &table.name)).collect();
+    let small: Vec<Diagnostic> = (0..sizes.len())
+        .filter(|cell| sizes[*cell] < LEAST)
+        .map(|cell| too_small(&design.cell_levels(cell), sizes[cell], &table.name))
+        .collect();
     if !small.is_empty() {
         return Err(small);
     }
@@ -65,7 +67,8 @@ pub fn bind(plan: &ResolvedPlan, table: Table, allocation: Option<Allocation>) -
 }
 
 fn no_allocation() -> Diagnostic {
-    Diagnostic::error("allocation-needed", "the plan keeps the arms in a separate file, and none was given").hint("give the allocation file too")
+    Diagnostic::error("allocation-needed", "the plan keeps the arms in a separate file, and none was given")
+        .hint("give the allocation file too")
 }
 
 fn arms_not_read() -> Diagnostic {
@@ -73,8 +76,11 @@ fn arms_not_read() -> Diagnostic {
 }
 
 fn not_announced(name: &str) -> Diagnostic {
-    Diagnostic::error("allocation-not-announced", format!("an allocation file was given ({name}), but the plan has the arms elsewhere or has none"))
-        .hint("run without it; where the arms stand is part of the sealed plan")
+    Diagnostic::error(
+        "allocation-not-announced",
+        format!("an allocation file was given ({name}), but the plan has the arms elsewhere or has none"),
+    )
+    .hint("run without it; where the arms stand is part of the sealed plan")
 }
 
 fn too_small(levels: &[&str], size: usize, file: &str) -> Diagnostic {
@@ -115,31 +121,46 @@ pub(super) fn disagreements(data: &str, subjects: &Subjects, lines: &[u32], list
         other += usize::from(order.is_ge());
     }
     let alike = |name: &str, others: &Subjects, numbers: &[usize]| {
-        numbers.iter().take(COMPARED).map(|number| others.get(*number)).find(|other| same_but_for_case_or_space(name, other)).map(str::to_owned)
+        numbers
+            .iter()
+            .take(COMPARED)
+            .map(|number| others.get(*number))
+            .find(|other| same_but_for_case_or_space(name, other))
+            .map(str::to_owned)
     };
     let mut found = Vec::new();
     for subject in only_data.iter().take(NAMED) {
         let name = subjects.get(*subject);
         let hint = match alike(name, list.subjects, &only_list) {
-            Some(other) => format!("the allocation lists {}, which differs by case or space; identifiers must agree letter by letter", quoted(&other)),
+            Some(other) => {
+                format!("the allocation lists {}, which differs by case or space; identifiers must agree letter by letter", quoted(&other))
+            }
             None => "every subject of the data needs an arm; mend the identifier, or take the rows to the study's records".to_owned(),
         };
         found.push(
-            Diagnostic::error("subject-not-allocated", format!("subject {} stands in the data, but not in the allocation ({})", quoted(name), list.name))
-                .at(line_of(data, lines[*subject] as usize, "first on this line"))
-                .hint(hint),
+            Diagnostic::error(
+                "subject-not-allocated",
+                format!("subject {} stands in the data, but not in the allocation ({})", quoted(name), list.name),
+            )
+            .at(line_of(data, lines[*subject] as usize, "first on this line"))
+            .hint(hint),
         );
     }
     found.extend((only_data.len() > NAMED).then(|| and_more("subject-not-allocated", only_data.len() - NAMED, data)));
     for subject in only_list.iter().take(NAMED) {
         let name = list.subjects.get(*subject);
         let hint = match alike(name, subjects, &only_data) {
-            Some(other) => format!("the data have {}, which differs by case or space; identifiers must agree letter by letter", quoted(&other)),
-            None => "a subject who was allocated and never measured still needs a row, with its values missing, so that it is counted".to_owned(),
+            Some(other) => {
+                format!("the data have {}, which differs by case or space; identifiers must agree letter by letter", quoted(&other))
+            }
+            None => "a subject who was allocated and never measured still needs a row, with its values missing, so that it is counted"
+                .to_owned(),
         };
-        let finding =
-            Diagnostic::error("subject-without-data", format!("subject {} is in the allocation ({}), but has no row in the data ({data})", quoted(name), list.name))
-                .hint(hint);
+        let finding = Diagnostic::error(
+            "subject-without-data",
+            format!("subject {} is in the allocation ({}), but has no row in the data ({data})", quoted(name), list.name),
+        )
+        .hint(hint);
         found.push(match list.lines {
             Some(lines) => finding.at(line_of(list.name, lines[*subject] as usize, "allocated here")),
             None => finding,

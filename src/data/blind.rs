@@ -77,7 +77,13 @@ pub fn check(plan: &ResolvedPlan, table: &Table, allocation: Option<&Identifiers
 fn of_outcome(plan: &ResolvedPlan, name: &str, values: &[f64]) -> BlindOutcome {
     let design = &plan.design;
     let mut occasions: Vec<BlindOccasion> = (0..design.occasions())
-        .map(|occasion| BlindOccasion { occasion: design.occasion_levels(occasion).join("; "), values: 0, missing: 0, least: None, greatest: None })
+        .map(|occasion| BlindOccasion {
+            occasion: design.occasion_levels(occasion).join("; "),
+            values: 0,
+            missing: 0,
+            least: None,
+            greatest: None,
+        })
         .collect();
     let (mut complete, mut empty) = (0, 0);
     for row in values.chunks_exact(occasions.len()) {

@@ -39,7 +39,11 @@ impl<'r> Cell<'_, '_, 'r> {
         if trimmed.is_empty() || self.schema.is_missing(trimmed) {
             self.finding(problems, "missing-identifier", "no identifier", || {
                 (
-                    format!("this row does not say whose it is: its `{}` is {}", self.column, if trimmed.is_empty() { "empty".to_owned() } else { quoted(trimmed) }),
+                    format!(
+                        "this row does not say whose it is: its `{}` is {}",
+                        self.column,
+                        if trimmed.is_empty() { "empty".to_owned() } else { quoted(trimmed) }
+                    ),
                     "every row needs the identifier of its subject".to_owned(),
                 )
             });
@@ -65,7 +69,10 @@ impl<'r> Cell<'_, '_, 'r> {
             let levels = || listed(factor.levels.iter().map(String::as_str));
             if text.trim().is_empty() {
                 self.finding(problems, "missing-level", "empty", || {
-                    (format!("this row does not say which {} it is of: its `{}` is empty", factor.name, self.column), format!("it may be: {}", levels()))
+                    (
+                        format!("this row does not say which {} it is of: its `{}` is empty", factor.name, self.column),
+                        format!("it may be: {}", levels()),
+                    )
                 });
             } else if let Some(level) = factor.levels.iter().find(|level| same_but_for_case_or_space(level, text)) {
                 self.finding(problems, "unknown-level", &format!("the plan writes {}", quoted(level)), || {
@@ -139,7 +146,9 @@ impl<'r> Cell<'_, '_, 'r> {
                 self.finding(problems, "text-not-allowed", "not allowed", || {
                     let meant = nearest(text, allowed.iter().map(String::as_str));
                     let hint = match meant {
-                        Some(meant) if same_but_for_case_or_space(meant, text) => format!("the plan writes {}; the two differ by case or space", quoted(meant)),
+                        Some(meant) if same_but_for_case_or_space(meant, text) => {
+                            format!("the plan writes {}; the two differ by case or space", quoted(meant))
+                        }
                         Some(meant) => format!("did you mean {}?", quoted(meant)),
                         None => format!("it may be: {}", listed(allowed.iter().take(20).map(String::as_str))),
                     };
@@ -190,7 +199,10 @@ impl<'r> Cell<'_, '_, 'r> {
         if text.is_empty() {
             let hint = match self.schema.missing.as_slice() {
                 [] => "the plan announces no missing values; add `missing values: [\"\"]` to its `data`, or fill in the cell".to_owned(),
-                texts => format!("the plan's missing values are {}, and an empty cell is not among them; add `\"\"`, or fill in the cell", listed(texts.iter().copied())),
+                texts => format!(
+                    "the plan's missing values are {}, and an empty cell is not among them; add `\"\"`, or fill in the cell",
+                    listed(texts.iter().copied())
+                ),
             };
             return self.finding(problems, "empty-cell", "empty", || (format!("`{}` is empty here", self.column), hint));
         }
@@ -200,11 +212,16 @@ impl<'r> Cell<'_, '_, 'r> {
             NotANumber::NotFinite => self.finding(problems, "not-finite", "not a finite number", || {
                 (
                     format!("{what} stands where a number is due in `{}`", self.column),
-                    "nothing can be computed from it; if it means that the value is missing, list it under the plan's `missing values`".to_owned(),
+                    "nothing can be computed from it; if it means that the value is missing, list it under the plan's `missing values`"
+                        .to_owned(),
                 )
             }),
             NotANumber::OtherDecimalMark => self.finding(problems, "decimal-mark", &format!("a decimal {other}?"), || {
-                let announce = if other == "comma" { "write `decimal: \",\"` under the plan's `data`" } else { "leave `decimal:` out of the plan's `data`" };
+                let announce = if other == "comma" {
+                    "write `decimal: \",\"` under the plan's `data`"
+                } else {
+                    "leave `decimal:` out of the plan's `data`"
+                };
                 (
                     format!("{what} has a decimal {other}, but the plan announces a decimal {mark}"),
                     format!("{announce}, or save the file with decimal {mark}s; if the {other} sets thousands apart, remove it"),
@@ -214,10 +231,16 @@ impl<'r> Cell<'_, '_, 'r> {
                 (format!("{what} has its thousands set apart"), "write the digits without anything between them, as in 12345.6".to_owned())
             }),
             NotANumber::MinusSign => self.finding(problems, "not-a-number", "a typographic minus", || {
-                (format!("{what} begins with a typographic minus sign"), "write the plain hyphen of the keyboard before the digits".to_owned())
+                (
+                    format!("{what} begins with a typographic minus sign"),
+                    "write the plain hyphen of the keyboard before the digits".to_owned(),
+                )
             }),
             NotANumber::WithUnit => self.finding(problems, "not-a-number", "a number and more", || {
-                (format!("{what} is a number followed by something else, in `{}`", self.column), "write the number alone; the unit belongs in the plan".to_owned())
+                (
+                    format!("{what} is a number followed by something else, in `{}`", self.column),
+                    "write the number alone; the unit belongs in the plan".to_owned(),
+                )
             }),
             NotANumber::Text => self.finding(problems, "not-a-number", "text", || {
                 (

@@ -7,9 +7,8 @@ pub(crate) const LARGEST: f64 = 1e150;
 pub(crate) const SMALLEST: f64 = 1e-150;
 
 /// Powers of ten that a double holds exactly.
-const TENS: [f64; 23] = [
-    1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15, 1e16, 1e17, 1e18, 1e19, 1e20, 1e21, 1e22,
-];
+const TENS: [f64; 23] =
+    [1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15, 1e16, 1e17, 1e18, 1e19, 1e20, 1e21, 1e22];
 
 /// Whole numbers up to here are doubles.
 const EXACT: u64 = 1 << 53;
@@ -62,21 +61,12 @@ fn is_number(text: &[u8], decimal: u8) -> bool {
 pub(super) fn plain_prefix(text: &[u8], decimal: u8) -> Option<(f64, usize)> {
     let negative = *text.first()? == b'-';
     let start = usize::from(negative);
-    let mut significand = 0_u64;
-    let mut at = start;
-    while let Some(digit) = digit_at(text, at) {
-        significand = significand.wrapping_mul(10).wrapping_add(digit);
-        at += 1;
-    }
+    let (mut significand, mut at) = digits_from(text, start, 0);
     let mut digits = at - start;
     let mut places = 0;
     if text.get(at) == Some(&decimal) {
-        at += 1;
-        let first = at;
-        while let Some(digit) = digit_at(text, at) {
-            significand = significand.wrapping_mul(10).wrapping_add(digit);
-            at += 1;
-        }
+        let first = at + 1;
+        (significand, at) = digits_from(text, first, significand);
         places = at - first;
         digits += places;
     }
@@ -85,8 +75,42 @@ pub(super) fn plain_prefix(text: &[u8], decimal: u8) -> Option<(f64, usize)> {
     Some((if negative { -size } else { size }, at))
 }
 
-fn digit_at(text: &[u8], at: usize) -> Option<u64> {
-    text.get(at).map(|byte| u64::from(byte.wrapping_sub(b'0'))).filter(|digit| *digit < 10)
+/// Appends the digits from `at` on to a number, modulo 2^64; the number, and where the digits end.
+fn digits_from(text: &[u8], mut at: usize, mut number: u64) -> (u64, usize) {
+    while let Some(word) = text.get(at..at + 8).and_then(|word| word.try_into().ok()).map(u64::from_le_bytes) {
+        let (value, count) = leading_digits(word);
+        number = number.wrapping_mul(WHOLE_TENS[count]).wrapping_add(value);
+        at += count;
+        if count < 8 {
+            return (number, at);
+        }
+    }
+    while let Some(digit) = text.get(at).map(|byte| u64::from(byte.wrapping_sub(b'0'))).filter(|digit| *digit < 10) {
+        number = number.wrapping_mul(10).wrapping_add(digit);
+        at += 1;
+    }
+    (number, at)
+}
+
+/// Powers of ten as whole numbers.
+const WHOLE_TENS: [u64; 9] = [1, 10, 100, 1000, 10_000, 100_000, 1_000_000, 10_000_000, 100_000_000];
+
+/// The number that eight bytes of text begin with, the first byte lowest, and how many of them are digits; all at once,
+/// pairs of digits first, then fours, then eight.
+fn leading_digits(word: u64) -> (u64, usize) {
+    let digits = word ^ 0x3030_3030_3030_3030;
+    // The highest bit of every byte that is no digit. Where a carry runs on it is only into bytes after such a byte.
+    let others = (digits.wrapping_add(0x7676_7676_7676_7676) | digits) & 0x8080_8080_8080_8080;
+    let count = others.trailing_zeros() as usize / 8;
+    if count == 0 {
+        return (0, 0);
+    }
+    let aligned = digits << (64 - 8 * count);
+    let pairs = aligned.wrapping_mul(10).wrapping_add(aligned >> 8);
+    const PAIR: u64 = 0x0000_00FF_0000_00FF;
+    let first = (pairs & PAIR).wrapping_mul(0x000F_4240_0000_0064);
+    let second = ((pairs >> 16) & PAIR).wrapping_mul(0x0000_2710_0000_0001);
+    (first.wrapping_add(second) >> 32, count)
 }
 
 /// `e` or `E`, perhaps a sign, digits, and nothing else.

@@ -24,6 +24,8 @@ pub(super) struct Quick<'p> {
     subject_column: Vec<u8>,
     /// Subject of the row before.
     last: Option<usize>,
+    /// Whether subjects come in the order in which they came before, as in a file sorted by occasion.
+    in_turn: bool,
     batch: Vec<Taken>,
     /// Outcome and value of each cell of the batch, rows one after the other.
     values: Vec<(usize, Option<usize>, f64)>,
@@ -63,6 +65,8 @@ enum Field<'p> {
 /// The levels of a factor, and the number of that which is looked for first.
 struct Levels<'p> {
     texts: Vec<&'p [u8]>,
+    /// [`word_of`] each.
+    words: Vec<u64>,
     foreseen: usize,
 }
 
@@ -74,7 +78,8 @@ impl<'p> Quick<'p> {
         let levels = |factor: &'p Factor| {
             let texts: Vec<&[u8]> = factor.levels.iter().map(|level| level.as_bytes()).collect();
             let plain = !texts.iter().any(|text| text.iter().any(special));
-            plain.then_some(Levels { texts, foreseen: 0 })
+            let words = texts.iter().map(|text| word_of(text)).collect();
+            plain.then_some(Levels { texts, words, foreseen: 0 })
         };
         for needed in &schema.needed {
             let field = match needed.role {
@@ -103,6 +108,7 @@ impl<'p> Quick<'p> {
             arms: schema.arms,
             subject_column: schema.needed[0].column.as_bytes().to_vec(),
             last: None,
+            in_turn: true,
             batch: Vec::with_capacity(BATCH),
             values: Vec::new(),
             checks: Vec::new(),
@@ -149,11 +155,17 @@ impl<'p> Quick<'p> {
             let end = match field {
                 Field::Skipped => ends.of_cell(at)?,
                 Field::Subject => {
-                    let before = match self.batch.last() {
-                        Some(row) => &bytes[row.identifier.0..row.identifier.1],
-                        None => self.last.map_or(&[][..], |last| gathered.identifier(last)),
+                    let (before, word) = match self.batch.last() {
+                        Some(row) => {
+                            let before = &bytes[row.identifier.0..row.identifier.1];
+                            (before, word_at(bytes, row.identifier.0).map_or(0, |word| to_the_top(word, before.len())))
+                        }
+                        None => {
+                            let before = self.last.map_or(&[][..], |last| gathered.identifier(last));
+                            (before, word_of(before))
+                        }
                     };
-                    as_before = !before.is_empty() && bytes[at..].starts_with(before) && ends.is_end(at + before.len());
+                    as_before = !before.is_empty() && ends.is_cell(at, before, word);
                     let end = if as_before { at + before.len() } else { ends.of_cell(at)? };
                     identifier = (at, end);
                     end
@@ -203,7 +215,16 @@ impl<'p> Quick<'p> {
             };
         }
         let (values, checks) = (self.values.len(), self.checks.len());
-        (at - start <= LONGEST_LINE).then_some(Taken { end: at, identifier, as_before, subject: 0, occasion, cell: cell as u32, values, checks })
+        (at - start <= LONGEST_LINE).then_some(Taken {
+            end: at,
+            identifier,
+            as_before,
+            subject: 0,
+            occasion,
+            cell: cell as u32,
+            values,
+            checks,
+        })
     }
 
     /// Finds or takes up the subjects of the batch; how many rows have one.
@@ -212,7 +233,9 @@ impl<'p> Quick<'p> {
             let row = &self.batch[number];
             let identifier = &bytes[row.identifier.0..row.identifier.1];
             let before = if number > 0 { Some(self.batch[number - 1].subject) } else { self.last };
-            let found = if row.as_before { before } else { gathered.find(identifier, before.map(|before| before + 1)) };
+            let next = before.map(|before| before + 1);
+            let found = if row.as_before { before } else { gathered.find(identifier, next.filter(|_| self.in_turn)) };
+            self.in_turn = row.as_before || found.is_none() || found == next;
             let Some(subject) = found.or_else(|| self.new_subject(identifier, line + number, gathered)) else { return number };
             self.batch[number].subject = subject;
         }
@@ -222,7 +245,8 @@ impl<'p> Quick<'p> {
     fn new_subject(&self, identifier: &[u8], line: usize, gathered: &mut Gathered) -> Option<usize> {
         let line = u32::try_from(line).ok()?;
         let text = text_of(identifier);
-        let sound = !text.is_empty() && text.trim().len() == text.len() && !self.missing.contains(&text) && identifier != self.subject_column;
+        let sound =
+            !text.is_empty() && text.trim().len() == text.len() && !self.missing.contains(&text) && identifier != self.subject_column;
         sound.then(|| gathered.add(identifier, line)).flatten()
     }
 
@@ -253,10 +277,7 @@ impl<'p> Quick<'p> {
 impl Levels<'_> {
     fn find(&self, ends: &Ends<'_>, at: usize) -> Option<usize> {
         let count = self.texts.len();
-        (self.foreseen..count).chain(0..self.foreseen).find(|level| {
-            let text = self.texts[*level];
-            ends.bytes[at..].starts_with(text) && ends.is_end(at + text.len())
-        })
+        (self.foreseen..count).chain(0..self.foreseen).find(|level| ends.is_cell(at, self.texts[*level], self.words[*level]))
     }
 }
 
@@ -266,6 +287,16 @@ struct Ends<'b> {
 }
 
 impl Ends<'_> {
+    /// Whether the cell that starts at `at` reads `text`, whose [`word_of`] is `word`, and ends there.
+    fn is_cell(&self, at: usize, text: &[u8], word: u64) -> bool {
+        // Eight bytes are compared at once where there are so many.
+        let same = match word_at(self.bytes, at) {
+            Some(here) if (1..=8).contains(&text.len()) => to_the_top(here, text.len()) == word,
+            _ => self.bytes[at..].starts_with(text),
+        };
+        same && self.is_end(at + text.len())
+    }
+
     fn is_end(&self, at: usize) -> bool {
         self.bytes.get(at).is_some_and(|byte| *byte == self.separator || *byte == b'\n' || *byte == b'\r')
     }
@@ -275,6 +306,23 @@ impl Ends<'_> {
         let length = self.bytes[at..].iter().position(|byte| *byte == self.separator || matches!(byte, b'\n' | b'\r' | b'"'))?;
         (self.bytes[at + length] != b'"').then_some(at + length)
     }
+}
+
+fn word_at(bytes: &[u8], at: usize) -> Option<u64> {
+    bytes.get(at..at + 8).and_then(|word| word.try_into().ok()).map(u64::from_le_bytes)
+}
+
+/// A text of one to eight bytes as a number, its last byte highest; zero for others.
+fn word_of(text: &[u8]) -> u64 {
+    if text.is_empty() || text.len() > 8 {
+        return 0;
+    }
+    text.iter().rev().fold(0, |word, byte| word << 8 | u64::from(*byte)) << (64 - 8 * text.len())
+}
+
+/// The first `length` bytes of a word, moved to its top; zero for lengths that no word has.
+fn to_the_top(word: u64, length: usize) -> u64 {
+    if (1..=8).contains(&length) { word << (64 - 8 * length) } else { 0 }
 }
 
 /// A number, `Some(None)` where it is missing.

@@ -119,7 +119,8 @@ impl<'p> Reading<'p> {
     }
 
     fn is_header_again(&self, row: &Row<'_>) -> bool {
-        let unseen = |field: usize| self.schema.needed.iter().any(|needed| needed.field == field && matches!(needed.role, Role::Unseen { .. }));
+        let unseen =
+            |field: usize| self.schema.needed.iter().any(|needed| needed.field == field && matches!(needed.role, Role::Unseen { .. }));
         row.len() == self.header.len()
             && (0..row.len()).all(|field| {
                 let cell = row.cell(field);
@@ -180,7 +181,9 @@ impl<'p> Reading<'p> {
                     .hint("is this column really the identifier of a subject?")
             });
         };
-        if self.schema.arms && let Some(cell) = cell {
+        if self.schema.arms
+            && let Some(cell) = cell
+        {
             self.store_cell(row, subject, cell as u32);
         }
         if self.schema.one_row {
@@ -212,9 +215,9 @@ impl<'p> Reading<'p> {
             let field = arms.clone().next().map_or(0, |needed| needed.field);
             let written: Vec<&str> = arms.map(|needed| text_of(row.cell(needed.field))).collect();
             self.problems.add("arm-changes", |problems| {
-                Diagnostic::error("arm-changes", format!("the arm of subject {} changes between rows", quoted(text_of(identifier))))
+                Diagnostic::error("arm-changes", format!("subject {} is in another arm than on line {first}", quoted(text_of(identifier))))
                     .at(problems.cell(row, field, format!("{} here", quoted(&written.join("; ")))))
-                    .at(problems.line(first, "another arm from this line on"))
+                    .at(problems.line(first, "another arm here"))
                     .hint("a subject stays in the arm it was allocated to, whatever it received later")
             });
         }
@@ -231,10 +234,13 @@ impl<'p> Reading<'p> {
                 None => String::new(),
             };
             let subject = self.schema.needed[0].field;
-            Diagnostic::error("duplicate-row", format!("subject {} has a second row{at}", quoted(text_of(identifier))))
-                .at(problems.cell(row, subject, "again here"))
-                .at(problems.line(first, "first on this line"))
-                .hint("the plan cannot say which row counts; keep one")
+            Diagnostic::error(
+                "duplicate-row",
+                format!("subject {} has a second row{at}; the first is on line {first}", quoted(text_of(identifier))),
+            )
+            .at(problems.cell(row, subject, "again here"))
+            .at(problems.line(first, "first here"))
+            .hint("the plan cannot say which row counts; keep one")
         });
     }
 
@@ -253,14 +259,16 @@ impl<'p> Reading<'p> {
             let header = !self.header.is_empty();
             let rule = if header { "no-rows" } else { "empty-file" };
             self.problems.add(rule, |problems| {
-                let message = if header { format!("the {what} file has a header and no row of data") } else { format!("the {what} file is empty") };
+                let message =
+                    if header { format!("the {what} file has a header and no row of data") } else { format!("the {what} file is empty") };
                 Diagnostic::error(rule, message).at(problems.line(1, "")).hint("is it the right file, and was it saved whole?")
             });
         }
         if !self.problems.is_empty() {
             return Err(self.problems.finish());
         }
-        let unseen = self.schema.needed.iter().filter(|needed| matches!(needed.role, Role::Unseen { .. })).map(|needed| needed.column).collect();
+        let unseen =
+            self.schema.needed.iter().filter(|needed| matches!(needed.role, Role::Unseen { .. })).map(|needed| needed.column).collect();
         Ok(Contents { sorted: self.gathered.sorted(), rows: self.rows, checked: self.checked, unseen })
     }
 

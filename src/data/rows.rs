@@ -80,7 +80,7 @@ pub(super) fn each_row(reader: impl Read + Send, separator: u8, taker: &mut impl
 }
 
 fn line_start(bytes: &[u8], at: usize) -> usize {
-    bytes[..at].iter().rposition(|byte| *byte == b'\n').map_or(0, |before| before + 1)
+    bytes[..at].iter().rposition(|byte| matches!(byte, b'\n' | b'\r')).map_or(0, |before| before + 1)
 }
 
 /// Line ends in `bytes`: LF, CRLF, or CR alone.
@@ -112,6 +112,9 @@ impl Cutter {
             at += taken;
             self.line += rows;
             let rest = &bytes[at..];
+            if rest.is_empty() {
+                break;
+            }
             let end = rest.iter().position(|byte| *byte == b'\n').unwrap_or(rest.len());
             let raw = rest[..end].strip_suffix(b"\r").unwrap_or(&rest[..end]);
             if raw.iter().any(|byte| matches!(byte, b'"' | b'\r')) || (end == rest.len() && raw.len() < end) {
@@ -151,7 +154,8 @@ impl Cutter {
                 return ControlFlow::Continue(());
             }
             self.bounds.clear();
-            self.bounds.extend((0..record.len()).filter_map(|field| record.range(field)).map(|range| (range.start as u32, range.end as u32)));
+            self.bounds
+                .extend((0..record.len()).filter_map(|field| record.range(field)).map(|range| (range.start as u32, range.end as u32)));
             taker.row(&Row { line: self.line, raw, text: record.as_slice(), bounds: &self.bounds })?;
             self.line += count_lines(&bytes[start..end]);
             // The crate leaves the second half of CRLF to the next row; its line is counted by now.

@@ -129,7 +129,11 @@ impl<'p> Schema<'p> {
 
     fn needs_arms(&mut self, plan: &'p ResolvedPlan) {
         for (at, (column, factor)) in plan.data.arms.iter().zip(&plan.design.between).enumerate() {
-            let role = if self.arms { Role::Between { factor, stride: stride(&plan.design.between, at) } } else { Role::Unseen { factor: Some(factor) } };
+            let role = if self.arms {
+                Role::Between { factor, stride: stride(&plan.design.between, at) }
+            } else {
+                Role::Unseen { factor: Some(factor) }
+            };
             self.needs(&column.column, role);
         }
     }
@@ -181,7 +185,8 @@ impl<'p> Schema<'p> {
 
     /// Whether what should be the header names a level of a factor. Such a line is not shown: it may say who had which arm.
     fn is_data(&self, header: &Row<'_>) -> bool {
-        let cells: Vec<&str> = text_of(header.raw).split(|c: char| SEPARATORS.iter().any(|other| *other as char == c) || c == '"').collect();
+        let cells: Vec<&str> =
+            text_of(header.raw).split(|c: char| SEPARATORS.iter().any(|other| *other as char == c) || c == '"').collect();
         self.needed.iter().any(|needed| match needed.role {
             Role::Within { factor, .. } | Role::Between { factor, .. } | Role::Unseen { factor: Some(factor) } => {
                 let is_level = |cell: &&str| factor.levels.iter().any(|level| level == cell || same_but_for_case_or_space(level, cell));
@@ -215,9 +220,12 @@ impl<'p> Schema<'p> {
         if other == b';' && self.decimal == b'.' {
             hint.push_str("; files separated so often have decimal commas too, which need `decimal: \",\"`");
         }
-        Diagnostic::error("wrong-separator", format!("the {} file seems to be separated by {written}, but the plan announces {announced}", self.what))
-            .at(label)
-            .hint(hint)
+        Diagnostic::error(
+            "wrong-separator",
+            format!("the {} file seems to be separated by {written}, but the plan announces {announced}", self.what),
+        )
+        .at(label)
+        .hint(hint)
     }
 
     fn missing_column(&self, column: &str, header: &Row<'_>, names: &[&str], problems: &Problems) -> Diagnostic {

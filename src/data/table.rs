@@ -226,7 +226,7 @@ fn reorder<T: Copy>(items: &mut Vec<T>, order: &[u32], width: usize) {
 }
 
 /// An identifier in a nutshell: itself where it has eight bytes at most, else a hash.
-#[derive(Clone, Copy, PartialEq, Eq, Default)]
+#[derive(Clone, Copy)]
 struct Key {
     bytes: u64,
     /// Length, or [`HASHED`].
@@ -242,7 +242,7 @@ impl Key {
             return Key { bytes: key(identifier), length: identifier.len() as u32 };
         }
         let words = identifier.chunks(8).map(key);
-        Key { bytes: words.fold(identifier.len() as u64, |hash, word| mix(hash, word)), length: HASHED }
+        Key { bytes: words.fold(identifier.len() as u64, mix), length: HASHED }
     }
 
     fn place(self, mask: usize) -> usize {
@@ -256,11 +256,19 @@ fn mix(one: u64, other: u64) -> u64 {
     (product >> 64) as u64 ^ product as u64
 }
 
-/// Numbers of subjects by their identifiers: open addressing, half full at most. An entry is a key and the number plus one.
+/// Numbers of subjects by their identifiers: open addressing, half full at most.
 #[derive(Default)]
 struct Index {
-    slots: Vec<(Key, u32)>,
+    slots: Vec<Slot>,
     count: usize,
+}
+
+/// An entry of the index: a [`Key`] and the subject's number plus one, in sixteen bytes.
+#[derive(Clone, Copy, Default)]
+struct Slot {
+    bytes: u64,
+    length: u32,
+    subject: u32,
 }
 
 impl Index {
@@ -272,9 +280,9 @@ impl Index {
         let mask = self.slots.len().checked_sub(1)?;
         let mut at = key.place(mask);
         loop {
-            let (other, subject) = self.slots[at];
-            let subject = (subject as usize).checked_sub(1)?;
-            if other == key && (key.length < HASHED || is_it(subject)) {
+            let slot = self.slots[at];
+            let subject = (slot.subject as usize).checked_sub(1)?;
+            if slot.bytes == key.bytes && slot.length == key.length && (key.length < HASHED || is_it(subject)) {
                 return Some(subject);
             }
             at = (at + 1) & mask;
@@ -283,18 +291,18 @@ impl Index {
 
     fn insert(&mut self, key: Key, subject: u32) {
         if self.count * 2 >= self.slots.len() {
-            let wider = vec![(Key::default(), 0); (self.slots.len() * 2).max(64)];
+            let wider = vec![Slot::default(); (self.slots.len() * 2).max(64)];
             let slots = std::mem::replace(&mut self.slots, wider);
-            slots.into_iter().filter(|(_, subject)| *subject != 0).for_each(|slot| self.place(slot));
+            slots.into_iter().filter(|slot| slot.subject != 0).for_each(|slot| self.place(slot));
         }
-        self.place((key, subject + 1));
+        self.place(Slot { bytes: key.bytes, length: key.length, subject: subject + 1 });
         self.count += 1;
     }
 
-    fn place(&mut self, slot: (Key, u32)) {
+    fn place(&mut self, slot: Slot) {
         let mask = self.slots.len() - 1;
-        let mut at = slot.0.place(mask);
-        while self.slots[at].1 != 0 {
+        let mut at = Key { bytes: slot.bytes, length: slot.length }.place(mask);
+        while self.slots[at].subject != 0 {
             at = (at + 1) & mask;
         }
         self.slots[at] = slot;

@@ -21,7 +21,12 @@ pub const WIDE: &str = "layout: wide, subject: person, values: {score: {start: s
 /// # Panics
 /// Where the plan has an error.
 pub fn plan(data: &str) -> ResolvedPlan {
-    plan_of(data, "{between: {arm: [usual, extra]}, within: {visit: [start, week 6, month 6]}}", "arm by visit", "{score: {range: [0, 100]}}")
+    plan_of(
+        data,
+        "{between: {arm: [usual, extra]}, within: {visit: [start, week 6, month 6]}}",
+        "arm by visit",
+        "{score: {range: [0, 100]}}",
+    )
 }
 
 /// A plan of any design.
