@@ -82,6 +82,10 @@ impl StudyState {
     /// [`StudyError::Refused`] if `root` is no study folder, [`StudyError::Machine`] if it cannot be read. What is wrong inside is no error: it stands in
     /// [`StudyState::defects`].
     pub fn read(world: &dyn World, root: &Path) -> Result<Self, StudyError> {
+        let kind = world.kind(root, crate::world::Links::Follow);
+        if kind.map_err(StudyError::machine("look at", root))? != crate::world::Kind::Folder {
+            return Err(not_a_study(root));
+        }
         let mut reader = Reader::new(world, root);
         let Some(names) = reader.folder("")? else {
             return Err(not_a_study(root));

@@ -89,6 +89,10 @@ impl<'w> Study<'w> {
     /// # Errors
     /// [`StudyError::Held`], [`StudyError::Broken`] with the first defect, [`StudyError::Refused`] if it is no study folder, [`StudyError::Machine`].
     pub fn open(world: &'w dyn World, root: &Path) -> Result<Self, StudyError> {
+        let kind = world.kind(root, Links::Follow);
+        if kind.map_err(StudyError::machine("look at", root))? != Kind::Folder {
+            return Err(not_a_study(root));
+        }
         // Looking first keeps a mistyped path free of a lock file.
         let ledger = root.join(LEDGER);
         let kind = world.kind(&ledger, Links::Report);
