@@ -216,40 +216,39 @@ fn an_offset_of_a_million_millions_moves_no_test() {
 fn an_occasion_at_which_nobody_differs() {
     let study = mapped(|_, [a, b, _]| [a, b, 10.0]);
     // A constant column makes the covariance matrices singular; Box's M takes their logarithms.
-    study.refused("covariances", "");
+    study.refused("covariances", "singular");
     for reference in ["levene / c", "median / c", "simple own / arm at c"] {
-        study.refused(reference, "");
+        study.refused(reference, "do not vary");
     }
     // The difference to a constant still varies: the pieces stand, as does the omnibus test.
     for reference in ["omnibus", "own / a vs c", "own / b vs c", "simple pooled / arm at c", "levene / a"] {
         assert_eq!(study.entry(reference)["state"], "done", "{}", study.entry(reference));
     }
     // An independent t test of b - 10 by hand: means of b are 15 and 9.4, sums of squares 34 and 41.2.
-    let estimate = (9.4 - 10.0) - (15.0 - 10.0) - ((15.6 - 16.0) - (13.8 - 14.0)) * 0.0 - 0.0;
-    assert_close("b vs c", study.number("own / b vs c", "estimate"), -estimate, CLASS_A);
+    assert_close("b vs c", study.number("own / b vs c", "estimate"), (10.0 - 9.4) - (10.0 - 15.0), CLASS_A);
     let t = 5.6 / ((34.0 + 41.2) / 8.0 * (2.0 / 5.0_f64)).sqrt();
     assert_close("F of b vs c", study.number("own / b vs c", "value"), t * t, CLASS_A);
     // Correlation with a constant is undefined; a ratio to the baseline's SD is not.
-    study.refused("removed / b vs c at usual", "");
+    study.refused("removed / b vs c at usual", "correlation");
     assert_eq!(study.entry("base / b vs c at usual")["state"], "done");
 }
 
 #[test]
 fn one_occasion_a_linear_copy_of_another() {
     let study = mapped(|_, [a, b, _]| [a, b, 2.0 * a + 3.0]);
-    study.refused("covariances", "");
+    study.refused("covariances", "singular");
     // c - a = a + 3 varies, so the tests stand: the piece a vs c is the t test of a itself.
     let a = study.number("simple own / arm at a", "value");
     assert_close("a vs c", study.number("own / a vs c", "value"), a, CLASS_A);
     assert_eq!(study.entry("omnibus")["state"], "done");
     // An exact copy with another origin: the difference does not vary.
     let copy = mapped(|arm, [a, b, _]| [a, b, if arm == "usual" { a + 3.0 } else { a + 5.0 }]);
-    copy.refused("own / a vs c", "");
-    copy.refused("change / a vs c at usual", "");
+    copy.refused("own / a vs c", "error variance is zero");
+    copy.refused("change / a vs c at usual", "standard deviation is 0");
     assert_eq!(copy.entry("own / a vs b")["state"], "done");
     assert_eq!(copy.entry("pooled / a vs c")["state"], "done");
     // W is the determinant of a singular matrix: zero, whose logarithm is none.
-    copy.refused("sphericity", "");
+    copy.refused("sphericity", "error matrix is singular");
 }
 
 #[test]
@@ -274,15 +273,19 @@ fn an_interaction_of_exactly_zero() {
 #[test]
 fn no_error_variance_at_all() {
     let study = mapped(|arm, _| if arm == "usual" { [1.0, 2.0, 4.0] } else { [1.0, 3.0, 9.0] });
-    for reference in ["covariances", "sphericity", "omnibus", "plain", "own / a vs b", "pooled / b vs c", "simple own / arm at b", "simple pooled / arm at b", "root / a vs b at usual", "change / a vs c at extra"] {
-        study.refused(reference, "");
+    study.refused("covariances", "singular");
+    for reference in ["sphericity", "omnibus", "plain", "own / a vs b", "pooled / b vs c", "simple own / arm at b", "simple pooled / arm at b"] {
+        study.refused(reference, "error variance is zero");
+    }
+    for reference in ["root / a vs b at usual", "change / a vs b at usual", "change / a vs c at extra", "base / b vs c at extra", "average / a vs b at usual"] {
+        study.refused(reference, "that standard deviation is 0");
     }
     assert!(study.said.contains("refused"), "{}", study.said);
     // The means are what they are.
     assert_eq!(study.step("means")["results"][5]["estimate"], 9.0);
     // Each subject alike but for a level of its own: no error within, but one between.
     let level = mapped(|arm, [a, _, _]| [a, a + 1.0, a + if arm == "usual" { 2.0 } else { 7.0 }]);
-    level.refused("omnibus", "");
+    level.refused("omnibus", "error variance is zero");
     assert_eq!(level.entry("arms")["state"], "done");
 }
 
@@ -293,8 +296,8 @@ fn rounding_of_decimals_is_not_taken_for_variance() {
         let decimal = |tenths: f64| (a * 10.0 + tenths) / 10.0;
         [decimal(1.0), decimal(2.0), decimal(9.0)]
     });
-    level.refused("omnibus", "");
-    level.refused("own / a vs b", "");
+    level.refused("omnibus", "error variance is zero");
+    level.refused("own / a vs b", "error variance is zero");
 }
 
 #[test]
@@ -316,7 +319,7 @@ fn more_occasions_than_an_arm_has_subjects() {
         &data,
     );
     // Four subjects give three degrees of freedom to a matrix of six rows.
-    study.refused("covariances", "");
+    study.refused("covariances", "singular");
     for reference in ["omnibus", "own / t1 vs t2", "own / t5 vs t6", "pooled / t3 vs t4", "arms"] {
         assert_eq!(study.entry(reference)["state"], "done", "{}", study.entry(reference));
     }
@@ -378,9 +381,10 @@ fn an_arm_emptied_by_missing_values() {
         );
         assert_eq!(study.results["data"]["used"], 5 + kept);
         assert_eq!(study.results["data"]["left_out"].as_array().unwrap().len(), 5 - kept);
-        study.refused("covariances", "");
-        study.refused("courses / visit at usual", "");
-        study.refused("change / a vs b at usual", "");
+        study.refused("covariances", "singular");
+        let reason = if kept == 0 { "no subject of usual was analysed" } else { "two subjects or more" };
+        study.refused("courses / visit at usual", reason);
+        study.refused("change / a vs b at usual", reason);
         for reference in ["omnibus", "own / a vs b", "simple own / arm at c"] {
             if kept == 0 {
                 study.refused(reference, "usual");
@@ -407,5 +411,5 @@ fn nobody_has_a_whole_row() {
         &with_gaps(&gaps),
     );
     assert_eq!(study.results["data"]["used"], 0);
-    study.refused("omnibus", "");
+    study.refused("omnibus", "no subject to analyse");
 }
