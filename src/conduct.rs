@@ -96,7 +96,13 @@ impl Witness for Recorder {
 ///
 /// # Errors
 /// A plan that contradicts itself, a number without canonical form, or a template that does not render.
-pub fn conduct(plan: &SealedPlan, trial: &Trial, hashes: &DataHashes, unblinded: &Digest, status: &Status) -> Result<Conducted, ConductError> {
+pub fn conduct(
+    plan: &SealedPlan,
+    trial: &Trial,
+    hashes: &DataHashes,
+    unblinded: &Digest,
+    status: &Status,
+) -> Result<Conducted, ConductError> {
     let root = Chain::decisions(&plan.meaning_hash(), &hashes.data, hashes.allocation.as_ref(), unblinded);
     let mut recorder = Recorder { log: DecisionLog::new(root), taken: Vec::new(), failed: None };
     let execution = Bound::new(plan, trial).map_err(ConductError::Plan)?.run(&mut recorder);
@@ -122,10 +128,11 @@ pub fn conduct(plan: &SealedPlan, trial: &Trial, hashes: &DataHashes, unblinded:
 pub fn status_of(seal: &Seal, events: &[Event], unblinded: &Digest, record: u32, first: Option<&[u8]>) -> Status {
     let place = events.iter().position(|event| event.hash == *unblinded).unwrap_or(0);
     let event = events.get(place);
-    let correction = events[..place].iter().rev().take_while(|event| !matches!(event.what, Happening::Run { .. })).find_map(|event| match &event.what {
-        Happening::Corrected { why, .. } => Some(why.clone()),
-        _ => None,
-    });
+    let correction =
+        events[..place].iter().rev().take_while(|event| !matches!(event.what, Happening::Run { .. })).find_map(|event| match &event.what {
+            Happening::Corrected { why, .. } => Some(why.clone()),
+            _ => None,
+        });
     let first_conclusion = first.and_then(|bytes| from_file_bytes::<Results>(bytes).ok()).map(|results| results.conclusion.text);
     Status {
         sealed_at: seal.sealed_at.to_string(),

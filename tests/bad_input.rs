@@ -1,11 +1,11 @@
 //! Input that is wrong: a clear message, exit status 1, and no record; and machines that fail: exit status 3.
 
-#[path = "common/mod.rs"]
-#[allow(dead_code)]
-mod world;
 #[path = "common/commands.rs"]
 #[allow(dead_code)]
 mod commands;
+#[path = "common/mod.rs"]
+#[allow(dead_code)]
+mod world;
 
 use commands::{ALLOCATION, PLAN, VISITS, Wrist, command, command_in, files};
 use world::{Fault, FaultWorld};
@@ -89,7 +89,13 @@ fn allocations() {
     let mut lone = false;
     let one_arm: Vec<String> = ALLOCATION
         .lines()
-        .map(|line| if line.ends_with("coached") && std::mem::replace(&mut lone, true) { line.replace("coached", "booklet") } else { line.to_owned() })
+        .map(|line| {
+            if line.ends_with("coached") && std::mem::replace(&mut lone, true) {
+                line.replace("coached", "booklet")
+            } else {
+                line.to_owned()
+            }
+        })
         .collect();
     refused(VISITS.as_bytes(), format!("{}\n", one_arm.join("\n")).as_bytes(), &["coached", "two"]);
 }

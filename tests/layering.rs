@@ -99,7 +99,8 @@ fn by_module() -> BTreeMap<PathBuf, (String, Paths)> {
 
 #[test]
 fn every_module_imports_only_what_the_corridor_lets_it() {
-    let allowed: BTreeMap<&str, BTreeSet<&str>> = MAY_IMPORT.iter().map(|(module, others)| (*module, others.iter().copied().collect())).collect();
+    let allowed: BTreeMap<&str, BTreeSet<&str>> =
+        MAY_IMPORT.iter().map(|(module, others)| (*module, others.iter().copied().collect())).collect();
     let mut broken = Vec::new();
     for (file, (module, paths)) in by_module() {
         if module == "lib" || module == "main" {

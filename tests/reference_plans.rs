@@ -74,7 +74,13 @@ const PAIRS: [(&str, &str); 6] = [("8", "10"), ("8", "12"), ("8", "14"), ("10", 
 
 #[test]
 fn omnibus_tests_and_screens_of_potthoff_and_roy() {
-    let corrections = [("none", "p"), ("greenhouse-geisser", "p_GG"), ("huynh-feldt", "p_HF_Lecoutre"), ("huynh-feldt 1976", "p_HF1976"), ("lower bound", "p_LB")];
+    let corrections = [
+        ("none", "p"),
+        ("greenhouse-geisser", "p_GG"),
+        ("huynh-feldt", "p_HF_Lecoutre"),
+        ("huynh-feldt 1976", "p_HF1976"),
+        ("lower bound", "p_LB"),
+    ];
     let mut steps = String::from(
         "  - {id: covariances, screen: equal covariance matrices, threshold: 0.005}\n  - {id: sphericity, screen: sphericity, threshold: 0.05}\n  \
          - {id: levene, screen: equal variances, method: levene, threshold: 0.05}\n  - {id: median, screen: equal variances, method: brown-forsythe, threshold: 0.05}\n  \
@@ -82,7 +88,9 @@ fn omnibus_tests_and_screens_of_potthoff_and_roy() {
     );
     for (correction, _) in corrections {
         for (effect, name) in [("age", "age"), ("sex by age", "both")] {
-            steps.push_str(&format!("  - {{id: {name} {correction}, test: omnibus, effect: {effect}, correction: {correction}, role: supportive}}\n"));
+            steps.push_str(&format!(
+                "  - {{id: {name} {correction}, test: omnibus, effect: {effect}, correction: {correction}, role: supportive}}\n"
+            ));
         }
     }
     steps.push_str("  - {id: explained, estimate: variance explained, of: [sex, age none, both none], kind: [partial eta squared, generalized eta squared]}\n");
@@ -122,7 +130,8 @@ fn omnibus_tests_and_screens_of_potthoff_and_roy() {
         omnibus(&format!("both {correction}"), "group:time", p);
     }
     let Detail::Named(epsilons) = &entry(&results, "both none").details["epsilon"] else { panic!("epsilons are named numbers") };
-    for (name, key) in [("greenhouse-geisser", "GG"), ("huynh-feldt", "HF_Lecoutre"), ("huynh-feldt 1976", "HF1976"), ("lower bound", "LB")] {
+    for (name, key) in [("greenhouse-geisser", "GG"), ("huynh-feldt", "HF_Lecoutre"), ("huynh-feldt 1976", "HF1976"), ("lower bound", "LB")]
+    {
         held.to(&format!("sphericity/eps_{key}"), epsilons[name].get());
     }
     for (reference, name) in [("sex", "group"), ("age none", "time"), ("both none", "group:time")] {
@@ -146,8 +155,12 @@ fn pieces_with_each_error_term_and_each_adjustment() {
         steps.push_str(&format!("  - {{id: {error}, test: partial interactions, effect: sex by age, split: {{age: all pairs}}, error: {error}, role: supportive}}\n"));
     }
     let controls = [
-        ("bonferroni", "bonferroni"), ("holm", "holm"), ("hochberg", "hochberg"), ("hommel", "hommel"),
-        ("benjamini-hochberg", "BH"), ("benjamini-yekutieli", "BY"),
+        ("bonferroni", "bonferroni"),
+        ("holm", "holm"),
+        ("hochberg", "hochberg"),
+        ("hommel", "hommel"),
+        ("benjamini-hochberg", "BH"),
+        ("benjamini-yekutieli", "BY"),
     ];
     for (control, _) in controls {
         steps.push_str(&format!("  - {{id: for {control}, test: partial interactions, effect: sex by age, split: {{age: all pairs}}, error: own, role: supportive}}\n"));
@@ -258,14 +271,20 @@ fn every_effect_of_obrien_and_kaiser() {
     let (between, within) = (["treatment", "gender"], ["phase", "hour"]);
     let mut effects = Vec::new();
     for number in 1..16_u32 {
-        let names: Vec<&str> = between.iter().chain(&within).enumerate().filter(|(place, _)| number >> place & 1 == 1).map(|(_, name)| *name).collect();
+        let names: Vec<&str> =
+            between.iter().chain(&within).enumerate().filter(|(place, _)| number >> place & 1 == 1).map(|(_, name)| *name).collect();
         effects.push(names);
     }
     let mut steps = String::new();
     for effect in &effects {
         for (correction, tag) in [("none", "plain"), ("greenhouse-geisser", "gg"), ("huynh-feldt", "hf")] {
-            let correction = if effect.iter().any(|name| within.contains(name)) { format!(", correction: {correction}") } else { String::new() };
-            steps.push_str(&format!("  - {{id: {tag} {}, test: omnibus, effect: {}{correction}, role: supportive}}\n", effect.join("-"), effect.join(" by ")));
+            let correction =
+                if effect.iter().any(|name| within.contains(name)) { format!(", correction: {correction}") } else { String::new() };
+            steps.push_str(&format!(
+                "  - {{id: {tag} {}, test: omnibus, effect: {}{correction}, role: supportive}}\n",
+                effect.join("-"),
+                effect.join(" by ")
+            ));
         }
     }
     for of in ["phase", "hour", "phase by hour"] {

@@ -1,11 +1,11 @@
 //! Whole studies by commands: the demo, tampering, killed runs, what may not move a digit, and blindness.
 
-#[path = "common/mod.rs"]
-#[allow(dead_code)]
-mod world;
 #[path = "common/commands.rs"]
 #[allow(dead_code)]
 mod commands;
+#[path = "common/mod.rs"]
+#[allow(dead_code)]
+mod world;
 
 use aforesaid::canon::json::file_bytes;
 use commands::{ALLOCATION, PLAN, VISITS, Wrist, command, files};
@@ -18,11 +18,29 @@ fn the_demo_runs_from_plan_to_audit() {
     let study = folder.path().join("wrist-study");
     let ran = command(&["demo", study.to_str().unwrap()]);
     assert_eq!(ran.status, 0, "{}", ran.said());
-    for shown in ["aforesaid check", "aforesaid seal", "--data", "aforesaid run", "aforesaid audit", "every claim that can be checked from this folder holds"] {
+    for shown in [
+        "aforesaid check",
+        "aforesaid seal",
+        "--data",
+        "aforesaid run",
+        "aforesaid audit",
+        "every claim that can be checked from this folder holds",
+    ] {
         assert!(ran.out.contains(shown), "{shown}");
     }
     let names: Vec<String> = files(&study).into_iter().map(|(name, _)| name).collect();
-    for name in ["ledger.jsonl", "plans/001/plan.yaml", "plans/001/resolved.json", "plans/001/seal.json", "records/001/report.html", "records/001/report.md", "records/001/results.json", "records/001/decisions.jsonl", "records/001/manifest.json", "records/001/figures/01-means.svg"] {
+    for name in [
+        "ledger.jsonl",
+        "plans/001/plan.yaml",
+        "plans/001/resolved.json",
+        "plans/001/seal.json",
+        "records/001/report.html",
+        "records/001/report.md",
+        "records/001/results.json",
+        "records/001/decisions.jsonl",
+        "records/001/manifest.json",
+        "records/001/figures/01-means.svg",
+    ] {
         assert!(names.iter().any(|other| other == name), "{name} in {names:?}");
     }
     let html = std::fs::read_to_string(study.join("records/001/report.html")).unwrap();
@@ -244,7 +262,16 @@ fn another_run_on_other_data_says_what_was_corrected() {
     assert_eq!(refused.status, 1);
     assert!(refused.err.contains("--correction"), "{}", refused.err);
     let why = "typed wrong at the visit";
-    let corrected = command(&["run", &wrist.at("study"), "--data", &wrist.at("visits.csv"), "--allocation", &wrist.at("allocation.csv"), "--correction", why]);
+    let corrected = command(&[
+        "run",
+        &wrist.at("study"),
+        "--data",
+        &wrist.at("visits.csv"),
+        "--allocation",
+        &wrist.at("allocation.csv"),
+        "--correction",
+        why,
+    ]);
     assert_eq!(corrected.status, 0, "{}", corrected.said());
     let report = std::fs::read_to_string(wrist.at("study/records/002/report.md")).unwrap();
     assert!(report.contains(why) && report.contains("The first record concluded"), "{report}");

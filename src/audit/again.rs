@@ -25,7 +25,8 @@ pub(super) fn claims(world: &dyn World, root: &Path, state: &StudyState) -> Resu
     let mut plans: BTreeMap<u32, SealedPlan> = BTreeMap::new();
     for (number, folder) in &state.plans {
         let place = format!("plans/{number:03}");
-        let (claim, how) = (format!("the resolved plan {number:03} is what its source means"), "the source is compiled again and compared byte for byte");
+        let (claim, how) =
+            (format!("the resolved plan {number:03} is what its source means"), "the source is compiled again and compared byte for byte");
         let reopened = reopen(&format!("{place}/plan.yaml"), &folder.source);
         claims.push(match reopened {
             Ok(plan) if plan.resolved_bytes() == folder.resolved => {
@@ -71,7 +72,10 @@ fn run_again(
     let mut claims = vec![chain_of_decisions(world, root, state, &ran, plans, &place)];
     let executed = format!("executing plan {plan:03} on the stored data gives the results and decisions of record {record:03}");
     let rendered = format!("rendering them again gives the report of record {record:03}");
-    let (how_executed, how_rendered) = ("plan and data are read again, executed, and results.json and decisions.jsonl compared", "report.md, report.html and every figure are compared byte for byte");
+    let (how_executed, how_rendered) = (
+        "plan and data are read again, executed, and results.json and decisions.jsonl compared",
+        "report.md, report.html and every figure are compared byte for byte",
+    );
     let both = |outcome: Outcome, why: &str| {
         vec![
             Claim::new(&executed, how_executed, &place, outcome, why.to_owned()),
@@ -100,9 +104,17 @@ fn run_again(
     Ok(claims)
 }
 
-fn chain_of_decisions(world: &dyn World, root: &Path, state: &StudyState, ran: &Ran, plans: &BTreeMap<u32, SealedPlan>, place: &str) -> Claim {
+fn chain_of_decisions(
+    world: &dyn World,
+    root: &Path,
+    state: &StudyState,
+    ran: &Ran,
+    plans: &BTreeMap<u32, SealedPlan>,
+    place: &str,
+) -> Claim {
     let claim = format!("the decisions of record {:03} form one chain from plan, data and unblinding", ran.record);
-    let how = "each decision must carry the hash of the one before; the root is made of the meaning hash, the data and the event `unblinded`";
+    let how =
+        "each decision must carry the hash of the one before; the root is made of the meaning hash, the data and the event `unblinded`";
     let place = format!("{place}/decisions.jsonl");
     let Some(plan) = plans.get(&ran.plan) else {
         return Claim::new(&claim, how, &place, Outcome::Failed, format!("plan {:03} is not as it was sealed", ran.plan));
@@ -120,7 +132,13 @@ fn chain_of_decisions(world: &dyn World, root: &Path, state: &StudyState, ran: &
 }
 
 /// Reads plan and data again and executes; the reason where that cannot be.
-fn conduct_again(world: &dyn World, root: &Path, state: &StudyState, ran: &Ran, plan: &SealedPlan) -> Result<Result<Conducted, String>, StudyError> {
+fn conduct_again(
+    world: &dyn World,
+    root: &Path,
+    state: &StudyState,
+    ran: &Ran,
+    plan: &SealedPlan,
+) -> Result<Result<Conducted, String>, StudyError> {
     let open = |hash: &Digest| -> Result<Box<dyn Read + Send>, String> {
         let name = data_file(hash);
         let path = name.split('/').fold(root.to_path_buf(), |path, part| path.join(part));

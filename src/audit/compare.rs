@@ -30,9 +30,11 @@ fn differs(place: &str, stored: &Value, again: &Value, standard_error: f64) -> O
                 }
             })
         }
-        (Value::Array(stored), Value::Array(again)) if stored.len() == again.len() => {
-            stored.iter().zip(again).enumerate().find_map(|(number, (one, other))| differs(&format!("{place}/{number}"), one, other, standard_error))
-        }
+        (Value::Array(stored), Value::Array(again)) if stored.len() == again.len() => stored
+            .iter()
+            .zip(again)
+            .enumerate()
+            .find_map(|(number, (one, other))| differs(&format!("{place}/{number}"), one, other, standard_error)),
         (stored, again) => (stored != again).then(|| format!("{place}: {stored} became {again}")),
     }
 }

@@ -33,7 +33,8 @@ pub(super) fn claims(world: &dyn World, root: &Path, state: &StudyState) -> Resu
     ];
     let broken = in_words(state.verify_data(world, root)?.iter());
     let copied = state.runs().all(|event| matches!(event.what, Happening::Run { copied: true, .. }));
-    let (claim, how) = ("data and allocation are the bytes that were run", "each file in data/ is hashed and compared with its name and the ledger");
+    let (claim, how) =
+        ("data and allocation are the bytes that were run", "each file in data/ is hashed and compared with its name and the ledger");
     claims.push(if broken.is_none() && !copied {
         Claim::new(claim, how, "data", Outcome::NotCheckable, "a run kept no copy of its data (--no-data-copy)".to_owned())
     } else {

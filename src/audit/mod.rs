@@ -98,10 +98,12 @@ pub fn audit(world: &dyn World, root: &Path, expected_head: Option<&Digest>) -> 
             "no final event was cut off",
             "the ledger's head is compared with the one given",
             "ledger.jsonl",
-            (!reaches(&state, expected)).then(|| format!("no event of the ledger has the hash {expected}; its head is {}", state.ledger.head)),
+            (!reaches(&state, expected))
+                .then(|| format!("no event of the ledger has the hash {expected}; its head is {}", state.ledger.head)),
         ),
     });
-    let mut notes: Vec<String> = state.unfinished.iter().map(|left| format!("unfinished, not broken: {left}; the next command that writes clears it")).collect();
+    let mut notes: Vec<String> =
+        state.unfinished.iter().map(|left| format!("unfinished, not broken: {left}; the next command that writes clears it")).collect();
     notes.push(
         "Executing again repeats the same program: it shows that the record follows from plan and data, not that the program is right. A hash proves that nothing changed since \
          someone outside came to hold it, not when it was made; and nobody can exclude runs on a copy."

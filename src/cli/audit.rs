@@ -29,7 +29,11 @@ pub(super) fn audit(terminal: &Terminal<'_>, arguments: &AuditArguments) -> Resu
             for note in &found.notes {
                 text.push_str(&format!("\n{note}\n"));
             }
-            let verdict = if found.outcome == Outcome::Failed { "FAILED: see the claims above" } else { "every claim that can be checked from this folder holds" };
+            let verdict = if found.outcome == Outcome::Failed {
+                "FAILED: see the claims above"
+            } else {
+                "every claim that can be checked from this folder holds"
+            };
             text.push_str(&format!("\nledger head {}\n{}: {verdict}\n", found.head, arguments.study.display()));
             terminal.answer(&text);
         }

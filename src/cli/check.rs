@@ -33,7 +33,8 @@ fn check_plan(terminal: &Terminal<'_>, arguments: &CheckArguments) -> Result<u8,
             answer["plan_sha256"] = json!(compilation.sha256);
             answer["meaning"] = json!(meaning);
             if let Some(listed) = &listed {
-                answer["references"] = json!(listed.iter().map(|(reference, label)| json!({ "ref": reference, "label": label })).collect::<Vec<_>>());
+                answer["references"] =
+                    json!(listed.iter().map(|(reference, label)| json!({ "ref": reference, "label": label })).collect::<Vec<_>>());
             }
             terminal.answer(&format!("{answer}\n"));
         }
@@ -80,7 +81,9 @@ fn check_data(terminal: &Terminal<'_>, arguments: &CheckArguments, data: &Path) 
     let received = reading.finish()?;
     let table = table.map_err(Failure::Findings)?;
     let identifiers: Option<Identifiers> = match &arguments.allocation {
-        Some(path) => Some(read_identifiers(resolved, &path.display().to_string(), files::open(terminal, path)?).map_err(Failure::Findings)?),
+        Some(path) => {
+            Some(read_identifiers(resolved, &path.display().to_string(), files::open(terminal, path)?).map_err(Failure::Findings)?)
+        }
         None => None,
     };
     let report = blind::check(resolved, &table, identifiers.as_ref());

@@ -14,7 +14,10 @@ pub(super) fn demo(terminal: &Terminal<'_>, folder: &Path) -> Result<u8, Failure
     let inputs = inputs_folder(folder)?;
     for place in [folder, &inputs] {
         if !matches!(terminal.world.kind(place, Links::Report), Ok(Kind::Nothing)) {
-            return Err(Failure::other(format!("something stands at `{}`", place.display()), "nothing is overwritten: name another folder, or remove it"));
+            return Err(Failure::other(
+                format!("something stands at `{}`", place.display()),
+                "nothing is overwritten: name another folder, or remove it",
+            ));
         }
     }
     let failed = |source| Failure::Study(StudyError::Machine { doing: "write", place: inputs.display().to_string(), source });
@@ -61,7 +64,9 @@ fn inputs_folder(folder: &Path) -> Result<PathBuf, Failure> {
             name.push("-inputs");
             Ok(folder.with_file_name(name))
         }
-        None => Err(Failure::other(format!("`{}` has no name to make a folder of", folder.display()), "name a folder that does not exist yet")),
+        None => {
+            Err(Failure::other(format!("`{}` has no name to make a folder of", folder.display()), "name a folder that does not exist yet"))
+        }
     }
 }
 

@@ -34,5 +34,9 @@ pub(super) fn open(terminal: &Terminal<'_>, path: &Path) -> Result<Box<dyn Read 
 
 fn unreadable(path: &Path, error: &io::Error) -> Failure {
     let status = if error.kind() == io::ErrorKind::NotFound { 1 } else { 3 };
-    Failure::Other { status, message: format!("`{}` cannot be read: {error}", path.display()), hint: "look at the path and at who may read it".to_owned() }
+    Failure::Other {
+        status,
+        message: format!("`{}` cannot be read: {error}", path.display()),
+        hint: "look at the path and at who may read it".to_owned(),
+    }
 }

@@ -43,22 +43,32 @@ enum Format {
 #[derive(Debug, Subcommand)]
 enum Command {
     /// Compiles a plan, or checks data against a sealed plan without looking at any outcome by arm
-    #[command(after_help = "Examples:\n  aforesaid check plan.yaml\n  aforesaid check plan.yaml --tests\n  aforesaid check study --data visits.csv --allocation allocation.csv\n\n\
-                            With --data the arms stay closed: of the allocation only the identifiers are read, and the output is the same however the arms were dealt.")]
+    #[command(
+        after_help = "Examples:\n  aforesaid check plan.yaml\n  aforesaid check plan.yaml --tests\n  aforesaid check study --data visits.csv --allocation allocation.csv\n\n\
+                            With --data the arms stay closed: of the allocation only the identifiers are read, and the output is the same however the arms were dealt."
+    )]
     Check(CheckArguments),
     /// Fixes a plan: makes the study folder with the plan, its meaning and their hashes
-    #[command(after_help = "Example:\n  aforesaid seal plan.yaml --study study\n\nThe plan must have no error and no warning that it does not acknowledge. Give the printed hash to someone outside: \
-                            only then does it prove when the plan was fixed.")]
+    #[command(
+        after_help = "Example:\n  aforesaid seal plan.yaml --study study\n\nThe plan must have no error and no warning that it does not acknowledge. Give the printed hash to someone outside: \
+                            only then does it prove when the plan was fixed."
+    )]
     Seal(SealArguments),
     /// Executes the sealed plan on the data and writes a record with its report
-    #[command(after_help = "Examples:\n  aforesaid run study --data visits.csv --allocation allocation.csv\n  aforesaid run study --data visits-2.csv --allocation allocation.csv --correction \"score of W014 at week 6 was typed wrong\"\n\n\
-                            The arms are opened only after that is written in the ledger. Nothing that exists is overwritten: each run is a record of its own.")]
+    #[command(
+        after_help = "Examples:\n  aforesaid run study --data visits.csv --allocation allocation.csv\n  aforesaid run study --data visits-2.csv --allocation allocation.csv --correction \"score of W014 at week 6 was typed wrong\"\n\n\
+                            The arms are opened only after that is written in the ledger. Nothing that exists is overwritten: each run is a record of its own."
+    )]
     Run(RunArguments),
     /// Verifies a study folder from its bytes: compiles, executes and renders again, and compares
-    #[command(after_help = "Example:\n  aforesaid audit study --expect-head 5f2c...\n\nIt writes nothing and needs no network. It ends in a table: claim, how it was checked, outcome, where. Exit status 0 only if none failed.")]
+    #[command(
+        after_help = "Example:\n  aforesaid audit study --expect-head 5f2c...\n\nIt writes nothing and needs no network. It ends in a table: claim, how it was checked, outcome, where. Exit status 0 only if none failed."
+    )]
     Audit(AuditArguments),
     /// A worked study on invented data, by the commands above, each printed before it runs
-    #[command(after_help = "Example:\n  aforesaid demo wrist-study\n\nMakes the study folder DIR, and beside it DIR-inputs with the plan, the data and the allocation that it starts from.")]
+    #[command(
+        after_help = "Example:\n  aforesaid demo wrist-study\n\nMakes the study folder DIR, and beside it DIR-inputs with the plan, the data and the allocation that it starts from."
+    )]
     Demo(DemoArguments),
 }
 
@@ -139,7 +149,11 @@ pub fn main(world: &dyn World, arguments: Vec<std::ffi::OsString>) -> u8 {
         Err(error) => {
             let text = error.render().to_string();
             // Help and version are what was asked for.
-            if error.use_stderr() { terminal.aside(&text) } else { terminal.answer(&text) };
+            if error.use_stderr() {
+                terminal.aside(&text)
+            } else {
+                terminal.answer(&text)
+            };
             return error.exit_code().clamp(0, 255) as u8;
         }
     };

@@ -75,7 +75,11 @@ impl<'w> Terminal<'w> {
         match failure {
             Failure::Findings(findings) => {
                 match format {
-                    Format::Text => self.aside(&format!("{}\n{}\n", self.findings_in_text(&findings, self.colour_aside()).trim_end(), counted(&findings))),
+                    Format::Text => self.aside(&format!(
+                        "{}\n{}\n",
+                        self.findings_in_text(&findings, self.colour_aside()).trim_end(),
+                        counted(&findings)
+                    )),
                     Format::Json => self.answer(&format!("{}\n", to_json(&findings))),
                 }
                 1

@@ -78,7 +78,10 @@ pub(super) fn run(terminal: &Terminal<'_>, arguments: &RunArguments) -> Result<u
         Ok(conducted) => conducted,
         Err(error) => {
             opened.unblinded.abandon(&error.to_string())?;
-            return Err(Failure::other(error.to_string(), "this is a fault of the program; keep the study folder and tell its maintainers"));
+            return Err(Failure::other(
+                error.to_string(),
+                "this is a fault of the program; keep the study folder and tell its maintainers",
+            ));
         }
     };
     let facts = RunFacts { data: opened.data, allocation: received_allocation, content: hashes.content, decisions: conducted.decisions };
@@ -104,7 +107,8 @@ fn open_allocation<'w>(
     copying: Copying,
 ) -> Result<Opened<'w>, Failure> {
     let incoming = study.receive(copying)?;
-    let (table, data) = take_in(terminal, incoming, &arguments.data, |name, reader| read_data(plan.resolved(), name, reader, ReadArms::No))?;
+    let (table, data) =
+        take_in(terminal, incoming, &arguments.data, |name, reader| read_data(plan.resolved(), name, reader, ReadArms::No))?;
     let table = match table {
         Ok(table) => table,
         Err(findings) => {
@@ -139,7 +143,8 @@ fn open_data_with_arms<'w>(
     correct(&mut study, arguments, None)?;
     let mut unblinded = study.log_unblinded(Opens::Data)?;
     let incoming = unblinded.receive(copying)?;
-    let (table, data) = take_in(terminal, incoming, &arguments.data, |name, reader| read_data(plan.resolved(), name, reader, ReadArms::Yes))?;
+    let (table, data) =
+        take_in(terminal, incoming, &arguments.data, |name, reader| read_data(plan.resolved(), name, reader, ReadArms::Yes))?;
     match table {
         Ok(table) => Ok(Opened { unblinded, table, data, allocation: None }),
         Err(findings) => give_up(unblinded, findings),

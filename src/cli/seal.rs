@@ -27,6 +27,7 @@ pub(super) fn seal(terminal: &Terminal<'_>, path: &Path, folder: &Path) -> Resul
         plan.meaning_hash(),
         study.state().ledger.head
     ));
-    terminal.aside("Give the plan hash to someone outside now (a registry entry will do): only then does it prove when the plan was fixed.\n");
+    terminal
+        .aside("Give the plan hash to someone outside now (a registry entry will do): only then does it prove when the plan was fixed.\n");
     Ok(DONE)
 }

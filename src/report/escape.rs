@@ -5,10 +5,12 @@ pub(super) fn markdown(text: &str) -> String {
     let folded = fold(text);
     let mut escaped = String::with_capacity(folded.len() + 8);
     for (place, character) in folded.chars().enumerate() {
-        let anywhere = matches!(character, '\\' | '`' | '*' | '_' | '[' | ']' | '<' | '>' | '|' | '~' | '&' | '!' | '#' | '{' | '}' | '$' | '^');
+        let anywhere =
+            matches!(character, '\\' | '`' | '*' | '_' | '[' | ']' | '<' | '>' | '|' | '~' | '&' | '!' | '#' | '{' | '}' | '$' | '^');
         // These open a block only where a line starts, or after the digits of an ordered list.
         let starting = matches!(character, '+' | '-' | '=' | ':') && place == 0;
-        let after_number = matches!(character, '.' | ')') && place > 0 && folded[..folded.len().min(place)].bytes().all(|byte| byte.is_ascii_digit());
+        let after_number =
+            matches!(character, '.' | ')') && place > 0 && folded[..folded.len().min(place)].bytes().all(|byte| byte.is_ascii_digit());
         if anywhere || starting || after_number {
             escaped.push('\\');
         }
@@ -35,7 +37,8 @@ pub(super) fn html(text: &str) -> String {
 
 /// White space as single blanks, other control characters left out.
 pub(super) fn fold(text: &str) -> String {
-    let spaced: String = text.chars().map(|c| if c.is_whitespace() { ' ' } else { c }).filter(|c| !c.is_control() && !is_direction(*c)).collect();
+    let spaced: String =
+        text.chars().map(|c| if c.is_whitespace() { ' ' } else { c }).filter(|c| !c.is_control() && !is_direction(*c)).collect();
     spaced.split(' ').filter(|part| !part.is_empty()).collect::<Vec<_>>().join(" ")
 }
 

@@ -50,7 +50,9 @@ pub(super) fn body(markdown: &str, figures: &[Figure]) -> Body {
             }
             Event::Start(Tag::Table(alignments)) => {
                 tables += 1;
-                events.push(Event::Html(CowStr::from(format!("<div class=\"wide\" tabindex=\"0\" role=\"region\" aria-label=\"Table {tables}\">\n"))));
+                events.push(Event::Html(CowStr::from(format!(
+                    "<div class=\"wide\" tabindex=\"0\" role=\"region\" aria-label=\"Table {tables}\">\n"
+                ))));
                 events.push(Event::Start(Tag::Table(alignments)));
             }
             Event::End(TagEnd::Table) => {

@@ -65,7 +65,12 @@ pub fn render(input: &ReportInput<'_>) -> Result<Rendered, ReportError> {
     let view = view::view(input, &figures);
     let markdown = fill(MARKDOWN, template(MARKDOWN), &view)?;
     let body = html::body(&markdown, &figures);
-    let page = html::Page { title: escape::html(&input.plan.title), style: template("style.css").to_owned(), contents: body.contents, body: body.html };
+    let page = html::Page {
+        title: escape::html(&input.plan.title),
+        style: template("style.css").to_owned(),
+        contents: body.contents,
+        body: body.html,
+    };
     Ok(Rendered {
         markdown,
         html: fill(PAGE, template(PAGE), &page)?,

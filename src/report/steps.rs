@@ -59,7 +59,11 @@ pub(super) fn section(step: &StepResult, outcome: Option<&Outcome>, reason: Opti
         reason: reason.map(markdown).unwrap_or_default(),
         because,
         table,
-        sentences: if step.species == "test" { step.results.iter().take(MOST_ROWS).filter_map(|entry| sentence(entry, outcome)).collect() } else { Vec::new() },
+        sentences: if step.species == "test" {
+            step.results.iter().take(MOST_ROWS).filter_map(|entry| sentence(entry, outcome)).collect()
+        } else {
+            Vec::new()
+        },
         decision: step.decision.as_deref().map(short).unwrap_or_default(),
     }
 }
@@ -144,8 +148,19 @@ fn size(entry: &Entry, wanted: &str) -> String {
 }
 
 fn omnibus(step: &StepResult) -> Table {
-    let mut table =
-        Table::new(&["Effect", "Verdict", "#SS", "#df", "#error SS", "#error df", "#F", "#epsilon", "#p uncorrected", "#p", "#partial eta squared"]);
+    let mut table = Table::new(&[
+        "Effect",
+        "Verdict",
+        "#SS",
+        "#df",
+        "#error SS",
+        "#error df",
+        "#F",
+        "#epsilon",
+        "#p uncorrected",
+        "#p",
+        "#partial eta squared",
+    ]);
     for entry in &step.results {
         let epsilons = match entry.details.get("epsilon") {
             Some(Detail::Named(named)) => Some(named),
@@ -171,7 +186,12 @@ fn omnibus(step: &StepResult) -> Table {
                 Some(Detail::Text(correction)) => correction.as_str(),
                 _ => "none",
             };
-            table.notes.push(format!("{}: epsilons {}; correction used: {correction}; p on {} df.", name(entry), all.join(", "), corrected_df(entry)));
+            table.notes.push(format!(
+                "{}: epsilons {}; correction used: {correction}; p on {} df.",
+                name(entry),
+                all.join(", "),
+                corrected_df(entry)
+            ));
         }
     }
     test_level(step, &mut table);
@@ -195,7 +215,8 @@ fn corrected_df(entry: &Entry) -> String {
 
 fn tests(step: &StepResult, unit: &str) -> Table {
     let estimate = if unit.is_empty() { "#estimate".to_owned() } else { format!("#estimate ({})", markdown(unit)) };
-    let mut table = Table::new(&["Hypothesis", "Verdict", &estimate, "#interval", "#F", "#df", "#p", "#adjusted p", "#partial eta squared"]);
+    let mut table =
+        Table::new(&["Hypothesis", "Verdict", &estimate, "#interval", "#F", "#df", "#p", "#adjusted p", "#partial eta squared"]);
     for entry in &step.results {
         let error = entry.standard_error_of();
         let interval = tables::interval(entry.interval_of(), error);
@@ -216,7 +237,9 @@ fn tests(step: &StepResult, unit: &str) -> Table {
         table.notes.push(format!("Intervals have a level of {} %.", percent(level)));
     }
     if step.results.iter().any(|entry| entry.p_adjusted.is_some() && entry.interval_of().is_some()) {
-        table.notes.push("Intervals are for each comparison by itself; the verdicts follow the adjusted p, so that the two need not agree.".to_owned());
+        table.notes.push(
+            "Intervals are for each comparison by itself; the verdicts follow the adjusted p, so that the two need not agree.".to_owned(),
+        );
     }
     reasons(step, &mut table);
     table
@@ -251,7 +274,9 @@ fn changes(step: &StepResult) -> Table {
     let mut table = Table::new(&["Change", "#n", "#mean change", "#standardizer", "#correlation", "#d", "#g", "#interval"]);
     for entry in &step.results {
         let three = |name: &str| entry.detail(name).map(|value| numbers::significant(value.get(), 3)).unwrap_or_default();
-        let interval = entry.interval_of().map(|[lower, upper]| format!("{} to {}", numbers::significant(lower.get(), 3), numbers::significant(upper.get(), 3)));
+        let interval = entry
+            .interval_of()
+            .map(|[lower, upper]| format!("{} to {}", numbers::significant(lower.get(), 3), numbers::significant(upper.get(), 3)));
         table.row([
             name(entry),
             entry.n.map(|n| n.to_string()).unwrap_or_default(),
@@ -282,7 +307,12 @@ fn explained(step: &StepResult) -> Table {
                 let level = size.level.map(percent).unwrap_or_default();
                 format!("{} to {} ({level} %)", numbers::significant(lower.get(), 3), numbers::significant(upper.get(), 3))
             });
-            table.row([name(entry), size.name.clone(), size.value.map(|value| numbers::significant(value.get(), 3)).unwrap_or_default(), interval.unwrap_or_default()]);
+            table.row([
+                name(entry),
+                size.name.clone(),
+                size.value.map(|value| numbers::significant(value.get(), 3)).unwrap_or_default(),
+                interval.unwrap_or_default(),
+            ]);
         }
     }
     reasons(step, &mut table);
@@ -298,7 +328,11 @@ pub(super) fn sentence(entry: &Entry, outcome: Option<&Outcome>) -> Option<Strin
     let numbers = match (entry.estimate_of(), entry.interval_of()) {
         (Some(estimate), Some(interval)) => {
             let level = entry.detail("interval_level").map(percent).unwrap_or_default();
-            format!(" The estimate is {}{unit} ({level} % interval {}).", tables::estimate(Some(estimate), error), tables::interval(Some(interval), error))
+            format!(
+                " The estimate is {}{unit} ({level} % interval {}).",
+                tables::estimate(Some(estimate), error),
+                tables::interval(Some(interval), error)
+            )
         }
         _ => String::new(),
     };

@@ -76,7 +76,12 @@ pub(super) fn view(input: &ReportInput<'_>, figures: &[Figure]) -> View {
         correction: text(&status.correction),
         first_conclusion: text(&status.first_conclusion),
         conclusion: markdown(&results.conclusion.text),
-        not_named: results.conclusion.not_named.iter().map(|found| format!("{}: {}", markdown(&found.reference), markdown(&found.verdict))).collect(),
+        not_named: results
+            .conclusion
+            .not_named
+            .iter()
+            .map(|found| format!("{}: {}", markdown(&found.reference), markdown(&found.verdict)))
+            .collect(),
         carrying: results
             .steps
             .iter()
@@ -122,7 +127,13 @@ fn picture(figure: &Figure) -> Picture {
 fn sealed(input: &ReportInput<'_>) -> Vec<String> {
     let (plan, status) = (input.plan, input.status);
     let mut lines = vec![
-        format!("The plan was sealed on {} by {}. Plan hash {}, meaning {}.", markdown(&status.sealed_at), markdown(&status.sealed_by), short(&status.plan_sha256), short(&status.meaning)),
+        format!(
+            "The plan was sealed on {} by {}. Plan hash {}, meaning {}.",
+            markdown(&status.sealed_at),
+            markdown(&status.sealed_by),
+            short(&status.plan_sha256),
+            short(&status.meaning)
+        ),
         if status.witnessed {
             "Someone outside witnessed the ledger before this run; the audit says who.".to_owned()
         } else {
@@ -151,7 +162,12 @@ fn sealed(input: &ReportInput<'_>) -> Vec<String> {
         AllocationPlace::InTheData => "The data, which hold the arms and so were never blind to whoever had the file, were opened",
         AllocationPlace::NoArms => "The data were analysed",
     };
-    lines.push(format!("{opened} on {} by {}; this is record {} of the study.", markdown(&status.unblinded_at), markdown(&status.run_by), status.record));
+    lines.push(format!(
+        "{opened} on {} by {}; this is record {} of the study.",
+        markdown(&status.unblinded_at),
+        markdown(&status.run_by),
+        status.record
+    ));
     lines
 }
 
@@ -195,7 +211,8 @@ fn cells(description: &Description, plan: &ResolvedPlan, figures: &[Figure]) -> 
     let occasions = !plan.design.within.is_empty();
     let interval = format!("#{} % interval", percent(description.level));
     let mean = format!("#mean{unit}");
-    let heads: Vec<&str> = if occasions { vec!["Arm", "Occasion", "#n", &mean, "#SD", &interval] } else { vec!["Arm", "#n", &mean, "#SD", &interval] };
+    let heads: Vec<&str> =
+        if occasions { vec!["Arm", "Occasion", "#n", &mean, "#SD", &interval] } else { vec!["Arm", "#n", &mean, "#SD", &interval] };
     let mut table = Table::new(&heads);
     for cell in &description.cells {
         // The precision of a mean follows its own standard error.
@@ -204,7 +221,12 @@ fn cells(description: &Description, plan: &ResolvedPlan, figures: &[Figure]) -> 
         if occasions {
             row.push(markdown(&cell.within.join("; ")));
         }
-        row.extend([cell.n.to_string(), tables::estimate(cell.mean, error), tables::number(cell.sd), tables::interval(cell.interval, error)]);
+        row.extend([
+            cell.n.to_string(),
+            tables::estimate(cell.mean, error),
+            tables::number(cell.sd),
+            tables::interval(cell.interval, error),
+        ]);
         table.row(row);
     }
     Cells {
@@ -218,7 +240,8 @@ fn families(input: &ReportInput<'_>) -> Option<Table> {
     let mut table = Table::new(&["Family", "Control", "#alpha", "Members", "Decision"]);
     for family in &input.results.families {
         let members: Vec<String> = family.members.iter().map(|member| markdown(member)).collect();
-        let shown = if members.len() > 12 { format!("{} and {} more", members[..12].join(", "), members.len() - 12) } else { members.join(", ") };
+        let shown =
+            if members.len() > 12 { format!("{} and {} more", members[..12].join(", "), members.len() - 12) } else { members.join(", ") };
         table.row([
             markdown(&family.id),
             family.control.clone(),
@@ -232,7 +255,9 @@ fn families(input: &ReportInput<'_>) -> Option<Table> {
 }
 
 fn plan_in_brief(plan: &ResolvedPlan) -> Vec<String> {
-    let factor = |factor: &crate::plan::resolved::Factor| format!("{} ({})", markdown(&factor.name), factor.levels.iter().map(|level| markdown(level)).collect::<Vec<_>>().join(", "));
+    let factor = |factor: &crate::plan::resolved::Factor| {
+        format!("{} ({})", markdown(&factor.name), factor.levels.iter().map(|level| markdown(level)).collect::<Vec<_>>().join(", "))
+    };
     let list = |factors: &[crate::plan::resolved::Factor]| factors.iter().map(factor).collect::<Vec<_>>().join("; ");
     let mut lines = Vec::new();
     if !plan.design.between.is_empty() {
@@ -243,7 +268,10 @@ fn plan_in_brief(plan: &ResolvedPlan) -> Vec<String> {
     }
     if let Some(randomised) = &plan.design.randomised {
         let scheme = randomised.scheme.as_deref().map(|scheme| format!(", scheme {}", markdown(scheme))).unwrap_or_default();
-        lines.push(format!("Randomised: {}{scheme}.", randomised.factors.iter().map(|factor| markdown(factor)).collect::<Vec<_>>().join(", ")));
+        lines.push(format!(
+            "Randomised: {}{scheme}.",
+            randomised.factors.iter().map(|factor| markdown(factor)).collect::<Vec<_>>().join(", ")
+        ));
     }
     for outcome in &plan.outcomes {
         let mut parts = vec![format!("Outcome {}: {}", markdown(&outcome.name), markdown(&outcome.label))];
@@ -253,7 +281,12 @@ fn plan_in_brief(plan: &ResolvedPlan) -> Vec<String> {
         parts.extend(outcome.smallest_worthwhile_difference.map(|value| format!("smallest worthwhile difference {value}")));
         lines.push(format!("{}.", parts.join(", ")));
     }
-    lines.push(format!("Missing data: complete cases over {}. Alpha {}; {}.", super::methods::over(&plan.missing_data), plan.alpha, plan.decision_rule));
+    lines.push(format!(
+        "Missing data: complete cases over {}. Alpha {}; {}.",
+        super::methods::over(&plan.missing_data),
+        plan.alpha,
+        plan.decision_rule
+    ));
     if let Some(blinding) = &plan.blinding {
         lines.push(format!("Blinding: {}", markdown(blinding)));
     }
@@ -264,7 +297,11 @@ fn planned_step(step: &crate::plan::resolved::Step, plan: &ResolvedPlan) -> Stri
     use crate::plan::resolved::Action;
     let what = match &step.action {
         Action::Screen(_) => "screen".to_owned(),
-        Action::Test(test) => format!("test of {} ({})", test.effect.iter().map(|factor| markdown(factor)).collect::<Vec<_>>().join(" by "), counted(test.hypotheses.len(), "hypothesis", "hypotheses")),
+        Action::Test(test) => format!(
+            "test of {} ({})",
+            test.effect.iter().map(|factor| markdown(factor)).collect::<Vec<_>>().join(" by "),
+            counted(test.hypotheses.len(), "hypothesis", "hypotheses")
+        ),
         Action::Estimate(_) => "estimate".to_owned(),
     };
     let when = step.when.as_ref().map(|when| format!(", when {}", condition(when))).unwrap_or_default();
@@ -302,7 +339,9 @@ fn estimand(plan: &ResolvedPlan) -> Vec<String> {
 
 fn in_words(value: &serde_json::Value) -> String {
     match value {
-        serde_json::Value::Object(map) => map.iter().map(|(key, value)| format!("{} {}", markdown(key), in_words(value))).collect::<Vec<_>>().join(", "),
+        serde_json::Value::Object(map) => {
+            map.iter().map(|(key, value)| format!("{} {}", markdown(key), in_words(value))).collect::<Vec<_>>().join(", ")
+        }
         serde_json::Value::String(text) => markdown(text),
         other => markdown(&other.to_string()),
     }

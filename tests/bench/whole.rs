@@ -55,7 +55,9 @@ fn once(arguments: &[&str]) -> (f64, f64) {
     let status = format!("/proc/{}/status", child.id());
     let mut peak = 0.0_f64;
     let code = loop {
-        if let Some(line) = fs::read_to_string(&status).ok().and_then(|text| text.lines().find(|line| line.starts_with("VmHWM")).map(str::to_owned)) {
+        if let Some(line) =
+            fs::read_to_string(&status).ok().and_then(|text| text.lines().find(|line| line.starts_with("VmHWM")).map(str::to_owned))
+        {
             let kilobytes: f64 = line.split_whitespace().nth(1).and_then(|word| word.parse().ok()).unwrap_or(0.0);
             peak = peak.max(kilobytes / 1024.0);
         }

@@ -25,7 +25,8 @@ pub fn run(plan: &str, data: &str) -> Results {
     let compilation = compile("plan.yaml", plan.as_bytes());
     let checked = compilation.plan.unwrap_or_else(|| panic!("{}", to_text(&compilation.findings, false)));
     let sealed = seal(checked).unwrap_or_else(|findings| panic!("{}", to_text(&findings, false)));
-    let table = read_data(sealed.resolved(), "data.csv", data.as_bytes(), ReadArms::Yes).unwrap_or_else(|findings| panic!("{}", to_text(&findings, false)));
+    let table = read_data(sealed.resolved(), "data.csv", data.as_bytes(), ReadArms::Yes)
+        .unwrap_or_else(|findings| panic!("{}", to_text(&findings, false)));
     let (trial, _) = bind(sealed.resolved(), table, None).unwrap_or_else(|findings| panic!("{}", to_text(&findings, false)));
     let execution = Bound::new(&sealed, &trial).unwrap().run(&mut Listed::default());
     Results {

@@ -13,9 +13,7 @@ mod reader;
 mod references;
 mod steps;
 
-use crate::plan::resolved::{
-    CompleteOver, DECISION_RULE, MissingData, MissingRule, RESOLVED_FORMAT, ResolvedPlan, Step,
-};
+use crate::plan::resolved::{CompleteOver, DECISION_RULE, MissingData, MissingRule, RESOLVED_FORMAT, ResolvedPlan, Step};
 use crate::plan::syntax::tree::{Node, Value};
 use crate::text::diagnostic::Diagnostic;
 use crate::text::source::{Source, Span};
@@ -24,8 +22,24 @@ use references::References;
 use std::collections::HashMap;
 
 const PLAN_KEYS: &[&str] = &[
-    "plan", "title", "identifier", "prepared by", "blinding", "administration", "data status", "estimand", "data", "design", "outcomes",
-    "missing data", "alpha", "steps", "families", "conclusions", "planning", "acknowledged",
+    "plan",
+    "title",
+    "identifier",
+    "prepared by",
+    "blinding",
+    "administration",
+    "data status",
+    "estimand",
+    "data",
+    "design",
+    "outcomes",
+    "missing data",
+    "alpha",
+    "steps",
+    "families",
+    "conclusions",
+    "planning",
+    "acknowledged",
 ];
 
 /// What came of resolving.
@@ -56,7 +70,11 @@ pub fn resolve(source: &Source, root: &Node) -> Resolution {
     let mut places = Places::default();
     let plan = plan(&reader, root, &mut places);
     let findings = reader.into_findings();
-    Resolution { plan: plan.filter(|_| findings.iter().all(|finding| finding.severity < crate::text::diagnostic::Severity::Error)), places, findings }
+    Resolution {
+        plan: plan.filter(|_| findings.iter().all(|finding| finding.severity < crate::text::diagnostic::Severity::Error)),
+        places,
+        findings,
+    }
 }
 
 /// Every reference of a plan with its label, in plan order.
@@ -68,11 +86,20 @@ fn plan(reader: &Reader<'_>, root: &Node, places: &mut Places) -> Option<Resolve
     let fields = reader.map(root, "a plan", PLAN_KEYS, &["populations", "sensitivity"])?;
     places.keys = root.map().unwrap_or(&[]).iter().map(|entry| (entry.key.clone(), entry.key_span)).collect();
     let what = "the plan";
-    let language = reader.required(&fields, "plan", what, "a plan starts with `plan: 1`, the version of the language").and_then(|node| language(reader, node));
+    let language = reader
+        .required(&fields, "plan", what, "a plan starts with `plan: 1`, the version of the language")
+        .and_then(|node| language(reader, node));
     let title = reader.required(&fields, "title", what, "the report is headed by it").and_then(|node| reader.text(node, "`title`"));
-    let alpha = reader.required(&fields, "alpha", what, "say at which level the plan is tested, such as `alpha: 0.05`; there is no default").and_then(|node| alpha(reader, node));
+    let alpha = reader
+        .required(&fields, "alpha", what, "say at which level the plan is tested, such as `alpha: 0.05`; there is no default")
+        .and_then(|node| alpha(reader, node));
     let missing_data = reader
-        .required(&fields, "missing data", what, "say what is done about missing values, such as `missing data: complete cases`; there is no default")
+        .required(
+            &fields,
+            "missing data",
+            what,
+            "say what is done about missing values, such as `missing data: complete cases`; there is no default",
+        )
         .and_then(|node| missing_data(reader, node));
     let design_node = reader.required(&fields, "design", what, "name the arms and the occasions");
     let design = design_node.and_then(|node| design::design(reader, node));
@@ -98,7 +125,8 @@ fn plan(reader: &Reader<'_>, root: &Node, places: &mut Places) -> Option<Resolve
             })
             .collect();
         references.current = None;
-        families = fields.get("families").map_or(Some(Vec::new()), |node| families::families(reader, node, &found, &references, context.alpha));
+        families =
+            fields.get("families").map_or(Some(Vec::new()), |node| families::families(reader, node, &found, &references, context.alpha));
         families::families_judged_in_time(reader, families.as_deref().unwrap_or(&[]), &references);
         conclusions = reader
             .required(&fields, "conclusions", what, "say what will be concluded from each way the tests can turn out")
@@ -141,7 +169,13 @@ fn language(reader: &Reader<'_>, node: &Node) -> Option<u32> {
 fn alpha(reader: &Reader<'_>, node: &Node) -> Option<f64> {
     let alpha = steps::probability(reader, node, "`alpha`")?;
     if alpha > 0.5 {
-        reader.error("wrong-range", node.span, "`alpha` is the chance of a false rejection; above one half it protects from nothing", "here", "0.05 and 0.025 are common");
+        reader.error(
+            "wrong-range",
+            node.span,
+            "`alpha` is the chance of a false rejection; above one half it protects from nothing",
+            "here",
+            "0.05 and 0.025 are common",
+        );
         return None;
     }
     Some(alpha)
@@ -177,12 +211,23 @@ fn ids(reader: &Reader<'_>, nodes: &[Node]) -> Option<Vec<(String, Span)>> {
         let found: Option<(&str, Span)> = id_of(reader, &fields);
         match found {
             Some((id, _)) if matches!(id, "either" | "not") => {
-                reader.error("reserved-id", fields.get("id").map_or(node.span, |node| node.span), format!("`{id}` is a word of conditions and cannot be the id of a step"), "reserved", "choose another id");
+                reader.error(
+                    "reserved-id",
+                    fields.get("id").map_or(node.span, |node| node.span),
+                    format!("`{id}` is a word of conditions and cannot be the id of a step"),
+                    "reserved",
+                    "choose another id",
+                );
                 sound = false;
             }
             Some((id, span)) => {
                 if let Some(first) = first_at.insert(id.to_owned(), span) {
-                    reader.conflict("duplicate-id", [(span, "the second"), (first, "the first")], format!("`{id}` is the id of two steps"), "conditions and the report refer to steps by their ids; rename one");
+                    reader.conflict(
+                        "duplicate-id",
+                        [(span, "the second"), (first, "the first")],
+                        format!("`{id}` is the id of two steps"),
+                        "conditions and the report refer to steps by their ids; rename one",
+                    );
                     sound = false;
                 }
                 ids.push((id.to_owned(), span));

@@ -13,7 +13,8 @@ const MOST_ROWS: usize = 40;
 
 /// Draws a step of standardized changes; nothing where none was computed.
 pub(super) fn draw(step: &StepResult) -> Option<Drawn> {
-    let rows: Vec<&Entry> = step.results.iter().filter(|entry| entry.state == State::Done && entry.estimate_of().is_some()).take(MOST_ROWS).collect();
+    let rows: Vec<&Entry> =
+        step.results.iter().filter(|entry| entry.state == State::Done && entry.estimate_of().is_some()).take(MOST_ROWS).collect();
     if rows.is_empty() {
         return None;
     }
@@ -23,7 +24,10 @@ pub(super) fn draw(step: &StepResult) -> Option<Drawn> {
     let intervals = level.map_or_else(String::new, |level| format!(", with {} % intervals", percent(level)));
     Some(Drawn {
         title: format!("Standardized changes ({}){intervals}", step.id),
-        description: format!("{} standardized changes on one axis with a line at zero; the numbers stand in the table of the step.", rows.len()),
+        description: format!(
+            "{} standardized changes on one axis with a line at zero; the numbers stand in the table of the step.",
+            rows.len()
+        ),
         svg,
     })
 }
@@ -37,7 +41,8 @@ fn paint(svg: &mut String, rows: &[&Entry]) -> Option<()> {
         entry.estimate_of().map(|d| d.get()).into_iter().chain(interval.into_iter().flatten()).chain([0.0])
     });
     let axis = range(limits);
-    let names: Vec<String> = rows.iter().map(|entry| shorten(if entry.label.is_empty() { &entry.reference } else { &entry.label }, 42)).collect();
+    let names: Vec<String> =
+        rows.iter().map(|entry| shorten(if entry.label.is_empty() { &entry.reference } else { &entry.label }, 42)).collect();
     let count = rows.len() as f64;
     let mut chart = ChartBuilder::on(&area)
         .margin(12)

@@ -13,8 +13,14 @@ pub(super) struct Drawn {
 /// Ink, and colours that differ in lightness as well as hue.
 pub(super) const INK: RGBColor = RGBColor(29, 36, 48);
 pub(super) const GRID: RGBColor = RGBColor(222, 217, 205);
-const PALETTE: [RGBColor; 6] =
-    [RGBColor(27, 79, 114), RGBColor(191, 97, 6), RGBColor(46, 125, 92), RGBColor(122, 62, 128), RGBColor(120, 120, 120), RGBColor(160, 35, 50)];
+const PALETTE: [RGBColor; 6] = [
+    RGBColor(27, 79, 114),
+    RGBColor(191, 97, 6),
+    RGBColor(46, 125, 92),
+    RGBColor(122, 62, 128),
+    RGBColor(120, 120, 120),
+    RGBColor(160, 35, 50),
+];
 
 pub(super) fn colour(series: usize) -> RGBColor {
     PALETTE[series % PALETTE.len()]
@@ -38,7 +44,13 @@ pub(super) fn range(values: impl Iterator<Item = f64>) -> std::ops::Range<f64> {
     let size = least.abs().max(greatest.abs());
     let width = greatest - least;
     // Below this the axis could not be divided in doubles.
-    let room = if width > 1e-9 * size { width * 0.06 } else if size > 0.0 { size * 0.05 } else { 1.0 };
+    let room = if width > 1e-9 * size {
+        width * 0.06
+    } else if size > 0.0 {
+        size * 0.05
+    } else {
+        1.0
+    };
     least - room..greatest + room
 }
 

@@ -24,13 +24,32 @@ pub(super) fn draw(description: &Description, outcome: Option<&Outcome>, design:
     let (divisor, times) = scale(&range(limits.clone()));
     let axis = range(limits.map(|value| value / divisor));
     let mut svg = String::new();
-    let names: Vec<String> = (0..occasions).map(|occasion| shorten(&design.occasion_levels(occasion).join("; "), if occasions > 8 { 8 } else { 18 })).collect();
-    paint(&mut svg, description, design, &Axes { divisor, axis, names, value: format!("{}{}{times}", shorten(label, 40), if unit.is_empty() { String::new() } else { format!(", {}", shorten(unit, 20)) }) })?;
+    let names: Vec<String> =
+        (0..occasions).map(|occasion| shorten(&design.occasion_levels(occasion).join("; "), if occasions > 8 { 8 } else { 18 })).collect();
+    paint(
+        &mut svg,
+        description,
+        design,
+        &Axes {
+            divisor,
+            axis,
+            names,
+            value: format!(
+                "{}{}{times}",
+                shorten(label, 40),
+                if unit.is_empty() { String::new() } else { format!(", {}", shorten(unit, 20)) }
+            ),
+        },
+    )?;
     let arms = if design.between.is_empty() { String::new() } else { " by arm".to_owned() };
     let over = if design.within.is_empty() { "" } else { " over occasions" };
     Some(Drawn {
         title: format!("Means of {label}{over}{arms}, with {} % intervals", percent(description.level)),
-        description: format!("{cells} {} with {occasions} {}; the numbers stand in the table of means.", if cells == 1 { "group" } else { "groups" }, if occasions == 1 { "occasion" } else { "occasions" }),
+        description: format!(
+            "{cells} {} with {occasions} {}; the numbers stand in the table of means.",
+            if cells == 1 { "group" } else { "groups" },
+            if occasions == 1 { "occasion" } else { "occasions" }
+        ),
         svg,
     })
 }
@@ -54,7 +73,11 @@ fn paint(svg: &mut String, description: &Description, design: &Design, axes: &Ax
         .ok()?;
     let name_of = |place: &f64| {
         let nearest = libm::round(*place);
-        if (place - nearest).abs() < 0.01 && nearest >= 0.0 { axes.names.get(nearest as usize).cloned().unwrap_or_default() } else { String::new() }
+        if (place - nearest).abs() < 0.01 && nearest >= 0.0 {
+            axes.names.get(nearest as usize).cloned().unwrap_or_default()
+        } else {
+            String::new()
+        }
     };
     chart
         .configure_mesh()
@@ -73,9 +96,13 @@ fn paint(svg: &mut String, description: &Description, design: &Design, axes: &Ax
     let step = (0.5 / cells as f64).min(0.07);
     for cell in 0..cells {
         let shift = (cell as f64 - (cells as f64 - 1.0) / 2.0) * step;
-        let of_cell: Vec<(f64, &CellDescription)> =
-            description.cells[cell * occasions..(cell + 1) * occasions].iter().enumerate().map(|(occasion, found)| (occasion as f64 + shift, found)).collect();
-        let points: Vec<(f64, f64)> = of_cell.iter().filter_map(|(place, found)| Some((*place, found.mean?.get() / axes.divisor))).collect();
+        let of_cell: Vec<(f64, &CellDescription)> = description.cells[cell * occasions..(cell + 1) * occasions]
+            .iter()
+            .enumerate()
+            .map(|(occasion, found)| (occasion as f64 + shift, found))
+            .collect();
+        let points: Vec<(f64, f64)> =
+            of_cell.iter().filter_map(|(place, found)| Some((*place, found.mean?.get() / axes.divisor))).collect();
         let style = colour(cell).stroke_width(2);
         let line = match gap(cell) {
             0 => chart.draw_series(LineSeries::new(points.clone(), style)).ok()?,
