@@ -274,10 +274,18 @@ fn an_interaction_of_exactly_zero() {
 fn no_error_variance_at_all() {
     let study = mapped(|arm, _| if arm == "usual" { [1.0, 2.0, 4.0] } else { [1.0, 3.0, 9.0] });
     study.refused("covariances", "singular");
-    for reference in ["sphericity", "omnibus", "plain", "own / a vs b", "pooled / b vs c", "simple own / arm at b", "simple pooled / arm at b"] {
+    for reference in
+        ["sphericity", "omnibus", "plain", "own / a vs b", "pooled / b vs c", "simple own / arm at b", "simple pooled / arm at b"]
+    {
         study.refused(reference, "error variance is zero");
     }
-    for reference in ["root / a vs b at usual", "change / a vs b at usual", "change / a vs c at extra", "base / b vs c at extra", "average / a vs b at usual"] {
+    for reference in [
+        "root / a vs b at usual",
+        "change / a vs b at usual",
+        "change / a vs c at extra",
+        "base / b vs c at extra",
+        "average / a vs b at usual",
+    ] {
         study.refused(reference, "that standard deviation is 0");
     }
     assert!(study.said.contains("refused"), "{}", study.said);
@@ -305,7 +313,8 @@ fn more_occasions_than_an_arm_has_subjects() {
     let occasions = ["t1", "t2", "t3", "t4", "t5", "t6"];
     let mut data = format!("who,arm,{}\n", occasions.join(","));
     for subject in 0..8_i32 {
-        let scores: Vec<String> = (0..6_i32).map(|occasion| ((subject * 7 + occasion * 11 + subject * occasion * occasion * 3) % 17).to_string()).collect();
+        let scores: Vec<String> =
+            (0..6_i32).map(|occasion| ((subject * 7 + occasion * 11 + subject * occasion * occasion * 3) % 17).to_string()).collect();
         data.push_str(&format!("s{subject},{},{}\n", ["usual", "extra"][subject as usize % 2], scores.join(",")));
     }
     let columns: Vec<String> = occasions.iter().map(|name| format!("{name}: {name}")).collect();
@@ -361,7 +370,11 @@ fn designs_of_one_occasion_and_of_no_arms() {
 fn with_gaps(gaps: &[(usize, usize)]) -> String {
     let mut data = String::from("who,arm,a,b,c\n");
     for (number, (arm, scores)) in ROWS.iter().enumerate() {
-        let cells: Vec<String> = scores.iter().enumerate().map(|(at, score)| if gaps.contains(&(number, at)) { "NA".to_owned() } else { score.to_string() }).collect();
+        let cells: Vec<String> = scores
+            .iter()
+            .enumerate()
+            .map(|(at, score)| if gaps.contains(&(number, at)) { "NA".to_owned() } else { score.to_string() })
+            .collect();
         data.push_str(&format!("s{number},{arm},{}\n", cells.join(",")));
     }
     data

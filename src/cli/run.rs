@@ -2,6 +2,7 @@
 
 use super::output::{Failure, Terminal};
 use super::{DONE, RunArguments, files};
+use crate::canon::hash::Digest;
 use crate::conduct::{Conducted, DataHashes, conduct, status_of};
 use crate::data::allocation::{Allocation, read_allocation};
 use crate::data::bind::bind;
@@ -11,6 +12,7 @@ use crate::plan::resolved::AllocationPlace;
 use crate::plan::seal::{SealedPlan, reopen};
 use crate::record::ledger::{Happening, Opens};
 use crate::record::run::{Copying, Incoming, Received, RunFacts, Unblinded};
+use crate::record::state::StudyState;
 use crate::record::study::Study;
 use crate::text::diagnostic::Diagnostic;
 use crate::text::render::to_text;
@@ -126,9 +128,11 @@ fn open_allocation<'w>(
     };
     let incoming = unblinded.receive(copying)?;
     let (allocation, received) = take_in(terminal, incoming, path, |name, reader| read_allocation(plan.resolved(), name, reader))?;
-    match allocation {
-        Ok(allocation) => Ok(Opened { unblinded, table, data, allocation: Some((allocation, received)) }),
-        Err(findings) => give_up(unblinded, findings),
+    let last = last_run(unblinded.state()).filter(|last| arguments.correction.is_none() && last.allocation != Some(received.hash()));
+    match (allocation, last) {
+        (Ok(_), Some(last)) => say_what_was_corrected(unblinded, &last, "another allocation"),
+        (Ok(allocation), None) => Ok(Opened { unblinded, table, data, allocation: Some((allocation, received)) }),
+        (Err(findings), _) => give_up(unblinded, findings),
     }
 }
 
@@ -145,10 +149,18 @@ fn open_data_with_arms<'w>(
     let incoming = unblinded.receive(copying)?;
     let (table, data) =
         take_in(terminal, incoming, &arguments.data, |name, reader| read_data(plan.resolved(), name, reader, ReadArms::Yes))?;
-    match table {
-        Ok(table) => Ok(Opened { unblinded, table, data, allocation: None }),
-        Err(findings) => give_up(unblinded, findings),
+    let last = last_run(unblinded.state()).filter(|last| arguments.correction.is_none() && last.data != data.hash());
+    match (table, last) {
+        (Ok(_), Some(last)) => say_what_was_corrected(unblinded, &last, "other data"),
+        (Ok(table), None) => Ok(Opened { unblinded, table, data, allocation: None }),
+        (Err(findings), _) => give_up(unblinded, findings),
     }
+}
+
+fn say_what_was_corrected<T>(unblinded: Unblinded<'_>, last: &LastRun, what: &str) -> Result<T, Failure> {
+    let failure = uncorrected(last, what);
+    unblinded.abandon("a run after the first did not say what was corrected")?;
+    Err(failure)
 }
 
 fn give_up<T>(unblinded: Unblinded<'_>, findings: Vec<Diagnostic>) -> Result<T, Failure> {
@@ -156,23 +168,38 @@ fn give_up<T>(unblinded: Unblinded<'_>, findings: Vec<Diagnostic>) -> Result<T, 
     Err(Failure::Findings(findings))
 }
 
-/// A run after the first says what was corrected, unless it reads the same bytes again.
+/// A run after the first says what was corrected, unless it reads the same bytes again: data here, where they hold no arms,
+/// and what could tell the arms once it has been opened.
 fn correct(study: &mut Study<'_>, arguments: &RunArguments, data: Option<&Received>) -> Result<(), Failure> {
-    let last = study.state().runs().last().and_then(|event| match &event.what {
-        Happening::Run { data, record, .. } => Some((*data, *record)),
-        _ => None,
-    });
-    match (&arguments.correction, last) {
-        (Some(why), _) => {
-            study.log_correction(why)?;
-            Ok(())
-        }
-        (None, Some((before, record))) if data.is_none_or(|data| data.hash() != before) => Err(Failure::other(
-            format!("record {record:03} exists; another run on other data is a correction"),
-            "say what was corrected with `--correction WHY`: the report then sets today's conclusion beside the first one",
-        )),
+    if let Some(why) = &arguments.correction {
+        study.log_correction(why)?;
+        return Ok(());
+    }
+    match (data, last_run(study.state())) {
+        (Some(data), Some(last)) if data.hash() != last.data => Err(uncorrected(&last, "other data")),
         _ => Ok(()),
     }
+}
+
+/// What the last run read.
+struct LastRun {
+    record: u32,
+    data: Digest,
+    allocation: Option<Digest>,
+}
+
+fn last_run(state: &StudyState) -> Option<LastRun> {
+    state.runs().last().and_then(|event| match &event.what {
+        Happening::Run { data, allocation, record, .. } => Some(LastRun { record: *record, data: *data, allocation: *allocation }),
+        _ => None,
+    })
+}
+
+fn uncorrected(last: &LastRun, what: &str) -> Failure {
+    Failure::other(
+        format!("record {:03} exists; another run on {what} is a correction", last.record),
+        "say what was corrected with `--correction WHY`: the report then sets today's conclusion beside the first one",
+    )
 }
 
 /// Reads a file while it is hashed and kept.

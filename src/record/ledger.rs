@@ -210,6 +210,14 @@ impl Ledger {
                 return (ledger, Some(defect));
             }
         }
+        // A command that was killed leaves the beginning of a line; a whole event with another byte than a line feed after it was changed.
+        if let Some(tail) = found.unterminated
+            && let Some((_, all_but_last)) = tail.bytes.split_last()
+            && serde_json::from_slice::<serde::de::IgnoredAny>(all_but_last).is_ok()
+        {
+            let kind = DefectKind::Contradiction("its last event does not end in a line feed but in another byte".to_owned());
+            return (ledger, Some(Defect { place: LEDGER.to_owned(), line: Some(tail.number), kind }));
+        }
         (ledger, None)
     }
 
