@@ -62,13 +62,25 @@ fn one_finding(text: &str, rule: &str, hint: &str) {
 
 #[test]
 fn pieces_are_named_in_the_order_of_factors_and_levels() {
-    let text = plan("- {id: pieces, test: partial interactions, effect: water by month, split: {water: all pairs, month: all pairs}, error: own}", "");
+    let text = plan(
+        "- {id: pieces, test: partial interactions, effect: water by month, split: {water: all pairs, month: all pairs}, error: own}",
+        "",
+    );
     assert_eq!(
         names(&text),
-        ["pieces", "pieces / full vs deficit; june vs july", "pieces / full vs none; june vs july", "pieces / deficit vs none; june vs july"]
+        [
+            "pieces",
+            "pieces / full vs deficit; june vs july",
+            "pieces / full vs none; june vs july",
+            "pieces / deficit vs none; june vs july"
+        ]
     );
     let text = plan("- {id: p, test: partial interactions, effect: month by water, split: {water: against deficit}, error: own}", "");
-    assert_eq!(names(&text), ["p", "p / deficit vs full", "p / deficit vs none"], "the factors' order is the design's, and the reference comes first");
+    assert_eq!(
+        names(&text),
+        ["p", "p / deficit vs full", "p / deficit vs none"],
+        "the factors' order is the design's, and the reference comes first"
+    );
     let text = plan(
         "- {id: p, test: partial interactions, effect: water by month, split: {water: [{name: some against none, weights: {full: 0.5, deficit: 0.5, none: -1}}, {name: linear, weights: {full: -1, none: 1}}]}, error: pooled}",
         "",
@@ -80,7 +92,10 @@ fn pieces_are_named_in_the_order_of_factors_and_levels() {
 fn simple_effects_hold_levels() {
     let whole = two_arms("- {id: simple, test: simple effects, effect: arm, at: visit, error: pooled}", "conclusions: [{otherwise: x}]");
     assert_eq!(names(&whole), ["simple", "simple / arm at cast off", "simple / arm at week 6", "simple / arm at month 6"]);
-    let split = two_arms("- {id: simple, test: simple effects, effect: arm, at: visit, split: {arm: all pairs}, error: own}", "conclusions: [{otherwise: x}]");
+    let split = two_arms(
+        "- {id: simple, test: simple effects, effect: arm, at: visit, split: {arm: all pairs}, error: own}",
+        "conclusions: [{otherwise: x}]",
+    );
     assert_eq!(names(&split)[2], "simple / booklet vs coached at week 6");
     let crossed = plan("- {id: s, test: simple effects, effect: month, at: water by soil, error: own}", "");
     assert_eq!(names(&crossed)[1..3], ["s / month at full; clay", "s / month at full; sand"]);
@@ -150,25 +165,38 @@ fn designs_without_arms_and_without_occasions() {
 
 #[test]
 fn defaults_are_spelt_out_and_the_rest_must_be_said() {
-    let plan = sound(&two_arms("- {id: o, test: omnibus, effect: arm by visit, correction: {below 0.75: greenhouse-geisser, otherwise: huynh-feldt}}", "conclusions: [{otherwise: x}]"));
+    let plan = sound(&two_arms(
+        "- {id: o, test: omnibus, effect: arm by visit, correction: {below 0.75: greenhouse-geisser, otherwise: huynh-feldt}}",
+        "conclusions: [{otherwise: x}]",
+    ));
     let Action::Test(test) = &plan.resolved().steps[0].action else { panic!("a test") };
     assert_eq!(test.error, Choice::Fixed(ErrorTerm::Pooled));
     assert_eq!(
         test.correction,
         Choice::Fixed(CorrectionRule::ByEpsilon { below: vec![(0.75, Correction::GreenhouseGeisser)], otherwise: Correction::HuynhFeldt })
     );
-    one_finding(&two_arms("- {id: o, test: omnibus, effect: arm by visit}", "conclusions: [{otherwise: x}]"), "missing-key", "there is no default");
-    let text = two_arms("- {id: o, test: partial interactions, effect: arm by visit, split: {visit: all pairs}}", "conclusions: [{otherwise: x}]");
+    one_finding(
+        &two_arms("- {id: o, test: omnibus, effect: arm by visit}", "conclusions: [{otherwise: x}]"),
+        "missing-key",
+        "there is no default",
+    );
+    let text =
+        two_arms("- {id: o, test: partial interactions, effect: arm by visit, split: {visit: all pairs}}", "conclusions: [{otherwise: x}]");
     one_finding(&text, "missing-key", "`own occasions`");
     let text = two_arms("- {id: s, screen: sphericity}", "conclusions: [{otherwise: x}]");
     one_finding(&text, "missing-key", "threshold");
-    let text = two_arms("- {id: s, estimate: standardized change, split: {visit: all pairs}, within each: arm}", "conclusions: [{otherwise: x}]");
+    let text =
+        two_arms("- {id: s, estimate: standardized change, split: {visit: all pairs}, within each: arm}", "conclusions: [{otherwise: x}]");
     one_finding(&text, "missing-key", "what divides the change");
 }
 
 #[test]
 fn conditions_read_only_what_is_decided_above() {
-    let steps = |second: &str| format!("- {{id: o, test: omnibus, effect: arm by visit, correction: none}}\n- {{id: p, test: partial interactions, effect: arm by visit, split: {{visit: all pairs}}, error: own, when: {second}}}\n- {{id: z, screen: sphericity, threshold: 0.05}}");
+    let steps = |second: &str| {
+        format!(
+            "- {{id: o, test: omnibus, effect: arm by visit, correction: none}}\n- {{id: p, test: partial interactions, effect: arm by visit, split: {{visit: all pairs}}, error: own, when: {second}}}\n- {{id: z, screen: sphericity, threshold: 0.05}}"
+        )
+    };
     let text = |second: &str| two_arms(&steps(second), "conclusions: [{otherwise: x}]");
     sound(&text("{o: significant}"));
     sound(&text("{either: [{o: significant}, {o: refused}]}"));
@@ -185,18 +213,33 @@ fn conditions_read_only_what_is_decided_above() {
 #[test]
 fn a_family_is_judged_before_it_is_read() {
     let steps = "- {id: a, test: simple effects, effect: arm, at: visit, error: own}\n- {id: b, test: omnibus, effect: arm, when: {a / arm at week 6: significant}}";
-    let text = |control: &str| two_arms(steps, &format!("families: [{{id: f, tests: [a, b], control: {control}}}]\nconclusions: [{{otherwise: x}}]"));
+    let text = |control: &str| {
+        two_arms(steps, &format!("families: [{{id: f, tests: [a, b], control: {control}}}]\nconclusions: [{{otherwise: x}}]"))
+    };
     one_finding(&text("holm"), "family-not-judged-yet", "fixed sequence");
     sound(&text("fixed sequence"));
-    let weak = two_arms("- {id: a, test: omnibus, effect: arm}", "families: [{id: f, tests: [a], control: benjamini-hochberg}]\nconclusions: [{otherwise: x}]");
+    let weak = two_arms(
+        "- {id: a, test: omnibus, effect: arm}",
+        "families: [{id: f, tests: [a], control: benjamini-hochberg}]\nconclusions: [{otherwise: x}]",
+    );
     one_finding(&weak, "control-too-weak", "holm");
-    let twice = two_arms("- {id: a, test: omnibus, effect: arm}", "families: [{id: f, tests: [a], control: holm}, {id: g, tests: [a], control: holm}]\nconclusions: [{otherwise: x}]");
+    let twice = two_arms(
+        "- {id: a, test: omnibus, effect: arm}",
+        "families: [{id: f, tests: [a], control: holm}, {id: g, tests: [a], control: holm}]\nconclusions: [{otherwise: x}]",
+    );
     one_finding(&twice, "test-in-two-families", "one family at most");
 }
 
 #[test]
 fn cases_need_an_otherwise_and_put_it_last() {
-    let text = |cases: &str| two_arms(&format!("- {{id: s, screen: sphericity, threshold: 0.05}}\n- {{id: o, test: omnibus, effect: arm by visit, correction: {cases}}}"), "conclusions: [{otherwise: x}]");
+    let text = |cases: &str| {
+        two_arms(
+            &format!(
+                "- {{id: s, screen: sphericity, threshold: 0.05}}\n- {{id: o, test: omnibus, effect: arm by visit, correction: {cases}}}"
+            ),
+            "conclusions: [{otherwise: x}]",
+        )
+    };
     sound(&text("[{when: {s: no departure shown}, use: none}, {otherwise: greenhouse-geisser}]"));
     one_finding(&text("[{when: {s: no departure shown}, use: none}]"), "case-without-otherwise", "add a last case");
     one_finding(&text("[{otherwise: none}, {when: {s: no departure shown}, use: none}]"), "case-unreachable", "put `otherwise` last");
@@ -204,7 +247,10 @@ fn cases_need_an_otherwise_and_put_it_last() {
 
 #[test]
 fn weights_must_sum_to_zero_and_conclusions_quote_what_exists() {
-    let text = two_arms("- {id: p, test: partial interactions, effect: arm by visit, split: {visit: [{name: early, weights: {cast off: -1, week 6: 0.9}}]}, error: own}", "conclusions: [{otherwise: x}]");
+    let text = two_arms(
+        "- {id: p, test: partial interactions, effect: arm by visit, split: {visit: [{name: early, weights: {cast off: -1, week 6: 0.9}}]}, error: own}",
+        "conclusions: [{otherwise: x}]",
+    );
     one_finding(&text, "weights-do-not-sum-to-zero", "`early` sum to -0.1");
     let quoting = |say: &str| two_arms("- {id: o, test: omnibus, effect: arm}", &format!("conclusions: [{{otherwise: \"{say}\"}}]"));
     sound(&quoting("p is {o: p}, {o: estimate} ({o: interval})"));
@@ -221,7 +267,11 @@ fn all_errors_come_in_one_go_and_none_twice() {
     );
     let found = found(&text.replace("alpha: 0.05", "alpah: 0.05"));
     let rules: Vec<&str> = found.iter().map(|(rule, _)| rule.as_str()).collect();
-    assert_eq!(rules, ["unknown-key", "unknown-name", "duplicate-id", "unknown-word", "wrong-range", "unknown-key", "missing-key", "unknown-word"], "{found:?}");
+    assert_eq!(
+        rules,
+        ["unknown-key", "unknown-name", "duplicate-id", "unknown-word", "wrong-range", "unknown-key", "missing-key", "unknown-word"],
+        "{found:?}"
+    );
     let mut sorted = found.clone();
     sorted.sort_by_key(|(_, line)| *line);
     assert_eq!(found, sorted, "in the order of the text");
@@ -239,7 +289,8 @@ fn words_of_later_releases_are_known_and_refused_as_such() {
     ] {
         one_finding(&two_arms(&format!("- {step}"), "conclusions: [{otherwise: x}]"), "not-in-this-release", "README.md");
     }
-    let clustered = two_arms("- {id: o, test: omnibus, effect: arm}", "conclusions: [{otherwise: x}]").replace("data: {", "data: {clusters: site, ");
+    let clustered =
+        two_arms("- {id: o, test: omnibus, effect: arm}", "conclusions: [{otherwise: x}]").replace("data: {", "data: {clusters: site, ");
     assert!(found(&clustered).iter().any(|(rule, _)| rule == "clustered-arms"));
 }
 
@@ -263,7 +314,8 @@ fn rules_flag_their_example_and_pass_the_whole_plan() {
 fn the_meaning_does_not_depend_on_how_a_plan_is_laid_out() {
     let example = include_str!("../plans/wrist-study.yaml");
     let plain = sound(example);
-    let other = sound(&example.replace("alpha: 0.05", "alpha: 0.050").replace("# 0", "").replace("{rule: complete cases}", "complete cases"));
+    let other =
+        sound(&example.replace("alpha: 0.05", "alpha: 0.050").replace("# 0", "").replace("{rule: complete cases}", "complete cases"));
     assert_ne!(plain.plan_hash(), other.plan_hash());
     assert_eq!(plain.meaning_hash(), other.meaning_hash());
     assert_eq!(plain.resolved_bytes(), other.resolved_bytes());

@@ -74,14 +74,10 @@ fn factor(reader: &Reader<'_>, name: &str, node: &Node, within: bool) -> Option<
             let fields = reader.map(node, &format!("within factor `{name}`"), &["kind", "levels"], &[])?;
             let kind = match fields.get("kind") {
                 None => FactorKind::Time,
-                Some(kind) => reader.word(
-                    kind,
-                    "`kind` of a within factor",
-                    &[("time", FactorKind::Time), ("condition", FactorKind::Condition)],
-                    &[],
-                )
-                // What was said of the kind need not keep the steps from being read.
-                .unwrap_or(FactorKind::Time),
+                Some(kind) => reader
+                    .word(kind, "`kind` of a within factor", &[("time", FactorKind::Time), ("condition", FactorKind::Condition)], &[])
+                    // What was said of the kind need not keep the steps from being read.
+                    .unwrap_or(FactorKind::Time),
             };
             (reader.required(&fields, "levels", &format!("within factor `{name}`"), "list the levels in their order")?, kind)
         }
