@@ -4,12 +4,14 @@
 
 use crate::canon::chain::Chain;
 use crate::canon::hash::Digest;
-use crate::canon::json::{CanonError, file_bytes};
+use crate::canon::json::{CanonError, file_bytes, from_file_bytes};
 use crate::data::trial::Trial;
 use crate::execute::lower::LowerError;
 use crate::execute::machine::{Bound, Execution};
 use crate::plan::seal::SealedPlan;
 use crate::record::decisions::DecisionLog;
+use crate::record::format::Seal;
+use crate::record::ledger::{Event, Happening};
 use crate::report::input::{ChainedDecision, ReportInput, Status};
 use crate::report::{ReportError, render};
 use crate::results::decision::{Decision, Witness};
@@ -94,7 +96,13 @@ impl Witness for Recorder {
 ///
 /// # Errors
 /// A plan that contradicts itself, a number without canonical form, or a template that does not render.
-pub fn conduct(plan: &SealedPlan, trial: &Trial, hashes: &DataHashes, unblinded: &Digest, status: &Status) -> Result<Conducted, ConductError> {
+pub fn conduct(
+    plan: &SealedPlan,
+    trial: &Trial,
+    hashes: &DataHashes,
+    unblinded: &Digest,
+    status: &Status,
+) -> Result<Conducted, ConductError> {
     let root = Chain::decisions(&plan.meaning_hash(), &hashes.data, hashes.allocation.as_ref(), unblinded);
     let mut recorder = Recorder { log: DecisionLog::new(root), taken: Vec::new(), failed: None };
     let execution = Bound::new(plan, trial).map_err(ConductError::Plan)?.run(&mut recorder);
@@ -113,6 +121,33 @@ pub fn conduct(plan: &SealedPlan, trial: &Trial, hashes: &DataHashes, unblinded:
         files.insert(format!("figures/{name}"), svg.into_bytes());
     }
     Ok(Conducted { files, decisions: recorder.log.head(), results })
+}
+
+/// What the report says of the circumstances of the run whose event `unblinded` has this hash, from the ledger. `first` is
+/// `results.json` of the first record, where this is a later one.
+pub fn status_of(seal: &Seal, events: &[Event], unblinded: &Digest, record: u32, first: Option<&[u8]>) -> Status {
+    let place = events.iter().position(|event| event.hash == *unblinded).unwrap_or(0);
+    let event = events.get(place);
+    let correction =
+        events[..place].iter().rev().take_while(|event| !matches!(event.what, Happening::Run { .. })).find_map(|event| match &event.what {
+            Happening::Corrected { why, .. } => Some(why.clone()),
+            _ => None,
+        });
+    let first_conclusion = first.and_then(|bytes| from_file_bytes::<Results>(bytes).ok()).map(|results| results.conclusion.text);
+    Status {
+        sealed_at: seal.sealed_at.to_string(),
+        sealed_by: seal.who.clone(),
+        release: event.map_or_else(String::new, |event| event.release.clone()),
+        plan_sha256: seal.sha256.to_string(),
+        meaning: seal.meaning.to_string(),
+        witnessed: events[..place].iter().any(|event| matches!(event.what, Happening::Anchored { .. } | Happening::Signed { .. })),
+        ledger_head: unblinded.to_string(),
+        unblinded_at: event.map_or_else(String::new, |event| event.time.to_string()),
+        run_by: event.map_or_else(String::new, |event| event.who.clone()),
+        record,
+        correction,
+        first_conclusion,
+    }
 }
 
 fn stamp(plan: &SealedPlan, trial: &Trial, hashes: &DataHashes, status: &Status, execution: Execution) -> Results {

@@ -60,9 +60,7 @@ pub trait World: Send + Sync {
     /// As [`World::open`], and [`io::ErrorKind::FileTooLarge`] beyond the limit.
     fn read(&self, path: &Path, limit: u64) -> io::Result<Vec<u8>> {
         let mut bytes = Vec::new();
-        self.open(path)?
-            .take(limit.saturating_add(1))
-            .read_to_end(&mut bytes)?;
+        self.open(path)?.take(limit.saturating_add(1)).read_to_end(&mut bytes)?;
         if bytes.len() as u64 > limit {
             let message = format!("larger than the {limit} bytes that are read of such a file");
             return Err(io::Error::new(io::ErrorKind::FileTooLarge, message));
@@ -212,10 +210,7 @@ impl World for RealWorld {
     fn open(&self, path: &Path) -> io::Result<Box<dyn Read + Send>> {
         let file = File::open(path)?;
         if file.metadata()?.is_dir() {
-            return Err(io::Error::new(
-                io::ErrorKind::IsADirectory,
-                "it is a folder, not a file",
-            ));
+            return Err(io::Error::new(io::ErrorKind::IsADirectory, "it is a folder, not a file"));
         }
         Ok(Box::new(file))
     }
@@ -252,9 +247,7 @@ impl World for RealWorld {
     }
 
     fn create_file(&self, path: &Path) -> io::Result<Box<dyn NewFile>> {
-        Ok(Box::new(RealFile(
-            OpenOptions::new().write(true).create_new(true).open(path)?,
-        )))
+        Ok(Box::new(RealFile(OpenOptions::new().write(true).create_new(true).open(path)?)))
     }
 
     fn append(&self, path: &Path, bytes: &[u8]) -> io::Result<()> {
@@ -277,10 +270,7 @@ impl World for RealWorld {
             _ => false,
         };
         if !free {
-            return Err(io::Error::new(
-                io::ErrorKind::AlreadyExists,
-                "something stands there",
-            ));
+            return Err(io::Error::new(io::ErrorKind::AlreadyExists, "something stands there"));
         }
         fs::rename(from, to)
     }
@@ -295,19 +285,11 @@ impl World for RealWorld {
 
     fn sync_folder(&self, folder: &Path) -> io::Result<()> {
         // Only Unix lets a folder be opened and synced; elsewhere its names are kept by the file system's own log.
-        if cfg!(unix) {
-            File::open(folder)?.sync_all()
-        } else {
-            Ok(())
-        }
+        if cfg!(unix) { File::open(folder)?.sync_all() } else { Ok(()) }
     }
 
     fn lock(&self, path: &Path) -> io::Result<Option<Box<dyn Lock>>> {
-        let file = OpenOptions::new()
-            .write(true)
-            .create(true)
-            .truncate(false)
-            .open(path)?;
+        let file = OpenOptions::new().write(true).create(true).truncate(false).open(path)?;
         match file.try_lock() {
             Ok(()) => Ok(Some(Box::new(RealLock { _file: file }))),
             Err(TryLockError::WouldBlock) => Ok(None),

@@ -44,7 +44,7 @@ fn read_all(bytes: &[u8]) {
         for arms in [ReadArms::Yes, ReadArms::No] {
             match read_data(plan, "data.csv", bytes, arms) {
                 Ok(table) => {
-                    assert!(table.rows > 0 && table.subjects.len() > 0);
+                    assert!(table.rows > 0 && !table.subjects.is_empty());
                     blind::check(plan, &table, list.as_ref().ok()).to_text();
                     if let Err(findings) = bind(plan, table, allocation.as_ref().ok().cloned()) {
                         assert!(!findings.is_empty());
@@ -111,7 +111,10 @@ fn with_a_quoted_column(text: &str) -> String {
 
 type Said = Vec<(String, String, Vec<usize>)>;
 
-fn compared(outcome: Result<Table, Vec<Diagnostic>>) -> Result<(Vec<u32>, Vec<Vec<u64>>, Option<Vec<u32>>, String, usize), Said> {
+/// Lines, values by their bits, cells, content hash, rows.
+type Compared = (Vec<u32>, Vec<Vec<u64>>, Option<Vec<u32>>, String, usize);
+
+fn compared(outcome: Result<Table, Vec<Diagnostic>>) -> Result<Compared, Said> {
     outcome
         .map(|table| {
             let bits = table.values.iter().map(|values| values.iter().map(|value| value.to_bits()).collect()).collect();

@@ -22,20 +22,13 @@ fn every_statistic_keeps_ten_digits() {
     for case in cases {
         let name = case["name"].as_str().expect("a name");
         let cells = case["cells"].as_u64().expect("a count") as usize;
-        let cell: Vec<u32> = numbers(&case["cell"])
-            .into_iter()
-            .map(|cell| cell as u32)
-            .collect();
+        let cell: Vec<u32> = numbers(&case["cell"]).into_iter().map(|cell| cell as u32).collect();
         let rows = case["values"].as_array().expect("rows");
         let values: Vec<f64> = rows.iter().flat_map(numbers).collect();
         let occasions = values.len() / cell.len();
         let mut worst = 0.0_f64;
         for (what, wanted) in case["expected"].as_object().expect("values") {
-            let wanted: f64 = wanted
-                .as_str()
-                .expect("a decimal")
-                .parse()
-                .expect("a number");
+            let wanted: f64 = wanted.as_str().expect("a decimal").parse().expect("a number");
             match compute(what, &values, occasions, &cell, cells) {
                 Ok(found) => {
                     compared += 1;
@@ -55,27 +48,13 @@ fn every_statistic_keeps_ten_digits() {
 }
 
 fn numbers(list: &serde_json::Value) -> Vec<f64> {
-    list.as_array()
-        .expect("a list")
-        .iter()
-        .map(|number| number.as_f64().expect("a number"))
-        .collect()
+    list.as_array().expect("a list").iter().map(|number| number.as_f64().expect("a number")).collect()
 }
 
-fn compute(
-    what: &str,
-    values: &[f64],
-    occasions: usize,
-    cell: &[u32],
-    cells: usize,
-) -> Result<f64, aforesaid::stats::model::Refusal> {
+fn compute(what: &str, values: &[f64], occasions: usize, cell: &[u32], cells: usize) -> Result<f64, aforesaid::stats::model::Refusal> {
     let moments = Moments::new(values, occasions, cell, cells, None)?;
     let omnibus = |between: Part, within: Part| {
-        let hypothesis = Hypothesis::new(
-            &[FactorPart::new(cells, between)],
-            &[FactorPart::new(occasions, within)],
-            Weighting::Equal,
-        )?;
+        let hypothesis = Hypothesis::new(&[FactorPart::new(cells, between)], &[FactorPart::new(occasions, within)], Weighting::Equal)?;
         test_univariate(&moments, &hypothesis, ErrorTerm::Pooled)
     };
     let interaction = || omnibus(Part::Whole, Part::Whole);
@@ -86,11 +65,7 @@ fn compute(
             (row[levels - 2], row[levels - 1]) = (-1.0, 1.0);
             FactorPart::new(levels, Part::Weights(vec![row]))
         };
-        let hypothesis = Hypothesis::new(
-            &[last_pair(cells)],
-            &[last_pair(occasions)],
-            Weighting::Equal,
-        )?;
+        let hypothesis = Hypothesis::new(&[last_pair(cells)], &[last_pair(occasions)], Weighting::Equal)?;
         test_univariate(&moments, &hypothesis, ErrorTerm::Own)
     };
     let estimate = || Ok(piece()?.estimate.expect("one contrast"));
@@ -98,21 +73,12 @@ fn compute(
     let sphericity = || {
         let contrasts = Matrix::from_rows(
             &(1..occasions)
-                .map(|later| {
-                    (0..occasions)
-                        .map(|k| f64::from(k == later) - f64::from(k == 0))
-                        .collect()
-                })
+                .map(|later| (0..occasions).map(|k| f64::from(k == later) - f64::from(k == 0)).collect())
                 .collect::<Vec<Vec<f64>>>(),
         );
-        mauchly(
-            &moments,
-            &contrasts.transpose().orthonormal_columns(),
-            &vec![true; cells],
-        )
+        mauchly(&moments, &contrasts.transpose().orthonormal_columns(), &vec![true; cells])
     };
-    let spread =
-        |centre| Ok(equal_spread(values, occasions, cell, cells, None, occasions - 1, centre)?.f);
+    let spread = |centre| Ok(equal_spread(values, occasions, cell, cells, None, occasions - 1, centre)?.f);
     match what {
         "group:time SS" => Ok(interaction()?.ss),
         "group:time F" => Ok(interaction()?.f),
@@ -127,10 +93,7 @@ fn compute(
         "huynh-feldt 1976" => epsilons()?.huynh_feldt_1976,
         "ln W" => {
             let test = sphericity()?;
-            assert!(
-                (test.w > 0.0)
-                    && (libm::log(test.w) - test.log_w).abs() < 1e-12 * test.log_w.abs().max(1.0)
-            );
+            assert!((test.w > 0.0) && (libm::log(test.w) - test.log_w).abs() < 1e-12 * test.log_w.abs().max(1.0));
             Ok(test.log_w)
         }
         "chi-square" => Ok(sphericity()?.chi_squared),

@@ -11,10 +11,7 @@ struct Draw(u64);
 
 impl Draw {
     fn uniform(&mut self) -> f64 {
-        self.0 = self
-            .0
-            .wrapping_mul(6_364_136_223_846_793_005)
-            .wrapping_add(1_442_695_040_888_963_407);
+        self.0 = self.0.wrapping_mul(6_364_136_223_846_793_005).wrapping_add(1_442_695_040_888_963_407);
         (self.0 >> 11) as f64 / 9_007_199_254_740_992.0
     }
 
@@ -33,21 +30,14 @@ struct Study {
 impl Study {
     /// Unequal cells of two subjects or more, subjects that differ, means that differ.
     fn draw(draw: &mut Draw, cells: usize, occasions: usize) -> Study {
-        let mut study = Study {
-            values: Vec::new(),
-            cell: Vec::new(),
-            cells,
-            occasions,
-        };
+        let mut study = Study { values: Vec::new(), cell: Vec::new(), cells, occasions };
         for cell in 0..cells {
             for _ in 0..2 + draw.below(9) {
                 study.cell.push(cell as u32);
                 let level = 20.0 * draw.uniform();
                 for occasion in 0..occasions {
                     let mean = level + 0.4 * (cell * occasion) as f64;
-                    study
-                        .values
-                        .push(mean + (3.0 + occasion as f64) * draw.uniform());
+                    study.values.push(mean + (3.0 + occasion as f64) * draw.uniform());
                 }
             }
         }
@@ -61,11 +51,7 @@ impl Study {
     fn map(&self, change: impl Fn(usize, usize, f64) -> f64) -> Study {
         let values = self.values.iter().enumerate();
         Study {
-            values: values
-                .map(|(place, &value)| {
-                    change(place / self.occasions, place % self.occasions, value)
-                })
-                .collect(),
+            values: values.map(|(place, &value)| change(place / self.occasions, place % self.occasions, value)).collect(),
             cell: self.cell.clone(),
             ..*self
         }
@@ -73,12 +59,7 @@ impl Study {
 }
 
 fn hypothesis(between: &[(usize, Part)], within: &[(usize, Part)]) -> Hypothesis {
-    let parts = |parts: &[(usize, Part)]| {
-        parts
-            .iter()
-            .map(|(levels, part)| FactorPart::new(*levels, part.clone()))
-            .collect::<Vec<_>>()
-    };
+    let parts = |parts: &[(usize, Part)]| parts.iter().map(|(levels, part)| FactorPart::new(*levels, part.clone())).collect::<Vec<_>>();
     Hypothesis::new(&parts(between), &parts(within), Weighting::Equal).expect("a hypothesis")
 }
 
@@ -89,10 +70,7 @@ fn difference(levels: usize, first: usize, second: usize) -> Part {
 }
 
 fn same(found: f64, wanted: f64, tolerance: f64, what: &str) {
-    assert!(
-        (found - wanted).abs() <= tolerance * wanted.abs(),
-        "{what}: {found:e} and {wanted:e}"
-    );
+    assert!((found - wanted).abs() <= tolerance * wanted.abs(), "{what}: {found:e} and {wanted:e}");
 }
 
 fn run(moments: &Moments, hypothesis: &Hypothesis, error: ErrorTerm) -> UnivariateTest {
@@ -108,39 +86,21 @@ fn a_piece_of_two_by_two_is_the_squared_t_of_difference_scores() {
         let study = Study::draw(&mut draw, 4, 5);
         let (first, second) = (1, 4);
         let scores = |wanted: u32| -> Vec<f64> {
-            let rows = study
-                .values
-                .chunks(5)
-                .zip(&study.cell)
-                .filter(|(_, cell)| **cell == wanted);
+            let rows = study.values.chunks(5).zip(&study.cell).filter(|(_, cell)| **cell == wanted);
             rows.map(|(row, _)| row[second] - row[first]).collect()
         };
         let (a, b) = (scores(0), scores(3));
         let mean = |scores: &[f64]| scores.iter().sum::<f64>() / scores.len() as f64;
-        let squares = |scores: &[f64]| {
-            scores
-                .iter()
-                .map(|s| (s - mean(scores)) * (s - mean(scores)))
-                .sum::<f64>()
-        };
+        let squares = |scores: &[f64]| scores.iter().map(|s| (s - mean(scores)) * (s - mean(scores))).sum::<f64>();
         let df = (a.len() + b.len() - 2) as f64;
         let variance = (squares(&a) + squares(&b)) / df;
-        let t = (mean(&b) - mean(&a))
-            / (variance * (1.0 / a.len() as f64 + 1.0 / b.len() as f64)).sqrt();
-        let piece = hypothesis(
-            &[(4, difference(4, 0, 3))],
-            &[(5, difference(5, first, second))],
-        );
+        let t = (mean(&b) - mean(&a)) / (variance * (1.0 / a.len() as f64 + 1.0 / b.len() as f64)).sqrt();
+        let piece = hypothesis(&[(4, difference(4, 0, 3))], &[(5, difference(5, first, second))]);
         let test = run(&study.moments(), &piece, ErrorTerm::Own);
         let estimate = test.estimate.expect("one contrast");
         same(test.f, t * t, 1e-11, "F and squared t");
         same(estimate.t, t, 1e-11, "t");
-        same(
-            estimate.value,
-            mean(&b) - mean(&a),
-            1e-11,
-            "second less first",
-        );
+        same(estimate.value, mean(&b) - mean(&a), 1e-11, "second less first");
         assert_eq!((test.df1, test.df2), (1.0, df));
     }
 }
@@ -162,21 +122,13 @@ fn another_orthonormal_basis_changes_nothing() {
             let (a, b) = (run(&moments, &plain, error), run(&moments, &turned, error));
             same(b.f, a.f, 1e-15, "F");
             let (a, b) = (a.epsilons.expect("epsilons"), b.epsilons.expect("epsilons"));
-            same(
-                b.greenhouse_geisser,
-                a.greenhouse_geisser,
-                1e-15,
-                "Greenhouse-Geisser",
-            );
+            same(b.greenhouse_geisser, a.greenhouse_geisser, 1e-15, "Greenhouse-Geisser");
             if let (Ok(a), Ok(b)) = (a.huynh_feldt, b.huynh_feldt) {
                 same(b, a, 1e-15, "Huynh-Feldt");
             }
         }
         let everyone = [true; 3];
-        match (
-            mauchly(&moments, plain.within(), &everyone),
-            mauchly(&moments, turned.within(), &everyone),
-        ) {
+        match (mauchly(&moments, plain.within(), &everyone), mauchly(&moments, turned.within(), &everyone)) {
             (Ok(a), Ok(b)) => same(b.log_w, a.log_w, 1e-14, "ln W"),
             (a, b) => assert_eq!(a, b, "round {round}"),
         }
@@ -202,11 +154,7 @@ fn relabelling_levels_permutes_results_only() {
     for _ in 0..10 {
         let study = Study::draw(&mut draw, 3, 4);
         let (groups, occasions) = ([2, 0, 1], [3, 1, 0, 2]); // where each old level goes
-        let mut moved = Study {
-            values: vec![0.0; study.values.len()],
-            cell: Vec::new(),
-            ..study
-        };
+        let mut moved = Study { values: vec![0.0; study.values.len()], cell: Vec::new(), ..study };
         for (subject, &cell) in study.cell.iter().enumerate() {
             moved.cell.push(groups[cell as usize]);
             for (old, new) in occasions.iter().enumerate() {
@@ -214,11 +162,7 @@ fn relabelling_levels_permutes_results_only() {
             }
         }
         let (before, after) = (study.moments(), moved.moments());
-        for (between, within) in [
-            (Part::Whole, Part::Whole),
-            (Part::Whole, Part::Average),
-            (Part::Average, Part::Whole),
-        ] {
+        for (between, within) in [(Part::Whole, Part::Whole), (Part::Whole, Part::Average), (Part::Average, Part::Whole)] {
             let effect = hypothesis(&[(3, between)], &[(4, within)]);
             for error in ERRORS {
                 let (a, b) = (run(&before, &effect, error), run(&after, &effect, error));
@@ -227,10 +171,8 @@ fn relabelling_levels_permutes_results_only() {
             }
         }
         let old = hypothesis(&[(3, difference(3, 0, 2))], &[(4, difference(4, 1, 3))]);
-        let new = hypothesis(
-            &[(3, difference(3, groups[0] as usize, groups[2] as usize))],
-            &[(4, difference(4, occasions[1], occasions[3]))],
-        );
+        let new =
+            hypothesis(&[(3, difference(3, groups[0] as usize, groups[2] as usize))], &[(4, difference(4, occasions[1], occasions[3]))]);
         for error in ERRORS {
             let (a, b) = (run(&before, &old, error), run(&after, &new, error));
             assert_eq!(a.estimate, b.estimate);
@@ -249,17 +191,10 @@ fn powers_of_two_scale_sums_of_squares_exactly() {
     let study = Study::draw(&mut draw, 3, 4);
     for scale in [0.25, 1024.0, 1.0 / 1_099_511_627_776.0] {
         let scaled = study.map(|_, _, value| value * scale).moments();
-        for (between, within) in [
-            (Part::Whole, Part::Whole),
-            (Part::Average, Part::Whole),
-            (Part::Whole, Part::Hold(2)),
-        ] {
+        for (between, within) in [(Part::Whole, Part::Whole), (Part::Average, Part::Whole), (Part::Whole, Part::Hold(2))] {
             let effect = hypothesis(&[(3, between)], &[(4, within)]);
             for error in ERRORS {
-                let (a, b) = (
-                    run(&study.moments(), &effect, error),
-                    run(&scaled, &effect, error),
-                );
+                let (a, b) = (run(&study.moments(), &effect, error), run(&scaled, &effect, error));
                 assert_eq!(b.ss, a.ss * scale * scale);
                 assert_eq!(b.ss_error, a.ss_error * scale * scale);
                 assert_eq!((b.f, b.df2), (a.f, a.df2));
@@ -268,9 +203,7 @@ fn powers_of_two_scale_sums_of_squares_exactly() {
         }
         let last = |study: &Study| {
             let centre = Centre::Median;
-            equal_spread(&study.values, 4, &study.cell, 3, None, 3, centre)
-                .expect("a test")
-                .f
+            equal_spread(&study.values, 4, &study.cell, 3, None, 3, centre).expect("a test").f
         };
         assert_eq!(last(&study.map(|_, _, value| value * scale)), last(&study));
     }
@@ -286,27 +219,18 @@ fn order_of_subjects_matters_in_the_last_bits_at_most_and_a_mask_is_a_removal() 
         order.swap(place, draw.below(place + 1));
     }
     let pick = |order: &[usize]| Study {
-        values: order
-            .iter()
-            .flat_map(|&subject| study.values[subject * 4..][..4].to_vec())
-            .collect(),
+        values: order.iter().flat_map(|&subject| study.values[subject * 4..][..4].to_vec()).collect(),
         cell: order.iter().map(|&subject| study.cell[subject]).collect(),
         ..study
     };
     let effect = hypothesis(&[(3, Part::Whole)], &[(4, Part::Whole)]);
     let shuffled = pick(&order);
-    let (a, b) = (
-        run(&study.moments(), &effect, ErrorTerm::Own),
-        run(&shuffled.moments(), &effect, ErrorTerm::Own),
-    );
+    let (a, b) = (run(&study.moments(), &effect, ErrorTerm::Own), run(&shuffled.moments(), &effect, ErrorTerm::Own));
     same(b.f, a.f, 1e-15, "F");
     let mut restored: Vec<usize> = (0..subjects).collect();
     restored.sort_by_key(|&place| order[place]);
     let sorted = Study {
-        values: restored
-            .iter()
-            .flat_map(|&place| shuffled.values[place * 4..][..4].to_vec())
-            .collect(),
+        values: restored.iter().flat_map(|&place| shuffled.values[place * 4..][..4].to_vec()).collect(),
         cell: restored.iter().map(|&place| shuffled.cell[place]).collect(),
         ..study
     };
@@ -315,12 +239,8 @@ fn order_of_subjects_matters_in_the_last_bits_at_most_and_a_mask_is_a_removal() 
     let kept: Vec<bool> = (0..subjects).map(|subject| subject % 5 != 2).collect();
     let masked = Moments::new(&study.values, 4, &study.cell, 3, Some(&kept)).expect("moments");
     let left: Vec<usize> = (0..subjects).filter(|&subject| kept[subject]).collect();
-    assert_eq!(
-        run(&masked, &effect, ErrorTerm::Own),
-        run(&pick(&left).moments(), &effect, ErrorTerm::Own)
-    );
-    let spread =
-        |study: &Study, kept| equal_spread(&study.values, 4, &study.cell, 3, kept, 1, Centre::Mean);
+    assert_eq!(run(&masked, &effect, ErrorTerm::Own), run(&pick(&left).moments(), &effect, ErrorTerm::Own));
+    let spread = |study: &Study, kept| equal_spread(&study.values, 4, &study.cell, 3, kept, 1, Centre::Mean);
     assert_eq!(spread(&study, Some(&kept)), spread(&pick(&left), None));
 }
 
@@ -328,71 +248,33 @@ fn order_of_subjects_matters_in_the_last_bits_at_most_and_a_mask_is_a_removal() 
 fn what_the_contrasts_cannot_see_does_not_matter() {
     let mut draw = Draw(6);
     let study = Study::draw(&mut draw, 3, 4);
-    let shifts: Vec<f64> = study
-        .cell
-        .iter()
-        .map(|_| (64.0 * draw.uniform()).floor())
-        .collect();
-    let shifted = study
-        .map(|subject, _, value| value + shifts[subject])
-        .moments();
+    let shifts: Vec<f64> = study.cell.iter().map(|_| (64.0 * draw.uniform()).floor()).collect();
+    let shifted = study.map(|subject, _, value| value + shifts[subject]).moments();
     let within = hypothesis(&[(3, Part::Whole)], &[(4, Part::Whole)]);
-    let (a, b) = (
-        run(&study.moments(), &within, ErrorTerm::Pooled),
-        run(&shifted, &within, ErrorTerm::Pooled),
-    );
-    same(
-        b.f,
-        a.f,
-        1e-12,
-        "a number added to a subject leaves the interaction",
-    );
+    let (a, b) = (run(&study.moments(), &within, ErrorTerm::Pooled), run(&shifted, &within, ErrorTerm::Pooled));
+    same(b.f, a.f, 1e-12, "a number added to a subject leaves the interaction");
     let steps = [3.0, -1.0, 4.0, 8.0];
-    let stepped = study
-        .map(|_, occasion, value| value + steps[occasion])
-        .moments();
+    let stepped = study.map(|_, occasion, value| value + steps[occasion]).moments();
     for error in ERRORS {
-        let (a, b) = (
-            run(&study.moments(), &within, error),
-            run(&stepped, &within, error),
-        );
-        same(
-            b.f,
-            a.f,
-            1e-12,
-            "a number added to an occasion leaves the interaction",
-        );
+        let (a, b) = (run(&study.moments(), &within, error), run(&stepped, &within, error));
+        same(b.f, a.f, 1e-12, "a number added to an occasion leaves the interaction");
     }
 }
 
 #[test]
 fn box_m_does_not_change_with_an_invertible_mixture_of_occasions() {
     let mut draw = Draw(7);
-    let mut study = Study {
-        values: Vec::new(),
-        cell: Vec::new(),
-        cells: 3,
-        occasions: 3,
-    };
+    let mut study = Study { values: Vec::new(), cell: Vec::new(), cells: 3, occasions: 3 };
     for subject in 0..60 {
         study.cell.push(subject % 3);
-        study
-            .values
-            .extend((0..3).map(|_| (1024.0 * draw.uniform()).floor()));
+        study.values.extend((0..3).map(|_| (1024.0 * draw.uniform()).floor()));
     }
     let mixed = Study {
-        values: study
-            .values
-            .chunks(3)
-            .flat_map(|y| [y[0] + y[1], y[0] - 3.0 * y[1] + y[2], 16.0 * y[2]])
-            .collect(),
+        values: study.values.chunks(3).flat_map(|y| [y[0] + y[1], y[0] - 3.0 * y[1] + y[2], 16.0 * y[2]]).collect(),
         cell: study.cell.clone(),
         ..study
     };
-    let (a, b) = (
-        box_m(&study.moments()).expect("M"),
-        box_m(&mixed.moments()).expect("M"),
-    );
+    let (a, b) = (box_m(&study.moments()).expect("M"), box_m(&mixed.moments()).expect("M"));
     same(b.m, a.m, 1e-14, "M");
     assert_eq!((a.df1, a.df2), (b.df1, b.df2));
 }
@@ -400,42 +282,22 @@ fn box_m_does_not_change_with_an_invertible_mixture_of_occasions() {
 #[test]
 fn equal_cells_share_out_the_total_sum_of_squares() {
     let mut draw = Draw(8);
-    let mut study = Study {
-        values: Vec::new(),
-        cell: Vec::new(),
-        cells: 6,
-        occasions: 6,
-    };
+    let mut study = Study { values: Vec::new(), cell: Vec::new(), cells: 6, occasions: 6 };
     for subject in 0..24 {
         study.cell.push(subject % 6);
-        study.values.extend(
-            (0..6).map(|occasion| 10.0 * draw.uniform() + f64::from(subject % 6 * occasion)),
-        );
+        study.values.extend((0..6).map(|occasion| 10.0 * draw.uniform() + f64::from(subject % 6 * occasion)));
     }
     let moments = study.moments();
     let effects = crossed_effects(&moments, &[2, 3], &[3, 2], Weighting::Equal).expect("effects");
     assert_eq!(effects.len(), 16);
     let strata = error_strata(&moments, &[3, 2]).expect("strata");
-    assert_eq!(
-        strata.iter().map(|stratum| stratum.df).sum::<f64>(),
-        18.0 * 6.0
-    );
+    assert_eq!(strata.iter().map(|stratum| stratum.df).sum::<f64>(), 18.0 * 6.0);
     assert_eq!(effects.iter().map(|effect| effect.df).sum::<f64>(), 36.0);
-    let found: f64 = effects
-        .iter()
-        .map(|effect| effect.ss)
-        .chain(strata.iter().map(|stratum| stratum.ss))
-        .sum();
+    let found: f64 = effects.iter().map(|effect| effect.ss).chain(strata.iter().map(|stratum| stratum.ss)).sum();
     let total: f64 = study.values.iter().map(|value| value * value).sum();
-    same(
-        found,
-        total,
-        1e-13,
-        "effects, the grand mean's included, and errors make the total",
-    );
+    same(found, total, 1e-13, "effects, the grand mean's included, and errors make the total");
     // With equal cells both weightings are the same hypothesis.
-    let observed =
-        crossed_effects(&moments, &[2, 3], &[3, 2], Weighting::Observed(&[4; 6])).expect("effects");
+    let observed = crossed_effects(&moments, &[2, 3], &[3, 2], Weighting::Observed(&[4; 6])).expect("effects");
     for (a, b) in effects.iter().zip(&observed) {
         same(b.ss, a.ss, 1e-15, "SS by observed weights");
     }
@@ -448,29 +310,12 @@ fn observed_weights_compare_the_plain_means_of_groups() {
     let study = Study::draw(&mut draw, 6, 3);
     let moments = study.moments();
     let sizes = moments.cell_sizes();
-    let parts = [
-        FactorPart::new(3, Part::Whole),
-        FactorPart::new(2, Part::Average),
-    ];
-    let weighted = Hypothesis::new(
-        &parts,
-        &[FactorPart::new(3, Part::Average)],
-        Weighting::Observed(&sizes),
-    );
+    let parts = [FactorPart::new(3, Part::Whole), FactorPart::new(2, Part::Average)];
+    let weighted = Hypothesis::new(&parts, &[FactorPart::new(3, Part::Average)], Weighting::Observed(&sizes));
     let found = run(&moments, &weighted.expect("a hypothesis"), ErrorTerm::Own);
-    let collapsed = Study {
-        values: study.values.clone(),
-        cell: study.cell.iter().map(|cell| cell / 2).collect(),
-        cells: 3,
-        occasions: 3,
-    };
+    let collapsed = Study { values: study.values.clone(), cell: study.cell.iter().map(|cell| cell / 2).collect(), cells: 3, occasions: 3 };
     let one_way = hypothesis(&[(3, Part::Whole)], &[(3, Part::Average)]);
-    same(
-        found.ss,
-        run(&collapsed.moments(), &one_way, ErrorTerm::Own).ss,
-        1e-15,
-        "SS",
-    );
+    same(found.ss, run(&collapsed.moments(), &one_way, ErrorTerm::Own).ss, 1e-15, "SS");
 }
 
 #[test]
@@ -479,49 +324,21 @@ fn a_comparison_held_at_a_level_pools_the_strata_that_it_mixes() {
     let study = Study::draw(&mut draw, 2, 12);
     let moments = study.moments();
     let strata = error_strata(&moments, &[3, 4]).expect("strata");
-    let stratum = |within: [bool; 2]| {
-        strata
-            .iter()
-            .find(|stratum| stratum.within == within)
-            .expect("a stratum")
-    };
+    let stratum = |within: [bool; 2]| strata.iter().find(|stratum| stratum.within == within).expect("a stratum");
     let (first, both) = (stratum([true, false]), stratum([true, true]));
     let mut sum = 0.0;
     for level in 0..4 {
-        let simple = hypothesis(
-            &[(2, Part::Average)],
-            &[(3, Part::Whole), (4, Part::Hold(level))],
-        );
+        let simple = hypothesis(&[(2, Part::Average)], &[(3, Part::Whole), (4, Part::Hold(level))]);
         let test = run(&moments, &simple, ErrorTerm::Pooled);
         let (ss, df) = (first.ss + both.ss, first.df + both.df);
         same(test.ss_error, ss, 1e-14, "SS of both strata");
         assert_eq!(test.error_df, df);
-        let satterthwaite =
-            ss * ss / (first.ss * first.ss / first.df + both.ss * both.ss / both.df);
+        let satterthwaite = ss * ss / (first.ss * first.ss / first.df + both.ss * both.ss / both.df);
         same(test.df2, satterthwaite, 1e-13, "Satterthwaite's df");
-        assert_eq!(
-            test.p(Correction::GreenhouseGeisser),
-            Err(Refusal::SeveralStrata)
-        );
+        assert_eq!(test.p(Correction::GreenhouseGeisser), Err(Refusal::SeveralStrata));
         sum += test.ss;
     }
-    let main = run(
-        &moments,
-        &hypothesis(
-            &[(2, Part::Average)],
-            &[(3, Part::Whole), (4, Part::Average)],
-        ),
-        ErrorTerm::Pooled,
-    );
-    let crossed = run(
-        &moments,
-        &hypothesis(&[(2, Part::Average)], &[(3, Part::Whole), (4, Part::Whole)]),
-        ErrorTerm::Pooled,
-    );
-    same(
-        sum,
-        main.ss + crossed.ss,
-        1e-14,
-        "simple effects add up to main effect and interaction",
-    );
+    let main = run(&moments, &hypothesis(&[(2, Part::Average)], &[(3, Part::Whole), (4, Part::Average)]), ErrorTerm::Pooled);
+    let crossed = run(&moments, &hypothesis(&[(2, Part::Average)], &[(3, Part::Whole), (4, Part::Whole)]), ErrorTerm::Pooled);
+    same(sum, main.ss + crossed.ss, 1e-14, "simple effects add up to main effect and interaction");
 }

@@ -35,22 +35,14 @@ fn the_ledger_can_be_walked_from_its_description_alone() {
 /// Changes the ledger's text, and gives the one defect that reading finds.
 fn tampered(change: impl Fn(&mut Vec<String>)) -> (Option<usize>, DefectKind) {
     let (_home, root) = recorded();
-    let mut lines: Vec<String> = text(&root, "ledger.jsonl")
-        .lines()
-        .map(str::to_owned)
-        .collect();
+    let mut lines: Vec<String> = text(&root, "ledger.jsonl").lines().map(str::to_owned).collect();
     change(&mut lines);
     fs::write(root.join("ledger.jsonl"), lines.join("\n") + "\n").unwrap();
     let defects = state(&root).defects;
     assert_eq!(defects.len(), 1, "{defects:?}");
-    let error = Study::open(&FaultWorld::sound(), &root)
-        .map(drop)
-        .unwrap_err();
+    let error = Study::open(&FaultWorld::sound(), &root).map(drop).unwrap_err();
     assert_eq!(error.exit_status(), 1);
-    assert!(
-        error.to_string().contains(&defects[0].to_string()),
-        "{error}"
-    );
+    assert!(error.to_string().contains(&defects[0].to_string()), "{error}");
     let Defect { place, line, kind } = defects[0].clone();
     assert_eq!(place, "ledger.jsonl");
     (line, kind)
@@ -59,22 +51,10 @@ fn tampered(change: impl Fn(&mut Vec<String>)) -> (Option<usize>, DefectKind) {
 #[test]
 fn lines_of_the_ledger_swapped_dropped_or_doubled_are_found() {
     let out_of_sequence = |expected, found| DefectKind::OutOfSequence { expected, found };
-    assert_eq!(
-        tampered(|lines| lines.swap(1, 2)),
-        (Some(2), out_of_sequence(2, 3))
-    );
-    assert_eq!(
-        tampered(|lines| drop(lines.remove(1))),
-        (Some(2), out_of_sequence(2, 3))
-    );
-    assert_eq!(
-        tampered(|lines| drop(lines.remove(0))),
-        (Some(1), out_of_sequence(1, 2))
-    );
-    assert_eq!(
-        tampered(|lines| lines.insert(2, lines[1].clone())),
-        (Some(3), out_of_sequence(3, 2))
-    );
+    assert_eq!(tampered(|lines| lines.swap(1, 2)), (Some(2), out_of_sequence(2, 3)));
+    assert_eq!(tampered(|lines| drop(lines.remove(1))), (Some(2), out_of_sequence(2, 3)));
+    assert_eq!(tampered(|lines| drop(lines.remove(0))), (Some(1), out_of_sequence(1, 2)));
+    assert_eq!(tampered(|lines| lines.insert(2, lines[1].clone())), (Some(3), out_of_sequence(3, 2)));
 }
 
 #[test]
@@ -92,31 +72,14 @@ fn a_changed_byte_of_the_ledger_is_found_where_it_stands() {
         kind
     };
     // A space after the first colon; `1` as `1e0`.
-    let (space, number) = (
-        retyped("{\"hash\":", "{\"hash\": "),
-        retyped("\"plan\":1", "\"plan\":1e0"),
-    );
-    assert_eq!(
-        space,
-        DefectKind::Form(CanonError::NotCanonical { offset: start + 8 })
-    );
-    let DefectKind::Form(CanonError::NotCanonical { offset }) = number else {
-        panic!("{number:?}")
-    };
+    let (space, number) = (retyped("{\"hash\":", "{\"hash\": "), retyped("\"plan\":1", "\"plan\":1e0"));
+    assert_eq!(space, DefectKind::Form(CanonError::NotCanonical { offset: start + 8 }));
+    let DefectKind::Form(CanonError::NotCanonical { offset }) = number else { panic!("{number:?}") };
     assert!(offset > start + 8);
-    assert!(matches!(
-        retyped("tester", "taster"),
-        DefectKind::ChainBroken { .. }
-    ));
-    assert!(matches!(
-        retyped("09:00:00Z", "09:00:01Z"),
-        DefectKind::ChainBroken { .. }
-    ));
+    assert!(matches!(retyped("tester", "taster"), DefectKind::ChainBroken { .. }));
+    assert!(matches!(retyped("09:00:00Z", "09:00:01Z"), DefectKind::ChainBroken { .. }));
     let extra = retyped("\"who\":\"tester\"", "\"who\":\"tester\",\"zeal\":1");
-    assert!(
-        matches!(&extra, DefectKind::Form(CanonError::WrongShape { message, .. }) if message.contains("keys")),
-        "{extra:?}"
-    );
+    assert!(matches!(&extra, DefectKind::Form(CanonError::WrongShape { message, .. }) if message.contains("keys")), "{extra:?}");
     assert!(matches!(
         retyped("\"plan\":1", "\"plan\":1,\"plan\":1"),
         DefectKind::Form(CanonError::KeyTwice { key, .. }) if key == "plan"
@@ -150,18 +113,10 @@ fn a_run_whose_last_event_was_cut_off_is_unfinished() {
     let kept: Vec<&str> = ledger.split_inclusive('\n').take(2).collect();
     fs::write(root.join("ledger.jsonl"), kept.concat()).unwrap();
     let found = sound(&root);
-    assert!(
-        found
-            .unfinished
-            .contains(&Unfinished::Leftover("records/001".into()))
-    );
+    assert!(found.unfinished.contains(&Unfinished::Leftover("records/001".into())));
     // Without its `unblinded` too, no killed command can have left the record.
     fs::write(root.join("ledger.jsonl"), kept[0]).unwrap();
-    let places: Vec<String> = state(&root)
-        .defects
-        .into_iter()
-        .map(|defect| defect.place)
-        .collect();
+    let places: Vec<String> = state(&root).defects.into_iter().map(|defect| defect.place).collect();
     assert_eq!(places.len(), 3, "{places:?}");
     assert_eq!(places[0], "records/001");
 }
@@ -180,17 +135,10 @@ fn every_changed_added_or_missing_file_is_named() {
         let mut defects = state.defects.clone();
         defects.extend(state.verify_data(&world, &root).unwrap());
         defects.extend(state.verify_record(&world, &root, 1).unwrap());
-        assert!(
-            defects.iter().any(|defect| defect.place == place),
-            "{place}: {defects:?}"
-        );
+        assert!(defects.iter().any(|defect| defect.place == place), "{place}: {defects:?}");
 
         fs::remove_file(root.join(&place)).unwrap();
-        let missing = Defect {
-            place: place.clone(),
-            line: None,
-            kind: DefectKind::Missing,
-        };
+        let missing = Defect { place: place.clone(), line: None, kind: DefectKind::Missing };
         let found = StudyState::read(&world, &root).unwrap().defects;
         assert!(found.contains(&missing), "{place}: {found:?}");
     };
@@ -221,27 +169,13 @@ fn every_changed_added_or_missing_file_is_named() {
         let (_home, root) = recorded();
         fs::create_dir_all(root.join(place).parent().unwrap()).unwrap();
         fs::write(root.join(place), "x").unwrap();
-        let unlisted = Defect {
-            place: place.into(),
-            line: None,
-            kind: DefectKind::Unlisted,
-        };
+        let unlisted = Defect { place: place.into(), line: None, kind: DefectKind::Unlisted };
         assert_eq!(state(&root).defects, [unlisted]);
     }
     let (_home, root) = recorded();
     fs::write(root.join(".lock"), "x").unwrap();
-    let kind = DefectKind::SizeDiffers {
-        expected: 0,
-        found: 1,
-    };
-    assert_eq!(
-        state(&root).defects,
-        [Defect {
-            place: ".lock".into(),
-            line: None,
-            kind
-        }]
-    );
+    let kind = DefectKind::SizeDiffers { expected: 0, found: 1 };
+    assert_eq!(state(&root).defects, [Defect { place: ".lock".into(), line: None, kind }]);
 }
 
 #[cfg(unix)]
@@ -265,11 +199,7 @@ fn links_are_refused_and_not_followed() {
         fs::rename(&inside, &outside).unwrap();
         std::os::unix::fs::symlink(&outside, &inside).unwrap();
         let defects = state(&root).defects;
-        let link = Defect {
-            place: place.into(),
-            line: None,
-            kind: DefectKind::IsLink,
-        };
+        let link = Defect { place: place.into(), line: None, kind: DefectKind::IsLink };
         assert!(defects.contains(&link), "{place}: {defects:?}");
         let state = state(&root);
         if ["data", "records"].contains(&place) {
@@ -279,10 +209,7 @@ fn links_are_refused_and_not_followed() {
             assert!(later.contains(&link), "{place}: {later:?}");
         }
         let before = outside.metadata().unwrap().modified().unwrap();
-        assert!(matches!(
-            Study::open(&FaultWorld::sound(), &root),
-            Err(StudyError::Broken(_))
-        ));
+        assert!(matches!(Study::open(&FaultWorld::sound(), &root), Err(StudyError::Broken(_))));
         assert_eq!(outside.metadata().unwrap().modified().unwrap(), before);
     }
 }
@@ -294,51 +221,21 @@ fn decisions_are_bound_to_each_other_and_to_what_they_were_taken_on() {
     let mut log = DecisionLog::new(root(&data));
     for (step, p) in [("omnibus", 0.0074), ("pieces", 0.25), ("sizes", 1e-300)] {
         let evidence = BTreeMap::from([("p", p)]);
-        log.push(
-            step,
-            &BTreeMap::from([("level", 0.05)]),
-            &evidence,
-            "significant",
-        )
-        .unwrap();
+        log.push(step, &BTreeMap::from([("level", 0.05)]), &evidence, "significant").unwrap();
     }
     let nan = log.push("bad", &(), &BTreeMap::from([("p", f64::NAN)]), "undecided");
     assert_eq!(nan, Err(CanonError::NotFinite));
     let (entries, head) = read_decisions(log.bytes(), root(&data), "decisions.jsonl").unwrap();
-    assert_eq!(
-        (entries.len(), head, entries[2].hash),
-        (3, log.head(), head)
-    );
+    assert_eq!((entries.len(), head, entries[2].hash), (3, log.head(), head));
 
     let defect = |bytes: &[u8], data: &Digest| *read_decisions(bytes, root(data), "d").unwrap_err();
     let other = defect(log.bytes(), &sha256(b"other data"));
-    assert!(matches!(
-        other,
-        Defect {
-            line: Some(1),
-            kind: DefectKind::ChainBroken { .. },
-            ..
-        }
-    ));
+    assert!(matches!(other, Defect { line: Some(1), kind: DefectKind::ChainBroken { .. }, .. }));
     let written = String::from_utf8(log.bytes().to_vec()).unwrap();
     let moved = written.replace("0.25", "0.24");
-    assert!(matches!(
-        defect(moved.as_bytes(), &data),
-        Defect {
-            line: Some(2),
-            kind: DefectKind::ChainBroken { .. },
-            ..
-        }
-    ));
+    assert!(matches!(defect(moved.as_bytes(), &data), Defect { line: Some(2), kind: DefectKind::ChainBroken { .. }, .. }));
     let cut = defect(written.trim_end().as_bytes(), &data);
-    assert!(matches!(
-        cut,
-        Defect {
-            line: Some(3),
-            kind: DefectKind::Form(CanonError::LineFeed { .. }),
-            ..
-        }
-    ));
+    assert!(matches!(cut, Defect { line: Some(3), kind: DefectKind::Form(CanonError::LineFeed { .. }), .. }));
 }
 
 /// Every byte of every file, one at a time: changed, and each file with its last byte gone or one more.
@@ -366,11 +263,7 @@ fn no_byte_of_the_folder_can_change_unseen() {
         }
         for changed in changes {
             fs::write(root.join(&place), &changed).unwrap();
-            assert!(
-                found(&place),
-                "{place}: {:?}",
-                String::from_utf8_lossy(&changed)
-            );
+            assert!(found(&place), "{place}: {:?}", String::from_utf8_lossy(&changed));
         }
         fs::write(root.join(&place), &original).unwrap();
     }
@@ -380,11 +273,7 @@ fn no_byte_of_the_folder_can_change_unseen() {
 fn every_file(root: &Path, folder: &str) -> Vec<String> {
     let mut all = Vec::new();
     for name in names(&root.join(folder)) {
-        let place = if folder.is_empty() {
-            name
-        } else {
-            format!("{folder}/{name}")
-        };
+        let place = if folder.is_empty() { name } else { format!("{folder}/{name}") };
         if root.join(&place).is_dir() {
             all.extend(every_file(root, &place));
         } else {

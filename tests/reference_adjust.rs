@@ -35,10 +35,7 @@ fn procedure(name: &str) -> Procedure {
 
 fn adjusted(procedure: Procedure, p: &[f64]) -> Vec<f64> {
     let tested: Vec<Option<f64>> = p.iter().copied().map(Some).collect();
-    adjust(procedure, &tested)
-        .into_iter()
-        .map(|p| p.expect("a tested member"))
-        .collect()
+    adjust(procedure, &tested).into_iter().map(|p| p.expect("a tested member")).collect()
 }
 
 /// `reference/adjusted.csv`: definitions in 50-digit arithmetic, equal to R's
@@ -47,12 +44,9 @@ fn adjusted(procedure: Procedure, p: &[f64]) -> Vec<f64> {
 #[test]
 fn adjusted_values_agree_with_the_reference() {
     let text = include_str!("reference/adjusted.csv");
-    let mut reader = csv::ReaderBuilder::new()
-        .comment(Some(b'#'))
-        .from_reader(text.as_bytes());
+    let mut reader = csv::ReaderBuilder::new().comment(Some(b'#')).from_reader(text.as_bytes());
     let rows: Vec<csv::StringRecord> = reader.records().map(|r| r.expect("a row")).collect();
-    let families: Vec<&[csv::StringRecord]> =
-        rows.chunk_by(|a, b| a[0] == b[0] && a[1] == b[1]).collect();
+    let families: Vec<&[csv::StringRecord]> = rows.chunk_by(|a, b| a[0] == b[0] && a[1] == b[1]).collect();
     assert_eq!(families.len(), 18);
     for family in families {
         let number = |row: &csv::StringRecord, i: usize| row[i].parse::<f64>().expect("a number");
@@ -68,16 +62,8 @@ fn adjusted_values_agree_with_the_reference() {
 /// procedure rejects four hypotheses and Bonferroni's three.
 #[test]
 fn the_published_example_rejects_as_published() {
-    let p = [
-        0.0001, 0.0004, 0.0019, 0.0095, 0.0201, 0.0278, 0.0298, 0.0344, 0.0459, 0.3240, 0.4262,
-        0.5719, 0.6528, 0.7590, 1.0,
-    ];
-    let rejected = |procedure| {
-        adjusted(procedure, &p)
-            .iter()
-            .filter(|&&p| p <= 0.05)
-            .count()
-    };
+    let p = [0.0001, 0.0004, 0.0019, 0.0095, 0.0201, 0.0278, 0.0298, 0.0344, 0.0459, 0.3240, 0.4262, 0.5719, 0.6528, 0.7590, 1.0];
+    let rejected = |procedure| adjusted(procedure, &p).iter().filter(|&&p| p <= 0.05).count();
     assert_eq!(rejected(Procedure::BenjaminiHochberg), 4);
     assert_eq!(rejected(Procedure::Bonferroni), 3);
 }
@@ -109,11 +95,7 @@ fn a_member_without_a_p_counts_as_one_and_has_no_value() {
         let got = adjust(procedure, &p);
         let full = adjusted(procedure, &as_one);
         for (i, value) in got.iter().enumerate() {
-            let expected = if i == 1 || i == 3 {
-                None
-            } else {
-                Some(full[i])
-            };
+            let expected = if i == 1 || i == 3 { None } else { Some(full[i]) };
             assert_eq!(*value, expected, "{procedure:?}, member {i}");
         }
     }
@@ -154,27 +136,19 @@ fn bonferroni_test(sorted: &[f64]) -> f64 {
 }
 
 fn sidak_test(sorted: &[f64]) -> f64 {
-    let all_above = sorted
-        .iter()
-        .fold(1.0, |product, _| product * (1.0 - sorted[0]));
+    let all_above = sorted.iter().fold(1.0, |product, _| product * (1.0 - sorted[0]));
     1.0 - all_above
 }
 
 fn simes_test(sorted: &[f64]) -> f64 {
     let size = sorted.len() as f64;
     let ranked = sorted.iter().enumerate();
-    ranked
-        .map(|(k, p)| size * p / (k as f64 + 1.0))
-        .fold(1.0, f64::min)
+    ranked.map(|(k, p)| size * p / (k as f64 + 1.0)).fold(1.0, f64::min)
 }
 
 fn family() -> impl Strategy<Value = Vec<f64>> {
     // Coarse values make ties, fine ones make near misses.
-    let p = prop_oneof![
-        0.0..1.0,
-        (0_u32..=40).prop_map(|k| f64::from(k) / 40.0),
-        0.0..0.05
-    ];
+    let p = prop_oneof![0.0..1.0, (0_u32..=40).prop_map(|k| f64::from(k) / 40.0), 0.0..0.05];
     prop::collection::vec(p, 1..9)
 }
 

@@ -27,10 +27,7 @@ impl Found {
         self.put(format!("{name}/df2"), test.df2);
         self.put(format!("{name}/F"), test.f);
         self.put(format!("{name}/p"), test.p(Correction::None).expect("p"));
-        self.put(
-            format!("{name}/eta2_partial"),
-            test.ss / (test.ss + test.ss_error),
-        );
+        self.put(format!("{name}/eta2_partial"), test.ss / (test.ss + test.ss_error));
     }
 
     fn estimate(&mut self, name: &str, test: &UnivariateTest) {
@@ -40,32 +37,20 @@ impl Found {
         self.put(format!("{name}/df"), test.df2);
         self.put(format!("{name}/t"), estimate.t);
         self.put(format!("{name}/p"), test.p(Correction::None).expect("p"));
-        assert!(
-            close(estimate.t * estimate.t, test.f, 1e-14),
-            "{name}: t squared is F"
-        );
+        assert!(close(estimate.t * estimate.t, test.f, 1e-14), "{name}: t squared is F");
     }
 
     fn corrected(&mut self, name: &str, test: &UnivariateTest, corrections: &[(&str, Correction)]) {
         for (label, correction) in corrections {
-            self.put(
-                format!("{name}/p_{label}"),
-                test.p(*correction).expect("a corrected p"),
-            );
+            self.put(format!("{name}/p_{label}"), test.p(*correction).expect("a corrected p"));
         }
     }
 
     fn sphericity(&mut self, name: &str, epsilons: &Epsilons, mauchly: &Mauchly) {
         self.put(format!("{name}/eps_GG"), epsilons.greenhouse_geisser);
         self.put(format!("{name}/eps_LB"), epsilons.lower_bound);
-        self.put(
-            format!("{name}/eps_HF1976"),
-            epsilons.huynh_feldt_1976.clone().expect("defined"),
-        );
-        self.put(
-            format!("{name}/eps_HF_Lecoutre"),
-            epsilons.huynh_feldt.clone().expect("defined"),
-        );
+        self.put(format!("{name}/eps_HF1976"), epsilons.huynh_feldt_1976.clone().expect("defined"));
+        self.put(format!("{name}/eps_HF_Lecoutre"), epsilons.huynh_feldt.clone().expect("defined"));
         self.put(format!("{name}/W"), mauchly.w);
         self.put(format!("{name}/chi2"), mauchly.chi_squared);
         self.put(format!("{name}/df"), mauchly.df);
@@ -107,26 +92,11 @@ impl Found {
                 Some(&found) if !close(found, wanted, tolerance) => {
                     faults.push(format!("{name}: {found:e}, reference {wanted:e}"));
                 }
-                Some(&found) => {
-                    worst = worst.max(if wanted == 0.0 {
-                        0.0
-                    } else {
-                        ((found - wanted) / wanted).abs()
-                    })
-                }
+                Some(&found) => worst = worst.max(if wanted == 0.0 { 0.0 } else { ((found - wanted) / wanted).abs() }),
             }
         }
-        println!(
-            "{file}: {} values, largest relative difference {worst:.1e}",
-            rows.len()
-        );
-        assert!(
-            faults.is_empty(),
-            "{} of {}:\n{}",
-            faults.len(),
-            rows.len(),
-            faults.join("\n")
-        );
+        println!("{file}: {} values, largest relative difference {worst:.1e}", rows.len());
+        assert!(faults.is_empty(), "{} of {}:\n{}", faults.len(), rows.len(), faults.join("\n"));
     }
 }
 
@@ -148,31 +118,16 @@ struct Data {
 impl Data {
     /// Reads a wide table whose first columns are the subject and the between factors.
     fn read(file: &str, factors: &[&[&str]]) -> Data {
-        let mut data = Data {
-            values: Vec::new(),
-            occasions: 0,
-            cell: Vec::new(),
-            cells: 1,
-        };
-        for row in csv::Reader::from_path(folder().join(file))
-            .expect("the data")
-            .into_records()
-        {
+        let mut data = Data { values: Vec::new(), occasions: 0, cell: Vec::new(), cells: 1 };
+        for row in csv::Reader::from_path(folder().join(file)).expect("the data").into_records() {
             let row = row.expect("a row");
             let mut cell = 0;
             for (column, levels) in factors.iter().enumerate() {
-                let level = levels
-                    .iter()
-                    .position(|level| *level == &row[column + 1])
-                    .expect("a known level");
+                let level = levels.iter().position(|level| *level == &row[column + 1]).expect("a known level");
                 cell = cell * levels.len() + level;
             }
             data.cell.push(cell as u32);
-            data.values.extend(
-                row.iter()
-                    .skip(factors.len() + 1)
-                    .map(|value| value.parse::<f64>().expect("a value")),
-            );
+            data.values.extend(row.iter().skip(factors.len() + 1).map(|value| value.parse::<f64>().expect("a value")));
             data.occasions = row.len() - factors.len() - 1;
         }
         data.cells = factors.iter().map(|levels| levels.len()).product();
@@ -185,12 +140,7 @@ impl Data {
 }
 
 fn hypothesis(between: &[(usize, Part)], within: &[(usize, Part)]) -> Hypothesis {
-    let parts = |parts: &[(usize, Part)]| {
-        parts
-            .iter()
-            .map(|(levels, part)| FactorPart::new(*levels, part.clone()))
-            .collect::<Vec<_>>()
-    };
+    let parts = |parts: &[(usize, Part)]| parts.iter().map(|(levels, part)| FactorPart::new(*levels, part.clone())).collect::<Vec<_>>();
     Hypothesis::new(&parts(between), &parts(within), Weighting::Equal).expect("a hypothesis")
 }
 
@@ -213,33 +163,19 @@ fn two_groups_by_four_occasions() {
     let data = Data::read("potthoff_roy_1964.csv", &[&GROUPS]);
     let moments = data.moments();
     let mut found = Found::default();
-    let run = |hypothesis: &Hypothesis, error| {
-        test_univariate(&moments, hypothesis, error).expect("a test")
-    };
+    let run = |hypothesis: &Hypothesis, error| test_univariate(&moments, hypothesis, error).expect("a test");
 
     for (cell, group) in GROUPS.iter().enumerate() {
-        found.put(
-            format!("cell/{group}/n"),
-            moments.cells()[cell].subjects as f64,
-        );
+        found.put(format!("cell/{group}/n"), moments.cells()[cell].subjects as f64);
         for (occasion, age) in AGES.iter().enumerate() {
-            found.put(
-                format!("cell/{group}/{age}/mean"),
-                moments.mean(cell, occasion),
-            );
-            let sd = moments
-                .standard_deviation(cell, occasion)
-                .expect("two subjects");
+            found.put(format!("cell/{group}/{age}/mean"), moments.mean(cell, occasion));
+            let sd = moments.standard_deviation(cell, occasion).expect("two subjects");
             found.put(format!("cell/{group}/{age}/sd"), sd);
         }
     }
 
     let effects = crossed_effects(&moments, &[2], &[4], Weighting::Equal).expect("effects");
-    let error: f64 = error_strata(&moments, &[4])
-        .expect("strata")
-        .iter()
-        .map(|stratum| stratum.ss)
-        .sum();
+    let error: f64 = error_strata(&moments, &[4]).expect("strata").iter().map(|stratum| stratum.ss).sum();
     let names = ["intercept", "group", "time", "group:time"];
     let measured = error + effects[1].ss + effects[3].ss;
     for (effect, name) in effects.iter().zip(names) {
@@ -256,48 +192,23 @@ fn two_groups_by_four_occasions() {
             found.corrected(&format!("omnibus/{name}"), test, &corrections);
         }
         // Olejnik & Algina 2003, equations as in the reference.
-        found.put(
-            format!("effect/{name}/eta2_generalized_group_manipulated"),
-            effect.ss / (effect.ss + error),
-        );
-        let base = if name == "time" {
-            effect.ss + measured
-        } else {
-            measured
-        };
-        found.put(
-            format!("effect/{name}/eta2_generalized_group_measured"),
-            effect.ss / base,
-        );
+        found.put(format!("effect/{name}/eta2_generalized_group_manipulated"), effect.ss / (effect.ss + error));
+        let base = if name == "time" { effect.ss + measured } else { measured };
+        found.put(format!("effect/{name}/eta2_generalized_group_measured"), effect.ss / base);
     }
     let sizes = moments.cell_sizes();
-    let weighted = Hypothesis::new(
-        &[FactorPart::new(2, Part::Average)],
-        &[FactorPart::new(4, Part::Whole)],
-        Weighting::Observed(&sizes),
-    );
-    found.test(
-        "omnibus/time_weighted_typeI_II",
-        &run(&weighted.expect("a hypothesis"), ErrorTerm::Pooled),
-    );
+    let weighted = Hypothesis::new(&[FactorPart::new(2, Part::Average)], &[FactorPart::new(4, Part::Whole)], Weighting::Observed(&sizes));
+    found.test("omnibus/time_weighted_typeI_II", &run(&weighted.expect("a hypothesis"), ErrorTerm::Pooled));
 
     let time = hypothesis(&[(2, Part::Average)], &[(4, Part::Whole)]);
     let of_time = run(&time, ErrorTerm::OwnOccasions);
     let sphericity = mauchly(&moments, time.within(), &[true, true]).expect("W");
-    found.sphericity(
-        "sphericity",
-        of_time.epsilons.as_ref().expect("epsilons"),
-        &sphericity,
-    );
+    found.sphericity("sphericity", of_time.epsilons.as_ref().expect("epsilons"), &sphericity);
 
     found.box_m("boxM", &box_m(&moments).expect("M"));
     for (occasion, age) in AGES.iter().enumerate() {
-        for (name, centre) in [
-            ("levene_mean", Centre::Mean),
-            ("brown_forsythe", Centre::Median),
-        ] {
-            let test = equal_spread(&data.values, 4, &data.cell, 2, None, occasion, centre)
-                .expect("a test");
+        for (name, centre) in [("levene_mean", Centre::Mean), ("brown_forsythe", Centre::Median)] {
+            let test = equal_spread(&data.values, 4, &data.cell, 2, None, occasion, centre).expect("a test");
             let name = format!("homogeneity/{age}/{name}");
             found.put(format!("{name}/df1"), test.df1);
             found.put(format!("{name}/df2"), test.df2);
@@ -319,57 +230,30 @@ fn two_groups_by_four_occasions() {
             found.put(format!("{name}/SS"), own.ss);
             found.put(format!("{name}/SS_error"), own.ss_error);
             found.put(format!("{name}/F"), own.f);
-            found.put(
-                format!("{name}/eta2_partial"),
-                own.ss / (own.ss + own.ss_error),
-            );
+            found.put(format!("{name}/eta2_partial"), own.ss / (own.ss + own.ss_error));
             let mut both = [0.0; 4];
             (both[first], both[second]) = (0.5, 0.5);
             let mean = hypothesis(&[groups()], &[(4, weights(&both))]);
-            found.put(
-                format!("reduced/{label}/group/F"),
-                run(&mean, ErrorTerm::Own).f,
-            );
+            found.put(format!("reduced/{label}/group/F"), run(&mean, ErrorTerm::Own).f);
             let change = hypothesis(&[(2, Part::Average)], &[(4, change)]);
-            found.put(
-                format!("reduced/{label}/time/F"),
-                run(&change, ErrorTerm::Own).f,
-            );
-            found.estimate(
-                &format!("contrast/{label}/pooled"),
-                &run(&piece, ErrorTerm::Pooled),
-            );
-            found.estimate(
-                &format!("contrast/{label}/own_all_groups"),
-                &run(&piece, ErrorTerm::OwnOccasions),
-            );
+            found.put(format!("reduced/{label}/time/F"), run(&change, ErrorTerm::Own).f);
+            found.estimate(&format!("contrast/{label}/pooled"), &run(&piece, ErrorTerm::Pooled));
+            found.estimate(&format!("contrast/{label}/own_all_groups"), &run(&piece, ErrorTerm::OwnOccasions));
         }
     }
 
     for (occasion, age) in AGES.iter().enumerate() {
         let at = hypothesis(&[(2, Part::Whole)], &[(4, Part::Hold(occasion))]);
-        found.test(
-            &format!("simple/group@{age}/separate"),
-            &run(&at, ErrorTerm::Own),
-        );
+        found.test(&format!("simple/group@{age}/separate"), &run(&at, ErrorTerm::Own));
         let pooled = run(&at, ErrorTerm::Pooled);
         let name = format!("simple/group@{age}/pooled");
         assert_eq!(pooled.error_df, 100.0);
         found.put(format!("{name}/MS_error"), pooled.ms_error);
         found.put(format!("{name}/df2_satterthwaite"), pooled.df2);
         found.put(format!("{name}/F"), pooled.f);
-        found.put(
-            format!("{name}/p_satterthwaite"),
-            pooled.p(Correction::None).expect("p"),
-        );
-        let naive = UnivariateTest {
-            df2: pooled.error_df,
-            ..pooled
-        };
-        found.put(
-            format!("{name}/p_naive_df100"),
-            naive.p(Correction::None).expect("p"),
-        );
+        found.put(format!("{name}/p_satterthwaite"), pooled.p(Correction::None).expect("p"));
+        let naive = UnivariateTest { df2: pooled.error_df, ..pooled };
+        found.put(format!("{name}/p_naive_df100"), naive.p(Correction::None).expect("p"));
     }
     for (cell, group) in GROUPS.iter().enumerate() {
         let within = hypothesis(&[(2, Part::Hold(cell))], &[(4, Part::Whole)]);
@@ -378,14 +262,7 @@ fn two_groups_by_four_occasions() {
         found.test(&name, &own);
         let sphericity = mauchly(&moments, within.within(), within.kept()).expect("W");
         found.sphericity(&name, own.epsilons.as_ref().expect("epsilons"), &sphericity);
-        found.corrected(
-            &name,
-            &own,
-            &[
-                ("GG", Correction::GreenhouseGeisser),
-                ("HF", Correction::HuynhFeldt),
-            ],
-        );
+        found.corrected(&name, &own, &[("GG", Correction::GreenhouseGeisser), ("HF", Correction::HuynhFeldt)]);
         let pooled = run(&within, ErrorTerm::Pooled);
         let name = format!("simple/time@{group}/pooled");
         found.put(format!("{name}/F"), pooled.f);
@@ -394,20 +271,9 @@ fn two_groups_by_four_occasions() {
         found.corrected(&name, &pooled, &[("GG", Correction::GreenhouseGeisser)]);
     }
     for (degree, name) in ["linear", "quadratic", "cubic"].iter().enumerate() {
-        let trend = || {
-            (
-                4,
-                Part::Trend {
-                    spacing: vec![8.0, 10.0, 12.0, 14.0],
-                    degree: degree + 1,
-                },
-            )
-        };
+        let trend = || (4, Part::Trend { spacing: vec![8.0, 10.0, 12.0, 14.0], degree: degree + 1 });
         let differs = hypothesis(&[(2, Part::Whole)], &[trend()]);
-        found.test(
-            &format!("trend/{name}/group:time"),
-            &run(&differs, ErrorTerm::Own),
-        );
+        found.test(&format!("trend/{name}/group:time"), &run(&differs, ErrorTerm::Own));
         let common = hypothesis(&[(2, Part::Average)], &[trend()]);
         found.test(&format!("trend/{name}/time"), &run(&common, ErrorTerm::Own));
     }
@@ -420,72 +286,35 @@ fn two_groups_by_four_occasions() {
             cell == 1 || boys <= 11
         })
         .collect();
-    let ends: Vec<f64> = data
-        .values
-        .chunks(4)
-        .flat_map(|row| [row[0], row[3]])
-        .collect();
+    let ends: Vec<f64> = data.values.chunks(4).flat_map(|row| [row[0], row[3]]).collect();
     let subset = Moments::new(&ends, 2, &data.cell, 2, Some(&kept)).expect("moments");
-    found.box_m(
-        "boxM_subset(M01-M11,F01-F11;ages 8,14)",
-        &box_m(&subset).expect("M"),
-    );
+    found.box_m("boxM_subset(M01-M11,F01-F11;ages 8,14)", &box_m(&subset).expect("M"));
 
     found.hold_to("potthoff_roy_1964.json");
 }
 
 #[test]
 fn two_between_and_two_within_factors_unbalanced() {
-    let data = Data::read(
-        "obrien_kaiser_1985.csv",
-        &[&["control", "A", "B"], &["F", "M"]],
-    );
+    let data = Data::read("obrien_kaiser_1985.csv", &[&["control", "A", "B"], &["F", "M"]]);
     let moments = data.moments();
     let mut found = Found::default();
     let effects = crossed_effects(&moments, &[3, 2], &[3, 5], Weighting::Equal).expect("effects");
-    let error: f64 = error_strata(&moments, &[3, 5])
-        .expect("strata")
-        .iter()
-        .map(|stratum| stratum.ss)
-        .sum();
+    let error: f64 = error_strata(&moments, &[3, 5]).expect("strata").iter().map(|stratum| stratum.ss).sum();
     for effect in &effects {
-        let flags = [
-            effect.between[0],
-            effect.between[1],
-            effect.within[0],
-            effect.within[1],
-        ];
+        let flags = [effect.between[0], effect.between[1], effect.within[0], effect.within[1]];
         let factors = ["treatment", "gender", "phase", "hour"];
-        let label: Vec<&str> = factors
-            .iter()
-            .zip(flags)
-            .filter(|(_, flag)| *flag)
-            .map(|(factor, _)| *factor)
-            .collect();
-        let label = if label.is_empty() {
-            "intercept".to_owned()
-        } else {
-            label.join(":")
-        };
+        let label: Vec<&str> = factors.iter().zip(flags).filter(|(_, flag)| *flag).map(|(factor, _)| *factor).collect();
+        let label = if label.is_empty() { "intercept".to_owned() } else { label.join(":") };
         let test = effect.test.as_ref().expect("a test");
         found.test(&format!("omnibus/{label}"), test);
-        found.put(
-            format!("effect/{label}/eta2_generalized_group_manipulated"),
-            effect.ss / (effect.ss + error),
-        );
+        found.put(format!("effect/{label}/eta2_generalized_group_manipulated"), effect.ss / (effect.ss + error));
         if effect.within.contains(&true) {
-            let corrections = [
-                ("GG", Correction::GreenhouseGeisser),
-                ("HF1976", Correction::HuynhFeldt1976),
-                ("HF_Lecoutre", Correction::HuynhFeldt),
-            ];
+            let corrections =
+                [("GG", Correction::GreenhouseGeisser), ("HF1976", Correction::HuynhFeldt1976), ("HF_Lecoutre", Correction::HuynhFeldt)];
             found.corrected(&format!("omnibus/{label}"), test, &corrections);
             if !effect.between.contains(&true) {
                 let part = |flag| if flag { Part::Whole } else { Part::Average };
-                let within = hypothesis(
-                    &[(3, Part::Average), (2, Part::Average)],
-                    &[(3, part(flags[2])), (5, part(flags[3]))],
-                );
+                let within = hypothesis(&[(3, Part::Average), (2, Part::Average)], &[(3, part(flags[2])), (5, part(flags[3]))]);
                 let sphericity = mauchly(&moments, within.within(), &[true; 6]).expect("W");
                 let epsilons = test.epsilons.as_ref().expect("epsilons");
                 found.sphericity(&format!("sphericity/{label}"), epsilons, &sphericity);
@@ -496,15 +325,5 @@ fn two_between_and_two_within_factors_unbalanced() {
 
     // Cells of two subjects and fifteen occasions: no covariance matrix of a cell can be inverted.
     let refused = box_m(&moments).expect_err("singular");
-    assert!(
-        matches!(
-            refused,
-            Refusal::SingularCell {
-                cell: 0,
-                subjects: 2,
-                occasions: 15
-            }
-        ),
-        "{refused}"
-    );
+    assert!(matches!(refused, Refusal::SingularCell { cell: 0, subjects: 2, occasions: 15 }), "{refused}");
 }

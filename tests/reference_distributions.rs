@@ -9,9 +9,7 @@ mod tolerance;
 
 use std::collections::BTreeMap;
 
-use aforesaid::stats::dist::{
-    DistributionError, beta, chi_squared, fisher, noncentral_f, noncentral_t, normal, student,
-};
+use aforesaid::stats::dist::{DistributionError, beta, chi_squared, fisher, noncentral_f, noncentral_t, normal, student};
 use proptest::prelude::*;
 use tolerance::relative_error;
 
@@ -22,22 +20,13 @@ struct Case {
 }
 
 fn cases(text: &str) -> Vec<Case> {
-    let mut reader = csv::ReaderBuilder::new()
-        .comment(Some(b'#'))
-        .from_reader(text.as_bytes());
+    let mut reader = csv::ReaderBuilder::new().comment(Some(b'#')).from_reader(text.as_bytes());
     reader
         .records()
         .map(|row| {
             let row = row.expect("a readable row");
-            let arguments = (1..5)
-                .filter(|&i| !row[i].is_empty())
-                .map(|i| row[i].parse().expect("an argument"))
-                .collect();
-            Case {
-                function: row[0].to_string(),
-                arguments,
-                value: row[5].parse().expect("a value"),
-            }
+            let arguments = (1..5).filter(|&i| !row[i].is_empty()).map(|i| row[i].parse().expect("an argument")).collect();
+            Case { function: row[0].to_string(), arguments, value: row[5].parse().expect("a value") }
         })
         .collect()
 }
@@ -89,12 +78,7 @@ fn check_file(text: &str) {
     for case in cases {
         let got = compute(&case);
         if case.value.abs() < 1e-300 && case.value != 0.0 || case.value == 0.0 && got < 1e-300 {
-            assert!(
-                got < 1.1e-300,
-                "{} {:?}: {got:e}",
-                case.function,
-                case.arguments
-            );
+            assert!(got < 1.1e-300, "{} {:?}: {got:e}", case.function, case.arguments);
             continue;
         }
         let error = relative_error(got, case.value);
@@ -104,9 +88,7 @@ fn check_file(text: &str) {
                 case.function, case.arguments, case.value
             ));
         }
-        let entry = worst
-            .entry(case.function.clone())
-            .or_insert((0.0, Vec::new()));
+        let entry = worst.entry(case.function.clone()).or_insert((0.0, Vec::new()));
         if error >= entry.0 {
             *entry = (error, case.arguments.clone());
         }
@@ -115,12 +97,7 @@ fn check_file(text: &str) {
     for (function, (error, arguments)) in &worst {
         println!("{function:16} {error:.1e} at {arguments:?}");
     }
-    assert!(
-        failures.is_empty(),
-        "{} values off:\n{}",
-        failures.len(),
-        failures.join("\n")
-    );
+    assert!(failures.is_empty(), "{} values off:\n{}", failures.len(), failures.join("\n"));
 }
 
 #[test]
@@ -161,71 +138,23 @@ fn ordinary_values_agree_with_statrs() {
 #[test]
 fn arguments_outside_the_domain_are_named() {
     let cases: Vec<(Result<f64, DistributionError>, &str)> = vec![
-        (
-            normal::upper_tail(f64::NAN),
-            "normal distribution: the statistic is NaN",
-        ),
-        (
-            normal::quantile(1.0),
-            "normal distribution: the probability is 1",
-        ),
-        (
-            student::two_tails(1.0, 0.0),
-            "t distribution: the degrees of freedom is 0",
-        ),
-        (
-            student::upper_tail(f64::INFINITY, 5.0),
-            "t distribution: the statistic is inf",
-        ),
-        (
-            student::quantile_upper(0.0, 5.0),
-            "t distribution: the tail is 0",
-        ),
-        (
-            fisher::upper_tail(1.0, -1.0, 5.0),
-            "the numerator's degrees of freedom is -1",
-        ),
-        (
-            fisher::upper_tail(1.0, 1.0, f64::NAN),
-            "the denominator's degrees of freedom is NaN",
-        ),
-        (
-            chi_squared::upper_tail(1.0, 0.0),
-            "chi-squared distribution: the degrees of freedom is 0",
-        ),
-        (
-            noncentral_t::lower_tail(1.0, 5.0, f64::NAN),
-            "noncentral t distribution: the noncentrality",
-        ),
-        (
-            noncentral_f::upper_tail(1.0, 2.0, 5.0, -0.1),
-            "noncentral F distribution: the noncentrality",
-        ),
-        (
-            noncentral_f::upper_tail(-1.0, 2.0, 5.0, 0.1),
-            "noncentral F distribution: the statistic is -1",
-        ),
-        (
-            beta::both_tails(1.0, 2.0, 1.5).map(|t| t.lower),
-            "beta distribution: one minus the point",
-        ),
-        (
-            noncentral_t::noncentrality_limits(1.0, 5.0, 1.0).map(|l| l.0),
-            "noncentral t distribution: the confidence level is 1",
-        ),
-        (
-            noncentral_f::noncentrality_limits(1.0, 2.0, 5.0, 95.0).map(|l| l.0),
-            "noncentral F distribution: the confidence level is 95",
-        ),
+        (normal::upper_tail(f64::NAN), "normal distribution: the statistic is NaN"),
+        (normal::quantile(1.0), "normal distribution: the probability is 1"),
+        (student::two_tails(1.0, 0.0), "t distribution: the degrees of freedom is 0"),
+        (student::upper_tail(f64::INFINITY, 5.0), "t distribution: the statistic is inf"),
+        (student::quantile_upper(0.0, 5.0), "t distribution: the tail is 0"),
+        (fisher::upper_tail(1.0, -1.0, 5.0), "the numerator's degrees of freedom is -1"),
+        (fisher::upper_tail(1.0, 1.0, f64::NAN), "the denominator's degrees of freedom is NaN"),
+        (chi_squared::upper_tail(1.0, 0.0), "chi-squared distribution: the degrees of freedom is 0"),
+        (noncentral_t::lower_tail(1.0, 5.0, f64::NAN), "noncentral t distribution: the noncentrality"),
+        (noncentral_f::upper_tail(1.0, 2.0, 5.0, -0.1), "noncentral F distribution: the noncentrality"),
+        (noncentral_f::upper_tail(-1.0, 2.0, 5.0, 0.1), "noncentral F distribution: the statistic is -1"),
+        (beta::both_tails(1.0, 2.0, 1.5).map(|t| t.lower), "beta distribution: one minus the point"),
+        (noncentral_t::noncentrality_limits(1.0, 5.0, 1.0).map(|l| l.0), "noncentral t distribution: the confidence level is 1"),
+        (noncentral_f::noncentrality_limits(1.0, 2.0, 5.0, 95.0).map(|l| l.0), "noncentral F distribution: the confidence level is 95"),
         // Legal, but out of reach: said, not guessed.
-        (
-            student::quantile_upper(1e-300, 0.5),
-            "the quantile leaves the range",
-        ),
-        (
-            noncentral_t::lower_tail(1e9, 2.0, 1.0),
-            "would need too many points",
-        ),
+        (student::quantile_upper(1e-300, 0.5), "the quantile leaves the range"),
+        (noncentral_t::lower_tail(1e9, 2.0, 1.0), "would need too many points"),
     ];
     for (result, words) in cases {
         let message = result.expect_err(words).to_string();
@@ -240,14 +169,8 @@ fn limits_are_zero_where_no_noncentrality_reaches_the_tail() {
     let (lower, upper) = noncentral_f::noncentrality_limits(2.361563, 3.0, 75.0, 0.90).unwrap();
     assert!(lower == 0.0 && upper > 16.0);
     // F(3, 40) = .05 has p = .985: above .95.
-    assert_eq!(
-        noncentral_f::noncentrality_limits(0.05, 3.0, 40.0, 0.90),
-        Ok((0.0, 0.0))
-    );
-    assert_eq!(
-        noncentral_f::noncentrality_limits(0.0, 3.0, 40.0, 0.90),
-        Ok((0.0, 0.0))
-    );
+    assert_eq!(noncentral_f::noncentrality_limits(0.05, 3.0, 40.0, 0.90), Ok((0.0, 0.0)));
+    assert_eq!(noncentral_f::noncentrality_limits(0.0, 3.0, 40.0, 0.90), Ok((0.0, 0.0)));
 }
 
 /// Steiger & Fouladi's (1997) limits for t(28) = 2.5 from an independent script, to the

@@ -5,9 +5,7 @@
 
 use std::path::Path;
 
-use aforesaid::stats::hypothesis::{
-    ErrorTerm, FactorPart, Hypothesis, Part, Weighting, test_univariate,
-};
+use aforesaid::stats::hypothesis::{ErrorTerm, FactorPart, Hypothesis, Part, Weighting, test_univariate};
 use aforesaid::stats::model::Moments;
 
 fn folder() -> std::path::PathBuf {
@@ -16,36 +14,21 @@ fn folder() -> std::path::PathBuf {
 
 /// Digits that agree.
 fn agreement(found: f64, certified: &serde_json::Value) -> f64 {
-    let certified: f64 = certified
-        .as_str()
-        .expect("a decimal")
-        .parse()
-        .expect("a number");
-    if found == certified {
-        17.0
-    } else {
-        -libm::log10(((found - certified) / certified).abs())
-    }
+    let certified: f64 = certified.as_str().expect("a decimal").parse().expect("a number");
+    if found == certified { 17.0 } else { -libm::log10(((found - certified) / certified).abs()) }
 }
 
 #[test]
 fn one_way_sets_reach_the_digits_that_doubles_hold() {
-    let text =
-        std::fs::read_to_string(folder().join("nist_one_way.json")).expect("the check values");
+    let text = std::fs::read_to_string(folder().join("nist_one_way.json")).expect("the check values");
     let reference: serde_json::Value = serde_json::from_str(&text).expect("JSON");
     let sets = reference["values"].as_array().expect("a list");
     assert_eq!(sets.len(), 11);
     for set in sets {
-        let (name, levels) = (
-            set["dataset"].as_str().expect("a name"),
-            set["k"].as_u64().expect("a count") as usize,
-        );
+        let (name, levels) = (set["dataset"].as_str().expect("a name"), set["k"].as_u64().expect("a count") as usize);
         let (mut values, mut cell) = (Vec::new(), Vec::new());
         let file = folder().join(set["data"].as_str().expect("a file"));
-        for row in csv::Reader::from_path(file)
-            .expect("the data")
-            .into_records()
-        {
+        for row in csv::Reader::from_path(file).expect("the data").into_records() {
             let row = row.expect("a row");
             cell.push(row[0].parse::<u32>().expect("a level") - 1);
             values.push(row[1].parse::<f64>().expect("a value"));
@@ -58,11 +41,7 @@ fn one_way_sets_reach_the_digits_that_doubles_hold() {
         let certified = &set["certified"];
         assert_eq!(Some(test.df1), certified["df_between"].as_f64(), "{name}");
         assert_eq!(Some(test.df2), certified["df_within"].as_f64(), "{name}");
-        let wanted = (set["attainable_digits_from_doubles"]
-            .as_f64()
-            .expect("digits")
-            - 0.5)
-            .min(13.0);
+        let wanted = (set["attainable_digits_from_doubles"].as_f64().expect("digits") - 0.5).min(13.0);
         for (what, found) in [
             ("SS_between", test.ss),
             ("MS_between", test.ss / test.df1),
@@ -73,10 +52,7 @@ fn one_way_sets_reach_the_digits_that_doubles_hold() {
             ("residual_SD", test.ms_error.sqrt()),
         ] {
             let digits = agreement(found, &certified[what]);
-            assert!(
-                digits >= wanted,
-                "{name} {what}: {found:e} agrees to {digits:.1} digits, {wanted} wanted"
-            );
+            assert!(digits >= wanted, "{name} {what}: {found:e} agrees to {digits:.1} digits, {wanted} wanted");
         }
     }
 }

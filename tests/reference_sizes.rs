@@ -7,9 +7,8 @@ use std::collections::BTreeMap;
 use std::f64::consts::TAU;
 
 use aforesaid::stats::sizes::{
-    EffectSum, IntervalMethod, PairedSummary, Refusal, Standardizer, change_interval,
-    generalized_eta_squared, hedges_j_approximate, hedges_j_exact, partial_eta_squared,
-    partial_eta_squared_interval, standardized_change, standardizer_value,
+    EffectSum, IntervalMethod, PairedSummary, Refusal, Standardizer, change_interval, generalized_eta_squared, hedges_j_approximate,
+    hedges_j_exact, partial_eta_squared, partial_eta_squared_interval, standardized_change, standardizer_value,
 };
 use tolerance::{CLASS_A, CLASS_B, assert_close};
 
@@ -21,9 +20,7 @@ struct Reference(BTreeMap<String, f64>);
 impl Reference {
     fn read() -> Self {
         let text = include_str!("reference/orthodont_sizes.csv");
-        let mut reader = csv::ReaderBuilder::new()
-            .comment(Some(b'#'))
-            .from_reader(text.as_bytes());
+        let mut reader = csv::ReaderBuilder::new().comment(Some(b'#')).from_reader(text.as_bytes());
         let rows = reader.records().map(|row| {
             let row = row.expect("a row");
             (row[0].to_string(), row[1].parse().expect("a number"))
@@ -32,10 +29,7 @@ impl Reference {
     }
 
     fn get(&self, name: &str) -> f64 {
-        *self
-            .0
-            .get(name)
-            .unwrap_or_else(|| panic!("the reference file has no {name}"))
+        *self.0.get(name).unwrap_or_else(|| panic!("the reference file has no {name}"))
     }
 
     /// Both ways to give one arm's summary at two ages.
@@ -52,14 +46,7 @@ impl Reference {
     }
 }
 
-const PAIRS: [(&str, &str); 6] = [
-    ("8", "10"),
-    ("8", "12"),
-    ("8", "14"),
-    ("10", "12"),
-    ("10", "14"),
-    ("12", "14"),
-];
+const PAIRS: [(&str, &str); 6] = [("8", "10"), ("8", "12"), ("8", "14"), ("10", "12"), ("10", "14"), ("12", "14")];
 
 /// `reference/hedges_j.csv`: the gamma form in mpmath, 40 digits. That the approximation is
 /// off by at most .00033 from 10 degrees of freedom on and by .007 at 2 is Hedges' (1981)
@@ -67,9 +54,7 @@ const PAIRS: [(&str, &str); 6] = [
 #[test]
 fn hedges_factors_agree_with_the_gamma_form() {
     let text = include_str!("reference/hedges_j.csv");
-    let mut reader = csv::ReaderBuilder::new()
-        .comment(Some(b'#'))
-        .from_reader(text.as_bytes());
+    let mut reader = csv::ReaderBuilder::new().comment(Some(b'#')).from_reader(text.as_bytes());
     let mut worst = 0.0_f64;
     for row in reader.records() {
         let row = row.expect("a row");
@@ -80,10 +65,7 @@ fn hedges_factors_agree_with_the_gamma_form() {
         if m >= 2.0 {
             let approximate = hedges_j_approximate(m).expect("a factor");
             let allowed = if m < 10.0 { 0.0075 } else { 0.000_335 };
-            assert!(
-                (approximate - want).abs() <= allowed,
-                "J({m}): {approximate} and {want}"
-            );
+            assert!((approximate - want).abs() <= allowed, "J({m}): {approximate} and {want}");
         }
     }
     println!("hedges_j_exact {worst:.1e}");
@@ -98,35 +80,17 @@ fn standardized_changes_agree_with_the_reference() {
                 let prefix = format!("es_within/{sex}/{}-{}", ages.0, ages.1);
                 let want = |what: &str| reference.get(&format!("{prefix}/{what}"));
                 let m = reference.get(&format!("cell/{sex}/n")) - 1.0;
-                let (exact, approximate) = (
-                    hedges_j_exact(m).expect("J"),
-                    hedges_j_approximate(m).expect("J"),
-                );
+                let (exact, approximate) = (hedges_j_exact(m).expect("J"), hedges_j_approximate(m).expect("J"));
                 let checks = [
-                    (
-                        Standardizer::ChangeSd,
-                        "d_z",
-                        Some("g_z_exact"),
-                        Some("g_z_approx"),
-                    ),
-                    (
-                        Standardizer::ChangeSdCorrelationRemoved,
-                        "d_rm",
-                        Some("g_rm_exact"),
-                        None,
-                    ),
+                    (Standardizer::ChangeSd, "d_z", Some("g_z_exact"), Some("g_z_approx")),
+                    (Standardizer::ChangeSdCorrelationRemoved, "d_rm", Some("g_rm_exact"), None),
                     (
                         Standardizer::RootMeanSquareSd,
                         "d_av_root_mean_var",
                         Some("g_av_root_mean_var_exact"),
                         Some("g_av_root_mean_var_approx"),
                     ),
-                    (
-                        Standardizer::AverageSd,
-                        "d_av_mean_sd",
-                        Some("g_av_mean_sd_exact"),
-                        None,
-                    ),
+                    (Standardizer::AverageSd, "d_av_mean_sd", Some("g_av_mean_sd_exact"), None),
                     (Standardizer::BaselineSd, "d_pre_sd", None, None),
                 ];
                 for (standardizer, d_name, exact_name, approximate_name) in checks {
@@ -153,24 +117,12 @@ fn intervals_of_a_change_agree_with_the_reference() {
             for summary in reference.paired(sex, ages) {
                 let prefix = format!("es_within/{sex}/{}-{}", ages.0, ages.1);
                 let want = |what: &str| reference.get(&format!("{prefix}/{what}"));
-                let exact = change_interval(
-                    &summary,
-                    Standardizer::ChangeSd,
-                    IntervalMethod::NoncentralT,
-                    0.95,
-                )
-                .expect("an interval");
+                let exact = change_interval(&summary, Standardizer::ChangeSd, IntervalMethod::NoncentralT, 0.95).expect("an interval");
                 assert_close(&prefix, exact.lower, want("d_z_ci95_lo"), CLASS_B);
                 assert_close(&prefix, exact.upper, want("d_z_ci95_hi"), CLASS_B);
                 assert_eq!(exact.standard_error, None);
                 // Bonett (2008), paired design.
-                let bonett = change_interval(
-                    &summary,
-                    Standardizer::RootMeanSquareSd,
-                    IntervalMethod::Bonett,
-                    0.95,
-                )
-                .expect("an interval");
+                let bonett = change_interval(&summary, Standardizer::RootMeanSquareSd, IntervalMethod::Bonett, 0.95).expect("an interval");
                 let error = bonett.standard_error.expect("a standard error");
                 assert_close(&prefix, error, want("d_av_bonett_se"), CLASS_A);
                 assert_close(&prefix, bonett.lower, want("d_av_bonett_ci95_lo"), CLASS_A);
@@ -185,27 +137,11 @@ fn intervals_of_a_change_agree_with_the_reference() {
 #[test]
 fn baseline_interval_agrees_with_the_formula_by_hand() {
     let summary = PairedSummary::with_correlation(11, (50.0, 56.0), (8.0, 10.0), 0.7).unwrap();
-    let interval = change_interval(
-        &summary,
-        Standardizer::BaselineSd,
-        IntervalMethod::Bonett,
-        0.95,
-    )
-    .unwrap();
+    let interval = change_interval(&summary, Standardizer::BaselineSd, IntervalMethod::Bonett, 0.95).unwrap();
     let error = interval.standard_error.unwrap();
     assert_close("variance", error * error, 0.109375, 1e-14);
-    assert_close(
-        "centre",
-        0.5 * (interval.lower + interval.upper),
-        0.75,
-        1e-14,
-    );
-    assert_close(
-        "width",
-        interval.upper - 0.75,
-        1.959963984540054 * error,
-        1e-14,
-    );
+    assert_close("centre", 0.5 * (interval.lower + interval.upper), 0.75, 1e-14);
+    assert_close("width", interval.upper - 0.75, 1.959963984540054 * error, 1e-14);
 }
 
 /// Normal pairs from a fixed seed: splitmix64 (Steele, Lea & Flood 2014) and Box & Muller (1958).
@@ -239,13 +175,8 @@ fn bonetts_variance_is_the_sampling_variance() {
     const DRAWS: usize = 20_000;
     const N: usize = 100;
     let (change, sd1, sd2, r) = (1.6, 2.0, 3.0, 0.6_f64);
-    let truth = [
-        (Standardizer::BaselineSd, change / sd1),
-        (
-            Standardizer::RootMeanSquareSd,
-            change / ((sd1 * sd1 + sd2 * sd2) / 2.0_f64).sqrt(),
-        ),
-    ];
+    let truth =
+        [(Standardizer::BaselineSd, change / sd1), (Standardizer::RootMeanSquareSd, change / ((sd1 * sd1 + sd2 * sd2) / 2.0_f64).sqrt())];
     let mut normals = NormalPairs(20_260_101);
     let mut seen = [(0.0, 0.0, 0.0, 0_usize); 2]; // sums of d, d^2, variance; intervals that cover
     for _ in 0..DRAWS {
@@ -264,12 +195,10 @@ fn bonetts_variance_is_the_sampling_variance() {
         let (v1, v2) = (cross(sums[2], mean1 * mean1), cross(sums[3], mean2 * mean2));
         let sds = (v1.sqrt(), v2.sqrt());
         let correlation = cross(sums[4], mean1 * mean2) / (sds.0 * sds.1);
-        let summary = PairedSummary::with_correlation(N, (mean1, mean2), sds, correlation)
-            .expect("a summary");
+        let summary = PairedSummary::with_correlation(N, (mean1, mean2), sds, correlation).expect("a summary");
         for ((standardizer, truth), seen) in truth.iter().zip(&mut seen) {
             let d = standardized_change(&summary, *standardizer).expect("a change");
-            let interval = change_interval(&summary, *standardizer, IntervalMethod::Bonett, 0.95)
-                .expect("an interval");
+            let interval = change_interval(&summary, *standardizer, IntervalMethod::Bonett, 0.95).expect("an interval");
             let error = interval.standard_error.expect("a standard error");
             seen.0 += d;
             seen.1 += d * d;
@@ -281,16 +210,9 @@ fn bonetts_variance_is_the_sampling_variance() {
     for ((standardizer, _), (d, square, variance, covered)) in truth.iter().zip(seen) {
         let sampling = square / draws - (d / draws) * (d / draws);
         let name = standardizer.name();
-        println!(
-            "{name}: {sampling:.6} {:.6} {:.4}",
-            variance / draws,
-            covered as f64 / draws
-        );
+        println!("{name}: {sampling:.6} {:.6} {:.4}", variance / draws, covered as f64 / draws);
         assert_close(name, variance / draws, sampling, 0.05);
-        assert!(
-            (covered as f64 / draws - 0.95).abs() < 0.016,
-            "{name}: {covered} of {DRAWS}"
-        );
+        assert!((covered as f64 / draws - 0.95).abs() < 0.016, "{name}: {covered} of {DRAWS}");
     }
 }
 
@@ -299,28 +221,17 @@ fn eta_squared_agrees_with_the_reference() {
     let reference = Reference::read();
     let names = ["group", "time", "group:time"];
     let sum = |name: &str| reference.get(&format!("omnibus/{name}/SS"));
-    let errors = [
-        reference.get("omnibus/group/SS_error"),
-        reference.get("omnibus/time/SS_error"),
-    ];
+    let errors = [reference.get("omnibus/group/SS_error"), reference.get("omnibus/time/SS_error")];
     for (position, name) in names.iter().enumerate() {
         let omnibus = |what: &str| reference.get(&format!("omnibus/{name}/{what}"));
         let want = |what: &str| reference.get(&format!("effect/{name}/{what}"));
         let partial = partial_eta_squared(omnibus("SS"), omnibus("SS_error")).expect("a share");
         assert_close(name, partial, omnibus("eta2_partial"), CLASS_A);
-        let (lower, upper) =
-            partial_eta_squared_interval(omnibus("F"), omnibus("df1"), omnibus("df2"), 0.90)
-                .expect("an interval");
+        let (lower, upper) = partial_eta_squared_interval(omnibus("F"), omnibus("df1"), omnibus("df2"), 0.90).expect("an interval");
         assert_close(name, lower, want("eta2_partial_lo90"), CLASS_B);
         assert_close(name, upper, want("eta2_partial_hi90"), CLASS_B);
-        for (measured, key) in [
-            (false, "eta2_generalized_group_manipulated"),
-            (true, "eta2_generalized_group_measured"),
-        ] {
-            let effects = names.map(|name| EffectSum {
-                sum_of_squares: sum(name),
-                measured: measured && name != "time",
-            });
+        for (measured, key) in [(false, "eta2_generalized_group_manipulated"), (true, "eta2_generalized_group_measured")] {
+            let effects = names.map(|name| EffectSum { sum_of_squares: sum(name), measured: measured && name != "time" });
             let got = generalized_eta_squared(position, &effects, &errors).expect("a share");
             assert_close(&format!("{name}, {key}"), got, want(key), CLASS_A);
         }
@@ -330,33 +241,17 @@ fn eta_squared_agrees_with_the_reference() {
 #[test]
 fn combinations_without_a_published_interval_are_refused_with_the_way_out() {
     let summary = PairedSummary::with_correlation(12, (50.0, 56.0), (8.0, 10.0), 0.7).unwrap();
-    let refusal = |standardizer, method| {
-        change_interval(&summary, standardizer, method, 0.95)
-            .expect_err("no interval")
-            .reason
-    };
+    let refusal = |standardizer, method| change_interval(&summary, standardizer, method, 0.95).expect_err("no interval").reason;
     use IntervalMethod::{Bonett, NoncentralT};
     let reason = refusal(Standardizer::AverageSd, Bonett);
-    assert!(
-        reason.contains("`average sd`") && reason.contains("`root mean square sd`"),
-        "{reason}"
-    );
+    assert!(reason.contains("`average sd`") && reason.contains("`root mean square sd`"), "{reason}");
     let reason = refusal(Standardizer::ChangeSd, Bonett);
-    assert!(
-        reason.contains("`change sd`") && reason.contains("noncentral t"),
-        "{reason}"
-    );
+    assert!(reason.contains("`change sd`") && reason.contains("noncentral t"), "{reason}");
     let reason = refusal(Standardizer::ChangeSdCorrelationRemoved, Bonett);
-    assert!(
-        reason.contains("correlation removed") && reason.contains("bootstrap"),
-        "{reason}"
-    );
-    for standardizer in [
-        Standardizer::AverageSd,
-        Standardizer::RootMeanSquareSd,
-        Standardizer::BaselineSd,
-        Standardizer::ChangeSdCorrelationRemoved,
-    ] {
+    assert!(reason.contains("correlation removed") && reason.contains("bootstrap"), "{reason}");
+    for standardizer in
+        [Standardizer::AverageSd, Standardizer::RootMeanSquareSd, Standardizer::BaselineSd, Standardizer::ChangeSdCorrelationRemoved]
+    {
         let reason = refusal(standardizer, NoncentralT);
         assert!(reason.contains(standardizer.name()), "{reason}");
         assert!(reason.contains("only `change sd` does"), "{reason}");
@@ -366,11 +261,7 @@ fn combinations_without_a_published_interval_are_refused_with_the_way_out() {
 #[test]
 fn degenerate_summaries_are_refused_in_words() {
     let summary = |sds, r| PairedSummary::with_correlation(10, (1.0, 2.0), sds, r).unwrap();
-    let reason = |summary: &PairedSummary, standardizer| {
-        standardizer_value(summary, standardizer)
-            .expect_err("no standardizer")
-            .reason
-    };
+    let reason = |summary: &PairedSummary, standardizer| standardizer_value(summary, standardizer).expect_err("no standardizer").reason;
     let flat = summary((0.0, 2.0), 0.0);
     assert!(reason(&flat, Standardizer::BaselineSd).contains("`baseline sd`"));
     let removed = Standardizer::ChangeSdCorrelationRemoved;
@@ -384,43 +275,20 @@ fn degenerate_summaries_are_refused_in_words() {
     assert!(reason(&constant, Standardizer::AverageSd).contains("is 0"));
     assert!(reason(&constant, Standardizer::RootMeanSquareSd).contains("is 0"));
 
-    let refused =
-        |result: Result<PairedSummary, Refusal>| result.expect_err("no summary").to_string();
-    let few = refused(PairedSummary::with_correlation(
-        1,
-        (1.0, 2.0),
-        (1.0, 1.0),
-        0.5,
-    ));
+    let refused = |result: Result<PairedSummary, Refusal>| result.expect_err("no summary").to_string();
+    let few = refused(PairedSummary::with_correlation(1, (1.0, 2.0), (1.0, 1.0), 0.5));
     assert!(few.contains("two subjects"), "{few}");
-    let apart = refused(PairedSummary::with_sd_of_change(
-        9,
-        (1.0, 2.0),
-        (1.0, 1.0),
-        5.0,
-    ));
+    let apart = refused(PairedSummary::with_sd_of_change(9, (1.0, 2.0), (1.0, 1.0), 5.0));
     assert!(apart.contains("cannot go with 5"), "{apart}");
-    let nan = refused(PairedSummary::with_correlation(
-        9,
-        (f64::NAN, 2.0),
-        (1.0, 1.0),
-        0.5,
-    ));
+    let nan = refused(PairedSummary::with_correlation(9, (f64::NAN, 2.0), (1.0, 1.0), 0.5));
     assert!(nan.contains("finite"), "{nan}");
-    let negative = refused(PairedSummary::with_correlation(
-        9,
-        (1.0, 2.0),
-        (-1.0, 1.0),
-        0.5,
-    ));
+    let negative = refused(PairedSummary::with_correlation(9, (1.0, 2.0), (-1.0, 1.0), 0.5));
     assert!(negative.contains("negative"), "{negative}");
 
     let reason = hedges_j_exact(1.0).expect_err("no factor").reason;
     assert!(reason.contains("more than 1 degree of freedom"), "{reason}");
     let reason = partial_eta_squared(0.0, 0.0).expect_err("no share").reason;
     assert!(reason.contains("do not vary"), "{reason}");
-    let reason = partial_eta_squared_interval(f64::NAN, 1.0, 20.0, 0.9)
-        .expect_err("none")
-        .reason;
+    let reason = partial_eta_squared_interval(f64::NAN, 1.0, 20.0, 0.9).expect_err("none").reason;
     assert!(reason.contains("the statistic is NaN"), "{reason}");
 }

@@ -46,6 +46,7 @@ const REFUSED: &[Case] = &[
     ("title: \"a\\0b\"\n", &[("control-character", 1, 8)]),
     ("title: \u{202e}desrever\n", &[("control-character", 1, 8)]),
     ("title: a\u{2028}b: c\n", &[("control-character", 1, 9)]),
+    ("alpha: 0.5\ralpha: 0.05\n", &[("control-character", 1, 11)]),
     ("\u{feff}plan: 1\n", &[("control-character", 1, 1)]),
     ("", &[("plan-empty", 1, 1)]),
     ("\n  \n\n", &[("plan-empty", 1, 1)]),
@@ -218,6 +219,8 @@ fn bytes_that_are_no_text_are_placed() {
     }
     let finding = *decode("plan.yaml", &vec![b' '; LARGEST_PLAN + 1]).unwrap_err();
     assert_eq!(places(std::slice::from_ref(&finding)), [("plan-too-large", 1, 1)]);
+    let parsed = parse(&Source::new("plan.yaml", " ".repeat(LARGEST_PLAN + 1)));
+    assert_eq!(parsed.findings, std::slice::from_ref(&finding));
     renderings += &format!("## one byte too many\n\n{}\n", render::to_text(&[finding], false));
     golden::check("syntax/bytes.txt", &renderings);
 }
@@ -249,7 +252,7 @@ fn nesting_stops_at_the_bound_and_takes_no_stack() {
 /// Texts that would take minutes where time or memory grew faster than the text.
 #[test]
 fn large_hostile_texts_are_read_in_one_go() {
-    let size = 1 << 20;
+    let size = LARGEST_PLAN / 2;
     let numbered = |line: &dyn Fn(usize) -> String| (0..size / 16).map(line).collect::<String>();
     let cases = [
         ("a: 1\n".repeat(size / 5), Some("yaml-duplicate-key")),

@@ -36,11 +36,7 @@ pub struct DecisionLog {
 impl DecisionLog {
     /// No decision yet; `root` comes from [`Chain::decisions`].
     pub fn new(root: Chain) -> Self {
-        Self {
-            chain: root,
-            taken: 0,
-            bytes: Vec::new(),
-        }
+        Self { chain: root, taken: 0, bytes: Vec::new() }
     }
 
     /// Adds a decision and gives its hash.
@@ -49,13 +45,7 @@ impl DecisionLog {
     ///
     /// # Errors
     /// Rule or evidence has no canonical form (a number in it is NaN or infinite).
-    pub fn push<R: Serialize, E: Serialize>(
-        &mut self,
-        step: &str,
-        rule: &R,
-        evidence: &E,
-        verdict: &str,
-    ) -> Result<Digest, CanonError> {
+    pub fn push<R: Serialize, E: Serialize>(&mut self, step: &str, rule: &R, evidence: &E, verdict: &str) -> Result<Digest, CanonError> {
         #[derive(Serialize)]
         struct Unhashed<'a, R, E> {
             sequence: u64,
@@ -65,13 +55,7 @@ impl DecisionLog {
             verdict: &'a str,
         }
         let sequence = self.taken + 1;
-        let link = self.chain.append(&Unhashed {
-            sequence,
-            step,
-            rule,
-            evidence,
-            verdict,
-        })?;
+        let link = self.chain.append(&Unhashed { sequence, step, rule, evidence, verdict })?;
         self.taken = sequence;
         self.bytes.extend(link.line);
         Ok(link.hash)
@@ -92,31 +76,16 @@ impl DecisionLog {
 ///
 /// # Errors
 /// The first line that is not sound; `place` says where the file stands.
-pub fn read_decisions(
-    bytes: &[u8],
-    root: Chain,
-    place: &str,
-) -> Result<(Vec<DecisionEntry>, Digest), Box<Defect>> {
-    let defect = |line, kind| {
-        Box::new(Defect {
-            place: place.to_owned(),
-            line: Some(line),
-            kind,
-        })
-    };
+pub fn read_decisions(bytes: &[u8], root: Chain, place: &str) -> Result<(Vec<DecisionEntry>, Digest), Box<Defect>> {
+    let defect = |line, kind| Box::new(Defect { place: place.to_owned(), line: Some(line), kind });
     let mut chain = root;
     let mut entries: Vec<DecisionEntry> = Vec::new();
     let found = json::read_lines(bytes);
     for line in &found.lines {
-        let entry: DecisionEntry = line
-            .read()
-            .map_err(|error| defect(line.number, DefectKind::Form(error)))?;
+        let entry: DecisionEntry = line.read().map_err(|error| defect(line.number, DefectKind::Form(error)))?;
         let expected = entries.len() as u64 + 1;
         if entry.sequence != expected {
-            let kind = DefectKind::OutOfSequence {
-                expected,
-                found: entry.sequence,
-            };
+            let kind = DefectKind::OutOfSequence { expected, found: entry.sequence };
             return Err(defect(line.number, kind));
         }
         chain.follow(line.bytes).map_err(|error| {
@@ -131,10 +100,7 @@ pub fn read_decisions(
     match found.unterminated {
         Some(line) => {
             let offset = line.start + line.bytes.len();
-            Err(defect(
-                line.number,
-                DefectKind::Form(CanonError::LineFeed { offset }),
-            ))
+            Err(defect(line.number, DefectKind::Form(CanonError::LineFeed { offset })))
         }
         None => Ok((entries, chain.head())),
     }

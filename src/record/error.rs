@@ -81,33 +81,21 @@ impl fmt::Display for Defect {
         match &self.kind {
             DefectKind::Form(error) => error.fmt(f),
             DefectKind::Missing => f.write_str("it is missing"),
-            DefectKind::Unlisted => {
-                f.write_str("it is there, but nothing in the ledger or a manifest lists it")
-            }
-            DefectKind::IsLink => f.write_str(
-                "it is a symbolic link; a study folder holds none, and none is followed",
-            ),
+            DefectKind::Unlisted => f.write_str("it is there, but nothing in the ledger or a manifest lists it"),
+            DefectKind::IsLink => f.write_str("it is a symbolic link; a study folder holds none, and none is followed"),
             DefectKind::NotAFile => f.write_str("it is not a regular file"),
             DefectKind::NotAFolder => f.write_str("it is not a folder"),
             DefectKind::TooLarge => f.write_str("it is larger than such a file can be"),
             DefectKind::NameNotText => f.write_str("it holds a name that is not UTF-8"),
-            DefectKind::HashDiffers {
-                expected,
-                found,
-                written_in,
-            } => write!(
-                f,
-                "its hash is {}, but {written_in} has {}: it is not the file that was written",
-                found.short(),
-                expected.short()
-            ),
+            DefectKind::HashDiffers { expected, found, written_in } => {
+                write!(f, "its hash is {}, but {written_in} has {}: it is not the file that was written", found.short(), expected.short())
+            }
             DefectKind::SizeDiffers { expected, found } => {
                 write!(f, "it has {found} bytes, but was written with {expected}")
             }
-            DefectKind::OutOfSequence { expected, found } => write!(
-                f,
-                "number {expected} is due here, but number {found} stands: lines were moved, dropped or doubled"
-            ),
+            DefectKind::OutOfSequence { expected, found } => {
+                write!(f, "number {expected} is due here, but number {found} stands: lines were moved, dropped or doubled")
+            }
             DefectKind::ChainBroken { computed, found } => write!(
                 f,
                 "its hash is {}, but the line before it and its own bytes give {}: one of the two was changed",
@@ -163,19 +151,11 @@ impl StudyError {
     /// Wraps what the operating system said.
     pub(super) fn machine(doing: &'static str, path: &Path) -> impl FnOnce(io::Error) -> Self {
         let place = path.display().to_string();
-        move |source| Self::Machine {
-            doing,
-            place,
-            source,
-        }
+        move |source| Self::Machine { doing, place, source }
     }
 
     pub(super) fn refused(path: &Path, why: impl Into<String>, remedy: impl Into<String>) -> Self {
-        Self::Refused {
-            place: path.display().to_string(),
-            why: why.into(),
-            remedy: remedy.into(),
-        }
+        Self::Refused { place: path.display().to_string(), why: why.into(), remedy: remedy.into() }
     }
 }
 
@@ -193,30 +173,19 @@ impl fmt::Display for StudyError {
                 "the study folder is not as it was written. {defect}. Nothing was done; `audit` lists all that is wrong, and a copy kept elsewhere can be put back"
             ),
             Self::Refused { place, why, remedy } => write!(f, "{place}: {why}. {remedy}"),
-            Self::Machine {
-                doing,
-                place,
-                source,
-            } => {
-                write!(
-                    f,
-                    "could not {doing} {place}: {source}. {}",
-                    machine_remedy(source.kind())
-                )
+            Self::Machine { doing, place, source } => {
+                write!(f, "could not {doing} {place}: {source}. {}", machine_remedy(source.kind()))
             }
-            Self::Held { place } => write!(
-                f,
-                "{place} is held by another command that is writing to it. Wait until it has ended and try again"
-            ),
+            Self::Held { place } => {
+                write!(f, "{place} is held by another command that is writing to it. Wait until it has ended and try again")
+            }
         }
     }
 }
 
 fn machine_remedy(kind: io::ErrorKind) -> &'static str {
     match kind {
-        io::ErrorKind::StorageFull | io::ErrorKind::QuotaExceeded => {
-            "Make room on that disk and try again"
-        }
+        io::ErrorKind::StorageFull | io::ErrorKind::QuotaExceeded => "Make room on that disk and try again",
         io::ErrorKind::PermissionDenied | io::ErrorKind::ReadOnlyFilesystem => {
             "Give yourself permission there, or use another folder, and try again"
         }

@@ -73,9 +73,7 @@ impl<'de> Deserialize<'de> for UtcTime {
         let text = String::deserialize(deserializer)?;
         let time = text.parse().map(Self::new).map_err(D::Error::custom)?;
         if time.to_string() != text {
-            return Err(D::Error::custom(
-                "a time is written in UTC to the second, ending in Z",
-            ));
+            return Err(D::Error::custom("a time is written in UTC to the second, ending in Z"));
         }
         Ok(time)
     }
@@ -150,10 +148,7 @@ pub struct Manifest {
 impl Manifest {
     /// The manifest of these files.
     pub fn of(files: &BTreeMap<String, Vec<u8>>) -> Self {
-        Self {
-            format: MANIFEST_FORMAT.to_owned(),
-            files: entries(files),
-        }
+        Self { format: MANIFEST_FORMAT.to_owned(), files: entries(files) }
     }
 
     /// Reads `manifest.json`.
@@ -170,21 +165,14 @@ impl Manifest {
 
 /// The list of these files, sorted by path.
 pub(super) fn entries(files: &BTreeMap<String, Vec<u8>>) -> Vec<FileEntry> {
-    let entry = |(path, bytes): (&String, &Vec<u8>)| FileEntry {
-        path: path.clone(),
-        size: bytes.len() as u64,
-        sha256: sha256(bytes),
-    };
+    let entry = |(path, bytes): (&String, &Vec<u8>)| FileEntry { path: path.clone(), size: bytes.len() as u64, sha256: sha256(bytes) };
     files.iter().map(entry).collect()
 }
 
 fn check_entries(entries: &[FileEntry]) -> Result<(), CanonError> {
     let sorted = entries.windows(2).all(|pair| pair[0].path < pair[1].path);
     match entries.iter().find(|entry| !is_plain_path(&entry.path)) {
-        Some(entry) => Err(shape(format!(
-            "the path {:?} is not a plain one",
-            entry.path
-        ))),
+        Some(entry) => Err(shape(format!("the path {:?} is not a plain one", entry.path))),
         None if !sorted => Err(shape("files must be sorted by path, none twice".to_owned())),
         None => Ok(()),
     }
@@ -192,22 +180,15 @@ fn check_entries(entries: &[FileEntry]) -> Result<(), CanonError> {
 
 /// Whether a path names something inside a folder and could not lead out of it on any system.
 pub(super) fn is_plain_path(path: &str) -> bool {
-    path.split('/').all(|part| {
-        !part.is_empty()
-            && !part.starts_with('.')
-            && part
-                .chars()
-                .all(|c| !c.is_control() && !matches!(c, '\\' | ':'))
-    })
+    path.split('/')
+        .all(|part| !part.is_empty() && !part.starts_with('.') && part.chars().all(|c| !c.is_control() && !matches!(c, '\\' | ':')))
 }
 
 fn check_format(found: &str, expected: &str) -> Result<(), CanonError> {
     if found == expected {
         return Ok(());
     }
-    Err(shape(format!(
-        "its format is {found:?}; this release reads {expected:?}"
-    )))
+    Err(shape(format!("its format is {found:?}; this release reads {expected:?}")))
 }
 
 pub(super) fn shape(message: String) -> CanonError {

@@ -202,22 +202,11 @@ impl Ledger {
         };
         if found.lines.is_empty() {
             let kind = DefectKind::Contradiction("it holds no event".to_owned());
-            return (
-                ledger,
-                Some(Defect {
-                    place: LEDGER.to_owned(),
-                    line: None,
-                    kind,
-                }),
-            );
+            return (ledger, Some(Defect { place: LEDGER.to_owned(), line: None, kind }));
         }
         for line in &found.lines {
             if let Err(kind) = ledger.take(line) {
-                let defect = Defect {
-                    place: LEDGER.to_owned(),
-                    line: Some(line.number),
-                    kind,
-                };
+                let defect = Defect { place: LEDGER.to_owned(), line: Some(line.number), kind };
                 return (ledger, Some(defect));
             }
         }
@@ -229,25 +218,17 @@ impl Ledger {
         // A key that no field takes would be dropped in silence where fields are flattened.
         let again = json::to_canonical(&event).map_err(DefectKind::Form)?;
         if again != line.bytes {
-            let message = format!(
-                "it holds keys that an event `{}` has not",
-                event.what.kind()
-            );
+            let message = format!("it holds keys that an event `{}` has not", event.what.kind());
             return Err(DefectKind::Form(shape(message)));
         }
         let expected = self.events.len() as u64 + 1;
         if event.sequence != expected {
-            return Err(DefectKind::OutOfSequence {
-                expected,
-                found: event.sequence,
-            });
+            return Err(DefectKind::OutOfSequence { expected, found: event.sequence });
         }
         match (&event.what, expected) {
             (Happening::Sealed { seal, .. }, 1) => self.chain = Chain::ledger(seal),
             (_, 1) => {
-                return Err(DefectKind::Contradiction(
-                    "a ledger begins with `sealed`".to_owned(),
-                ));
+                return Err(DefectKind::Contradiction("a ledger begins with `sealed`".to_owned()));
             }
             _ => {}
         }
@@ -260,12 +241,7 @@ impl Ledger {
     }
 
     /// The event that would follow, and its line.
-    pub(super) fn next(
-        &self,
-        time: UtcTime,
-        who: String,
-        what: Happening,
-    ) -> Result<(Event, Vec<u8>), CanonError> {
+    pub(super) fn next(&self, time: UtcTime, who: String, what: Happening) -> Result<(Event, Vec<u8>), CanonError> {
         let mut event = Event {
             sequence: self.events.len() as u64 + 1,
             time,
@@ -281,9 +257,7 @@ impl Ledger {
 
     /// Takes in an event whose line is on the disk.
     pub(super) fn push(&mut self, event: Event, line: &[u8]) -> Result<(), LinkError> {
-        self.head = self
-            .chain
-            .follow(line.strip_suffix(b"\n").unwrap_or(line))?;
+        self.head = self.chain.follow(line.strip_suffix(b"\n").unwrap_or(line))?;
         self.length += line.len() as u64;
         self.events.push(event);
         Ok(())
@@ -291,12 +265,11 @@ impl Ledger {
 
     /// The last `unblinded` that neither a run nor an `interrupted` followed.
     pub fn open_unblinding(&self) -> Option<&Event> {
-        let last = self.events.iter().rev().find(|event| {
-            matches!(
-                event.what,
-                Happening::Unblinded { .. } | Happening::Run { .. } | Happening::Interrupted { .. }
-            )
-        })?;
+        let last = self
+            .events
+            .iter()
+            .rev()
+            .find(|event| matches!(event.what, Happening::Unblinded { .. } | Happening::Run { .. } | Happening::Interrupted { .. }))?;
         matches!(last.what, Happening::Unblinded { .. }).then_some(last)
     }
 }

@@ -41,37 +41,21 @@ struct Copy {
 }
 
 impl Incoming {
-    pub(super) fn begin(
-        world: &dyn World,
-        root: &Path,
-        name: String,
-        copying: Copying,
-    ) -> Result<Self, StudyError> {
+    pub(super) fn begin(world: &dyn World, root: &Path, name: String, copying: Copying) -> Result<Self, StudyError> {
         let copy = match copying {
             Copying::HashOnly => None,
             Copying::Keep => {
                 let path = at(root, &name);
-                let file = world
-                    .create_file(&path)
-                    .map_err(StudyError::machine("write", &path))?;
+                let file = world.create_file(&path).map_err(StudyError::machine("write", &path))?;
                 Some(Copy { name, path, file })
             }
         };
-        Ok(Self {
-            hasher: Hasher::new(),
-            size: 0,
-            copy,
-            failed: None,
-        })
+        Ok(Self { hasher: Hasher::new(), size: 0, copy, failed: None })
     }
 
     /// Passes on what `source` gives while taking it in; `path` is for error messages.
     pub fn reading<R: Read>(self, path: &Path, source: R) -> Reading<R> {
-        Reading {
-            source,
-            path: path.to_path_buf(),
-            incoming: self,
-        }
+        Reading { source, path: path.to_path_buf(), incoming: self }
     }
 
     /// Ends the copy and syncs it.
@@ -88,11 +72,7 @@ impl Incoming {
             synced.map_err(StudyError::machine("write", &copy.path))?;
             pending = Some(copy.name);
         }
-        Ok(Received {
-            hash: self.hasher.finish(),
-            size: self.size,
-            pending,
-        })
+        Ok(Received { hash: self.hasher.finish(), size: self.size, pending })
     }
 
     fn take(&mut self, bytes: &[u8]) {
@@ -226,23 +206,14 @@ impl<'w> Unblinded<'w> {
     /// # Errors
     /// [`StudyError::Machine`] if something cannot be written, [`StudyError::Refused`] for a path that cannot stand in a record. What had been written is then
     /// cleared, and `interrupted` logged, as far as the machine lets.
-    pub fn commit(
-        mut self,
-        facts: RunFacts,
-        files: BTreeMap<String, Vec<u8>>,
-    ) -> Result<Committed<'w>, StudyError> {
+    pub fn commit(mut self, facts: RunFacts, files: BTreeMap<String, Vec<u8>>) -> Result<Committed<'w>, StudyError> {
         match self.write(&facts, files) {
             Ok((record, head)) => {
                 self.study.state = StudyState::read(self.study.world, &self.study.root)?;
-                Ok(Committed {
-                    record,
-                    head,
-                    study: self.study,
-                })
+                Ok(Committed { record, head, study: self.study })
             }
             Err(error) => {
-                self.study
-                    .clear_after_failure("the record could not be written");
+                self.study.clear_after_failure("the record could not be written");
                 Err(error)
             }
         }
@@ -258,51 +229,30 @@ impl<'w> Unblinded<'w> {
         Ok(self.study)
     }
 
-    fn write(
-        &mut self,
-        facts: &RunFacts,
-        mut files: BTreeMap<String, Vec<u8>>,
-    ) -> Result<(u32, Digest), StudyError> {
+    fn write(&mut self, facts: &RunFacts, mut files: BTreeMap<String, Vec<u8>>) -> Result<(u32, Digest), StudyError> {
         let study = &mut self.study;
         let (world, record) = (study.world, study.state.next_record());
         let place = record_folder(record);
-        if let Some(path) = files
-            .keys()
-            .find(|path| !is_plain_path(path) || *path == MANIFEST)
-        {
+        if let Some(path) = files.keys().find(|path| !is_plain_path(path) || *path == MANIFEST) {
             let why = "this name cannot stand in a record";
-            return Err(StudyError::refused(
-                Path::new(path),
-                why,
-                "Give the file another name",
-            ));
+            return Err(StudyError::refused(Path::new(path), why, "Give the file another name"));
         }
-        let manifest = json::file_bytes(&Manifest::of(&files))
-            .map_err(|error| unwritable(&format!("{place}/{MANIFEST}"), error))?;
+        let manifest = json::file_bytes(&Manifest::of(&files)).map_err(|error| unwritable(&format!("{place}/{MANIFEST}"), error))?;
         let manifest_hash = crate::canon::hash::sha256(&manifest);
         files.insert(MANIFEST.to_owned(), manifest);
 
         let pending = at(&study.root, &format!("{PENDING}{record:03}"));
-        world
-            .create_folder(&pending)
-            .map_err(StudyError::machine("make the folder", &pending))?;
+        world.create_folder(&pending).map_err(StudyError::machine("make the folder", &pending))?;
         write_files(world, &pending, &files)?;
-        let received: Vec<&Received> = [Some(&facts.data), facts.allocation.as_ref()]
-            .into_iter()
-            .flatten()
-            .collect();
+        let received: Vec<&Received> = [Some(&facts.data), facts.allocation.as_ref()].into_iter().flatten().collect();
         let copied = received.iter().all(|file| file.pending.is_some());
         if copied {
-            received
-                .iter()
-                .try_for_each(|file| keep(world, &study.root, file))?;
+            received.iter().try_for_each(|file| keep(world, &study.root, file))?;
         }
         study.discard_received()?;
         make_folder(world, &at(&study.root, "records"))?;
         let target = at(&study.root, &place);
-        world
-            .rename(&pending, &target)
-            .map_err(StudyError::machine("put in place", &target))?;
+        world.rename(&pending, &target).map_err(StudyError::machine("put in place", &target))?;
         for folder in ["records", ""] {
             sync_folder(world, &at(&study.root, folder))?;
         }
@@ -329,51 +279,27 @@ fn keep(world: &dyn World, root: &Path, file: &Received) -> Result<(), StudyErro
     let (pending, place) = (at(root, name), data_file(&file.hash));
     let target = at(root, &place);
     make_folder(world, &at(root, "data"))?;
-    match world
-        .kind(&target, Links::Report)
-        .map_err(StudyError::machine("look at", &target))?
-    {
+    match world.kind(&target, Links::Report).map_err(StudyError::machine("look at", &target))? {
         Kind::Nothing => {
-            world
-                .rename(&pending, &target)
-                .map_err(StudyError::machine("put in place", &target))?;
+            world.rename(&pending, &target).map_err(StudyError::machine("put in place", &target))?;
             sync_folder(world, &at(root, "data"))
         }
         Kind::File(_) => {
             let found = hash_file(world, &target)?;
             if found != file.hash {
-                let kind = DefectKind::HashDiffers {
-                    expected: file.hash,
-                    found,
-                    written_in: "its name",
-                };
-                return Err(Defect {
-                    place,
-                    line: None,
-                    kind,
-                }
-                .into());
+                let kind = DefectKind::HashDiffers { expected: file.hash, found, written_in: "its name" };
+                return Err(Defect { place, line: None, kind }.into());
             }
             Ok(())
         }
-        _ => Err(Defect {
-            place,
-            line: None,
-            kind: DefectKind::NotAFile,
-        }
-        .into()),
+        _ => Err(Defect { place, line: None, kind: DefectKind::NotAFile }.into()),
     }
 }
 
 fn make_folder(world: &dyn World, folder: &Path) -> Result<(), StudyError> {
-    match world
-        .kind(folder, Links::Report)
-        .map_err(StudyError::machine("look at", folder))?
-    {
+    match world.kind(folder, Links::Report).map_err(StudyError::machine("look at", folder))? {
         Kind::Folder => Ok(()),
-        _ => world
-            .create_folder(folder)
-            .map_err(StudyError::machine("make the folder", folder)),
+        _ => world.create_folder(folder).map_err(StudyError::machine("make the folder", folder)),
     }
 }
 

@@ -53,10 +53,9 @@ impl std::fmt::Display for Unfinished {
         match self {
             Self::LedgerLine => write!(f, "{LEDGER}: its last line was not written to its end"),
             Self::Leftover(place) => write!(f, "{place}: left by a command that did not finish"),
-            Self::Unblinding { sequence } => write!(
-                f,
-                "{LEDGER}, event {sequence}: the arms were opened, but no run was recorded after it"
-            ),
+            Self::Unblinding { sequence } => {
+                write!(f, "{LEDGER}, event {sequence}: the arms were opened, but no run was recorded after it")
+            }
         }
     }
 }
@@ -82,6 +81,10 @@ impl StudyState {
     /// [`StudyError::Refused`] if `root` is no study folder, [`StudyError::Machine`] if it cannot be read. What is wrong inside is no error: it stands in
     /// [`StudyState::defects`].
     pub fn read(world: &dyn World, root: &Path) -> Result<Self, StudyError> {
+        let kind = world.kind(root, crate::world::Links::Follow);
+        if kind.map_err(StudyError::machine("look at", root))? != crate::world::Kind::Folder {
+            return Err(not_a_study(root));
+        }
         let mut reader = Reader::new(world, root);
         let Some(names) = reader.folder("")? else {
             return Err(not_a_study(root));
@@ -96,12 +99,7 @@ impl StudyState {
         if reader.defects.is_empty() {
             reader.defects.extend(defect);
         }
-        let mut state = Self {
-            ledger,
-            plans: BTreeMap::new(),
-            unfinished: Vec::new(),
-            defects: Vec::new(),
-        };
+        let mut state = Self { ledger, plans: BTreeMap::new(), unfinished: Vec::new(), defects: Vec::new() };
         if state.ledger.unterminated {
             state.unfinished.push(Unfinished::LedgerLine);
         }
@@ -116,9 +114,7 @@ impl StudyState {
             state.list_witnesses(&mut reader)?;
         }
         if let Some(event) = state.ledger.open_unblinding() {
-            state.unfinished.push(Unfinished::Unblinding {
-                sequence: event.sequence,
-            });
+            state.unfinished.push(Unfinished::Unblinding { sequence: event.sequence });
         }
         state.defects = reader.defects;
         Ok(state)
@@ -132,10 +128,7 @@ impl StudyState {
 
     /// The events `run`, in order: record 1, 2 and so on.
     pub fn runs(&self) -> impl Iterator<Item = &Event> {
-        self.ledger
-            .events
-            .iter()
-            .filter(|event| matches!(event.what, Happening::Run { .. }))
+        self.ledger.events.iter().filter(|event| matches!(event.what, Happening::Run { .. }))
     }
 
     /// The number that the next record will have.
@@ -147,13 +140,7 @@ impl StudyState {
     pub fn stored_data(&self) -> BTreeSet<Digest> {
         let mut listed = BTreeSet::new();
         for event in self.runs() {
-            if let Happening::Run {
-                data,
-                allocation,
-                copied: true,
-                ..
-            } = &event.what
-            {
+            if let Happening::Run { data, allocation, copied: true, .. } = &event.what {
                 listed.insert(*data);
                 listed.extend(allocation);
             }
@@ -162,15 +149,7 @@ impl StudyState {
     }
 
     fn read_root(&mut self, reader: &mut Reader<'_>, names: &[String]) -> Result<(), StudyError> {
-        const KNOWN: [&str; 7] = [
-            "plans",
-            "data",
-            "records",
-            "rehearsals",
-            "anchors",
-            "signatures",
-            LEDGER,
-        ];
+        const KNOWN: [&str; 7] = ["plans", "data", "records", "rehearsals", "anchors", "signatures", LEDGER];
         for name in names {
             if name.starts_with(PENDING) {
                 self.unfinished.push(Unfinished::Leftover(name.clone()));
@@ -203,10 +182,7 @@ impl StudyState {
             if missing.contains(&place) {
                 reader.defect(&place, DefectKind::Missing);
             } else if let Some(plan) = reader.plan(&place, seal)? {
-                if plan.seal.number != number
-                    || plan.seal.sha256 != source
-                    || plan.seal.meaning != meaning
-                {
+                if plan.seal.number != number || plan.seal.sha256 != source || plan.seal.meaning != meaning {
                     let what = "it says otherwise than the ledger's event of this plan";
                     let kind = DefectKind::Contradiction(what.to_owned());
                     reader.defect(&format!("{place}/seal.json"), kind);
@@ -221,10 +197,7 @@ impl StudyState {
     /// Records or rehearsals: each that an event tells of is there, with exactly the files of its manifest.
     fn list_outputs(&mut self, reader: &mut Reader<'_>, folder: &str) -> Result<(), StudyError> {
         let told = outputs(&self.ledger.events, folder);
-        let mut missing: BTreeMap<String, Digest> = told
-            .iter()
-            .map(|(number, hash)| (format!("{folder}/{number:03}"), *hash))
-            .collect();
+        let mut missing: BTreeMap<String, Digest> = told.iter().map(|(number, hash)| (format!("{folder}/{number:03}"), *hash)).collect();
         let next = format!("{folder}/{:03}", told.len() + 1);
         // A record without its run is unfinished only where a run was begun; otherwise no killed command can have left it.
         let begun = folder != "records" || self.ledger.open_unblinding().is_some();
@@ -238,23 +211,15 @@ impl StudyState {
                 reader.defect(&place, DefectKind::Unlisted);
             }
         }
-        missing
-            .keys()
-            .for_each(|place| reader.defect(place, DefectKind::Missing));
+        missing.keys().for_each(|place| reader.defect(place, DefectKind::Missing));
         Ok(())
     }
 
     fn list_data(&mut self, reader: &mut Reader<'_>) -> Result<(), StudyError> {
-        let mut missing: BTreeSet<String> = self
-            .stored_data()
-            .iter()
-            .map(super::format::data_file)
-            .collect();
+        let mut missing: BTreeSet<String> = self.stored_data().iter().map(super::format::data_file).collect();
         for name in reader.folder("data")?.unwrap_or_default() {
             let place = format!("data/{name}");
-            let copy = name
-                .strip_suffix(".csv")
-                .and_then(|stem| stem.parse::<Digest>().ok());
+            let copy = name.strip_suffix(".csv").and_then(|stem| stem.parse::<Digest>().ok());
             if missing.remove(&place) {
                 reader.regular_file(&place)?;
             } else if copy.is_some() && self.ledger.open_unblinding().is_some() {
@@ -263,9 +228,7 @@ impl StudyState {
                 reader.defect(&place, DefectKind::Unlisted);
             }
         }
-        missing
-            .iter()
-            .for_each(|place| reader.defect(place, DefectKind::Missing));
+        missing.iter().for_each(|place| reader.defect(place, DefectKind::Missing));
         Ok(())
     }
 
@@ -274,8 +237,7 @@ impl StudyState {
             let mut missing: BTreeMap<String, Digest> = BTreeMap::new();
             for event in &self.ledger.events {
                 match (&event.what, folder) {
-                    (Happening::Anchored { file, sha256, .. }, "anchors")
-                    | (Happening::Signed { file, sha256, .. }, "signatures") => {
+                    (Happening::Anchored { file, sha256, .. }, "anchors") | (Happening::Signed { file, sha256, .. }, "signatures") => {
                         missing.insert(format!("{folder}/{file}"), *sha256);
                     }
                     _ => {}
@@ -288,9 +250,7 @@ impl StudyState {
                     None => reader.defect(&place, DefectKind::Unlisted),
                 }
             }
-            missing
-                .keys()
-                .for_each(|place| reader.defect(place, DefectKind::Missing));
+            missing.keys().for_each(|place| reader.defect(place, DefectKind::Missing));
         }
         Ok(())
     }
@@ -311,20 +271,12 @@ impl StudyState {
     ///
     /// # Errors
     /// A file cannot be read.
-    pub fn verify_record(
-        &self,
-        world: &dyn World,
-        root: &Path,
-        number: u32,
-    ) -> Result<Vec<Defect>, StudyError> {
+    pub fn verify_record(&self, world: &dyn World, root: &Path, number: u32) -> Result<Vec<Defect>, StudyError> {
         let mut reader = Reader::new(world, root);
         let place = record_folder(number);
         match outputs(&self.ledger.events, "records").get(&number) {
             Some(hash) => {
-                for entry in reader
-                    .output(&place, *hash)?
-                    .map_or(Vec::new(), |found| found.files)
-                {
+                for entry in reader.output(&place, *hash)?.map_or(Vec::new(), |found| found.files) {
                     let file = format!("{place}/{}", entry.path);
                     reader.hashed_file(&file, entry.sha256, "its manifest")?;
                 }
@@ -339,19 +291,11 @@ impl StudyState {
     ///
     /// # Errors
     /// [`StudyError::Broken`] if it is not, [`StudyError::Machine`] if it cannot be read.
-    pub fn record_file(
-        &self,
-        world: &dyn World,
-        root: &Path,
-        number: u32,
-        path: &str,
-    ) -> Result<Vec<u8>, StudyError> {
+    pub fn record_file(&self, world: &dyn World, root: &Path, number: u32, path: &str) -> Result<Vec<u8>, StudyError> {
         let mut reader = Reader::new(world, root);
         let folder = record_folder(number);
         let place = format!("{folder}/{path}");
-        let hash = outputs(&self.ledger.events, "records")
-            .get(&number)
-            .copied();
+        let hash = outputs(&self.ledger.events, "records").get(&number).copied();
         let manifest = match hash {
             Some(hash) => reader.output(&folder, hash)?,
             None => None,
@@ -364,24 +308,11 @@ impl StudyState {
         match (entry, bytes) {
             (Some(entry), Some(bytes)) if sha256(&bytes) == entry.sha256 => Ok(bytes),
             (Some(entry), Some(bytes)) => {
-                let kind = DefectKind::HashDiffers {
-                    expected: entry.sha256,
-                    found: sha256(&bytes),
-                    written_in: "its manifest",
-                };
-                Err(Defect {
-                    place,
-                    line: None,
-                    kind,
-                }
-                .into())
+                let kind = DefectKind::HashDiffers { expected: entry.sha256, found: sha256(&bytes), written_in: "its manifest" };
+                Err(Defect { place, line: None, kind }.into())
             }
             _ => {
-                let missing = Defect {
-                    place,
-                    line: None,
-                    kind: DefectKind::Missing,
-                };
+                let missing = Defect { place, line: None, kind: DefectKind::Missing };
                 Err(reader.defects.into_iter().next().unwrap_or(missing).into())
             }
         }
@@ -389,29 +320,15 @@ impl StudyState {
 }
 
 pub(super) fn not_a_study(root: &Path) -> StudyError {
-    StudyError::refused(
-        root,
-        format!("this is no study folder (there is no {LEDGER} in it)"),
-        "Give the folder that `seal` made",
-    )
+    StudyError::refused(root, format!("this is no study folder (there is no {LEDGER} in it)"), "Give the folder that `seal` made")
 }
 
 /// Number, seal hash, plan hash and meaning hash of each plan that the events tell of.
 fn amendments(events: &[Event]) -> Vec<(u32, (Digest, Digest, Digest))> {
     let of = |event: &Event| match &event.what {
-        Happening::Sealed {
-            plan,
-            seal,
-            sha256,
-            meaning,
+        Happening::Sealed { plan, seal, sha256, meaning } | Happening::Amended { plan, seal, sha256, meaning, .. } => {
+            Some((*plan, (*seal, *sha256, *meaning)))
         }
-        | Happening::Amended {
-            plan,
-            seal,
-            sha256,
-            meaning,
-            ..
-        } => Some((*plan, (*seal, *sha256, *meaning))),
         _ => None,
     };
     events.iter().filter_map(of).collect()
@@ -420,13 +337,8 @@ fn amendments(events: &[Event]) -> Vec<(u32, (Digest, Digest, Digest))> {
 /// Number and manifest hash of each record, or rehearsal, that the events tell of.
 fn outputs(events: &[Event], folder: &str) -> BTreeMap<u32, Digest> {
     let of = |event: &Event| match &event.what {
-        Happening::Run {
-            record, manifest, ..
-        } if folder == "records" => Some((*record, *manifest)),
-        Happening::Rehearsed {
-            rehearsal,
-            manifest,
-        } if folder == "rehearsals" => Some((*rehearsal, *manifest)),
+        Happening::Run { record, manifest, .. } if folder == "records" => Some((*record, *manifest)),
+        Happening::Rehearsed { rehearsal, manifest } if folder == "rehearsals" => Some((*rehearsal, *manifest)),
         _ => None,
     };
     events.iter().filter_map(of).collect()
@@ -438,9 +350,7 @@ fn contradictions(events: &[Event]) -> Vec<Defect> {
     let mut open: Option<Digest> = None;
     let mut found = Vec::new();
     for (index, event) in events.iter().enumerate() {
-        let due = |what: &str, number: u32, due: u32| {
-            (number != due).then(|| format!("it names {what} {number}, but {what} {due} is due"))
-        };
+        let due = |what: &str, number: u32, due: u32| (number != due).then(|| format!("it names {what} {number}, but {what} {due} is due"));
         let wrong = match &event.what {
             Happening::Sealed { plan, .. } => {
                 plans += 1;
@@ -455,19 +365,11 @@ fn contradictions(events: &[Event]) -> Vec<Defect> {
                 open = Some(event.hash);
                 due("plan", *plan, plans)
             }
-            Happening::Run {
-                record,
-                plan,
-                unblinded,
-                ..
-            } => {
+            Happening::Run { record, plan, unblinded, .. } => {
                 records += 1;
-                let unopened = (open.take() != Some(*unblinded)).then(|| {
-                    "the event `unblinded` that it names is not the one before".to_owned()
-                });
-                unopened
-                    .or(due("record", *record, records))
-                    .or(due("plan", *plan, plans))
+                let unopened =
+                    (open.take() != Some(*unblinded)).then(|| "the event `unblinded` that it names is not the one before".to_owned());
+                unopened.or(due("record", *record, records)).or(due("plan", *plan, plans))
             }
             Happening::Rehearsed { rehearsal, .. } => {
                 rehearsals += 1;
@@ -484,20 +386,12 @@ fn contradictions(events: &[Event]) -> Vec<Defect> {
             Happening::Corrected { record, .. } => due("record", *record, records.max(1)),
             Happening::DataChecked { .. } => None,
         };
-        found.extend(wrong.map(|what| Defect {
-            place: LEDGER.to_owned(),
-            line: Some(index + 1),
-            kind: DefectKind::Contradiction(what),
-        }));
+        found.extend(wrong.map(|what| Defect { place: LEDGER.to_owned(), line: Some(index + 1), kind: DefectKind::Contradiction(what) }));
     }
     found
 }
 
 /// The path of a place in a study folder.
 pub(super) fn at(root: &Path, place: &str) -> PathBuf {
-    if place.is_empty() {
-        root.to_path_buf()
-    } else {
-        root.join(place)
-    }
+    if place.is_empty() { root.to_path_buf() } else { root.join(place) }
 }

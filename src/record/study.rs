@@ -5,9 +5,7 @@ use std::path::{Path, PathBuf};
 use serde::de::IgnoredAny;
 
 use super::error::{Defect, DefectKind, StudyError};
-use super::format::{
-    LEDGER, LOCK, PENDING, RELEASE, SEAL_FORMAT, Seal, UtcTime, entries, is_plain_path, plan_folder,
-};
+use super::format::{LEDGER, LOCK, PENDING, RELEASE, SEAL_FORMAT, Seal, UtcTime, entries, is_plain_path, plan_folder};
 use super::ledger::{Event, Happening, Ledger, Opens};
 use super::run::{Copying, Incoming, Unblinded};
 use super::state::{SealedFolder, StudyState, Unfinished, at, not_a_study};
@@ -50,18 +48,13 @@ impl<'w> Study<'w> {
     /// [`StudyError::Refused`] if something stands there, [`StudyError::Held`] if another command is sealing there, [`StudyError::Machine`] if it
     /// cannot be written; then nothing is left behind.
     pub fn seal(world: &'w dyn World, root: &Path, plan: &NewPlan<'_>) -> Result<Self, StudyError> {
-        json::from_file_bytes::<IgnoredAny>(plan.resolved)
-            .map_err(|error| unwritable("resolved.json", error))?;
+        json::from_file_bytes::<IgnoredAny>(plan.resolved).map_err(|error| unwritable("resolved.json", error))?;
         let pending = pending_beside(root)?;
         check_target(world, root)?;
         clear_pending_seal(world, &pending)?;
-        world
-            .create_folder(&pending)
-            .map_err(StudyError::machine("make the folder", &pending))?;
+        world.create_folder(&pending).map_err(StudyError::machine("make the folder", &pending))?;
         let built = build(world, &pending, plan).and_then(|lock| {
-            world
-                .rename(&pending, root)
-                .map_err(StudyError::machine("put in place", root))?;
+            world.rename(&pending, root).map_err(StudyError::machine("put in place", root))?;
             Ok(lock)
         });
         let lock = match built {
@@ -74,13 +67,7 @@ impl<'w> Study<'w> {
         };
         sync_folder(world, &folder_of(root))?;
         let state = StudyState::read(world, root)?;
-        Ok(Self {
-            world,
-            root: root.to_path_buf(),
-            state,
-            incoming: 0,
-            _lock: lock,
-        })
+        Ok(Self { world, root: root.to_path_buf(), state, incoming: 0, _lock: lock })
     }
 
     /// Takes the folder's lock, reads it, refuses it if anything is not as written, clears what a killed command left and logs
@@ -89,6 +76,10 @@ impl<'w> Study<'w> {
     /// # Errors
     /// [`StudyError::Held`], [`StudyError::Broken`] with the first defect, [`StudyError::Refused`] if it is no study folder, [`StudyError::Machine`].
     pub fn open(world: &'w dyn World, root: &Path) -> Result<Self, StudyError> {
+        let kind = world.kind(root, Links::Follow);
+        if kind.map_err(StudyError::machine("look at", root))? != Kind::Folder {
+            return Err(not_a_study(root));
+        }
         // Looking first keeps a mistyped path free of a lock file.
         let ledger = root.join(LEDGER);
         let kind = world.kind(&ledger, Links::Report);
@@ -97,13 +88,7 @@ impl<'w> Study<'w> {
         }
         let lock = take_lock(world, root)?;
         let state = StudyState::read(world, root)?;
-        let mut study = Self {
-            world,
-            root: root.to_path_buf(),
-            state,
-            incoming: 0,
-            _lock: lock,
-        };
+        let mut study = Self { world, root: root.to_path_buf(), state, incoming: 0, _lock: lock };
         if let Some(defect) = study.state.defects.first() {
             return Err(defect.clone().into());
         }
@@ -126,14 +111,7 @@ impl<'w> Study<'w> {
     /// # Errors
     /// [`StudyError::Broken`] if it is not as sealed.
     pub fn current_plan(&self) -> Result<(u32, &SealedFolder), StudyError> {
-        self.state.current_plan().ok_or_else(|| {
-            Defect {
-                place: "plans".to_owned(),
-                line: None,
-                kind: DefectKind::Missing,
-            }
-            .into()
-        })
+        self.state.current_plan().ok_or_else(|| Defect { place: "plans".to_owned(), line: None, kind: DefectKind::Missing }.into())
     }
 
     /// Logs that data were checked. Give no hash of data that hold the arms: nothing that could tell them is written before `unblinded`.
@@ -152,22 +130,13 @@ impl<'w> Study<'w> {
         let record = self.state.next_record() - 1;
         if record == 0 || why.trim().is_empty() {
             let (why, remedy) = if record == 0 {
-                (
-                    "there is no record to correct",
-                    "Leave the correction out of the first run",
-                )
+                ("there is no record to correct", "Leave the correction out of the first run")
             } else {
-                (
-                    "a correction needs a reason",
-                    "Say what was corrected and why",
-                )
+                ("a correction needs a reason", "Say what was corrected and why")
             };
             return Err(StudyError::refused(&self.root, why, remedy));
         }
-        self.append_event(Happening::Corrected {
-            record,
-            why: why.trim().to_owned(),
-        })
+        self.append_event(Happening::Corrected { record, why: why.trim().to_owned() })
     }
 
     /// Begins to take in a file that holds no arms, before the arms are opened.
@@ -176,12 +145,7 @@ impl<'w> Study<'w> {
     /// [`StudyError::Machine`] if its copy cannot be begun.
     pub fn receive(&mut self, copying: Copying) -> Result<Incoming, StudyError> {
         self.incoming += 1;
-        Incoming::begin(
-            self.world,
-            &self.root,
-            incoming_name(self.incoming),
-            copying,
-        )
+        Incoming::begin(self.world, &self.root, incoming_name(self.incoming), copying)
     }
 
     /// Clears what this command took in with [`Study::receive`] and will not use, as when the data do not fit the plan. Dropping the
@@ -199,20 +163,15 @@ impl<'w> Study<'w> {
     /// [`StudyError::Machine`] if it cannot be written; then the arms must stay closed.
     pub fn log_unblinded(mut self, opens: Opens) -> Result<Unblinded<'w>, StudyError> {
         let (plan, _) = self.current_plan()?;
-        let event = self
-            .append_event(Happening::Unblinded { plan, opens })?
-            .hash;
+        let event = self.append_event(Happening::Unblinded { plan, opens })?.hash;
         Ok(Unblinded::new(self, event, plan))
     }
 
     /// Adds an event to the ledger and syncs it. If that fails, what was added of it is cut off again.
     pub(super) fn append_event(&mut self, what: Happening) -> Result<&Event, StudyError> {
         let path = at(&self.root, LEDGER);
-        let (event, line) = self
-            .state
-            .ledger
-            .next(UtcTime::new(self.world.now()), self.world.who(), what)
-            .map_err(|error| unwritable(LEDGER, error))?;
+        let (event, line) =
+            self.state.ledger.next(UtcTime::new(self.world.now()), self.world.who(), what).map_err(|error| unwritable(LEDGER, error))?;
         let before = self.state.ledger.length;
         if let Err(error) = self.world.append(&path, &line) {
             // A full disk may have taken part of the line; a killed machine is cleared by the next writer.
@@ -222,11 +181,7 @@ impl<'w> Study<'w> {
         let ledger = &mut self.state.ledger;
         ledger.push(event, &line).map_err(|error| {
             let kind = DefectKind::Contradiction(error.to_string());
-            StudyError::from(Defect {
-                place: LEDGER.to_owned(),
-                line: None,
-                kind,
-            })
+            StudyError::from(Defect { place: LEDGER.to_owned(), line: None, kind })
         })?;
         let last = ledger.events.len() - 1;
         Ok(&ledger.events[last])
@@ -253,20 +208,13 @@ impl<'w> Study<'w> {
                 Unfinished::Unblinding { .. } => {}
             }
         }
-        for folder in cleared
-            .iter()
-            .map(|place| folder_of(&at(&self.root, place)))
-        {
+        for folder in cleared.iter().map(|place| folder_of(&at(&self.root, place))) {
             sync_folder(self.world, &folder)?;
         }
         cleared.sort();
         let unblinded = self.state.ledger.open_unblinding().map(|event| event.hash);
         let why = why.map(str::to_owned);
-        self.append_event(Happening::Interrupted {
-            cleared,
-            unblinded,
-            why,
-        })?;
+        self.append_event(Happening::Interrupted { cleared, unblinded, why })?;
         self.state = StudyState::read(self.world, &self.root)?;
         Ok(())
     }
@@ -304,11 +252,7 @@ fn incoming_name(number: u32) -> String {
 }
 
 /// Builds the whole study folder under its pending name; gives the lock, which moves along with the folder.
-fn build(
-    world: &dyn World,
-    pending: &Path,
-    plan: &NewPlan<'_>,
-) -> Result<Box<dyn Lock>, StudyError> {
+fn build(world: &dyn World, pending: &Path, plan: &NewPlan<'_>) -> Result<Box<dyn Lock>, StudyError> {
     let lock = take_lock(world, pending)?;
     let (time, who) = (UtcTime::new(world.now()), world.who());
     let seal = Seal {
@@ -329,23 +273,10 @@ fn build(
     let folder = plan_folder(1);
     let seal_bytes = json::file_bytes(&seal).map_err(|error| unwritable("seal.json", error))?;
     let seal_hash = sha256(&seal_bytes);
-    let mut ledger = Ledger {
-        events: Vec::new(),
-        head: Digest::ZERO,
-        length: 0,
-        unterminated: false,
-        chain: Chain::ledger(&seal_hash),
-    };
+    let mut ledger = Ledger { events: Vec::new(), head: Digest::ZERO, length: 0, unterminated: false, chain: Chain::ledger(&seal_hash) };
     ledger.head = ledger.chain.head();
-    let what = Happening::Sealed {
-        plan: 1,
-        seal: seal_hash,
-        sha256: seal.sha256,
-        meaning: seal.meaning,
-    };
-    let (_, line) = ledger
-        .next(time, who, what)
-        .map_err(|error| unwritable(LEDGER, error))?;
+    let what = Happening::Sealed { plan: 1, seal: seal_hash, sha256: seal.sha256, meaning: seal.meaning };
+    let (_, line) = ledger.next(time, who, what).map_err(|error| unwritable(LEDGER, error))?;
     let mut files = BTreeMap::from([
         (format!("{folder}/plan.yaml"), plan.source.to_vec()),
         (format!("{folder}/resolved.json"), plan.resolved.to_vec()),
@@ -360,128 +291,70 @@ fn build(
 }
 
 /// Writes and syncs files and the folders they stand in, under a folder that exists; syncs that folder last.
-pub(super) fn write_files(
-    world: &dyn World,
-    folder: &Path,
-    files: &BTreeMap<String, Vec<u8>>,
-) -> Result<(), StudyError> {
+pub(super) fn write_files(world: &dyn World, folder: &Path, files: &BTreeMap<String, Vec<u8>>) -> Result<(), StudyError> {
     if let Some(path) = files.keys().find(|path| !is_plain_path(path)) {
         let remedy = "Use letters, digits, spaces, - and _, and folders parted by /";
-        return Err(StudyError::refused(
-            &folder.join(path),
-            "this name cannot stand in a study folder",
-            remedy,
-        ));
+        return Err(StudyError::refused(&folder.join(path), "this name cannot stand in a study folder", remedy));
     }
     let mut made: Vec<PathBuf> = Vec::new();
     for (path, bytes) in files {
         let parents: Vec<usize> = path.match_indices('/').map(|(index, _)| index).collect();
         for parent in parents.into_iter().map(|end| folder.join(&path[..end])) {
             if !made.contains(&parent) {
-                world
-                    .create_folder(&parent)
-                    .map_err(StudyError::machine("make the folder", &parent))?;
+                world.create_folder(&parent).map_err(StudyError::machine("make the folder", &parent))?;
                 made.push(parent);
             }
         }
         let file = folder.join(path);
-        world
-            .write_new(&file, bytes)
-            .map_err(StudyError::machine("write", &file))?;
+        world.write_new(&file, bytes).map_err(StudyError::machine("write", &file))?;
     }
-    made.iter()
-        .rev()
-        .try_for_each(|folder| sync_folder(world, folder))?;
+    made.iter().rev().try_for_each(|folder| sync_folder(world, folder))?;
     sync_folder(world, folder)
 }
 
 pub(super) fn sync_folder(world: &dyn World, folder: &Path) -> Result<(), StudyError> {
-    world
-        .sync_folder(folder)
-        .map_err(StudyError::machine("sync", folder))
+    world.sync_folder(folder).map_err(StudyError::machine("sync", folder))
 }
 
 pub(super) fn unwritable(place: &str, error: CanonError) -> StudyError {
-    Defect {
-        place: place.to_owned(),
-        line: None,
-        kind: DefectKind::Form(error),
-    }
-    .into()
+    Defect { place: place.to_owned(), line: None, kind: DefectKind::Form(error) }.into()
 }
 
 fn take_lock(world: &dyn World, folder: &Path) -> Result<Box<dyn Lock>, StudyError> {
     let path = folder.join(LOCK);
-    let kind = world
-        .kind(&path, Links::Report)
-        .map_err(StudyError::machine("look at", &path))?;
+    let kind = world.kind(&path, Links::Report).map_err(StudyError::machine("look at", &path))?;
     if !matches!(kind, Kind::Nothing | Kind::File(_)) {
-        let kind = if kind == Kind::Link {
-            DefectKind::IsLink
-        } else {
-            DefectKind::NotAFile
-        };
-        return Err(Defect {
-            place: LOCK.to_owned(),
-            line: None,
-            kind,
-        }
-        .into());
+        let kind = if kind == Kind::Link { DefectKind::IsLink } else { DefectKind::NotAFile };
+        return Err(Defect { place: LOCK.to_owned(), line: None, kind }.into());
     }
-    let lock = world
-        .lock(&path)
-        .map_err(StudyError::machine("lock", &path))?;
-    lock.ok_or_else(|| StudyError::Held {
-        place: folder.display().to_string(),
-    })
+    let lock = world.lock(&path).map_err(StudyError::machine("lock", &path))?;
+    lock.ok_or_else(|| StudyError::Held { place: folder.display().to_string() })
 }
 
 fn check_target(world: &dyn World, root: &Path) -> Result<(), StudyError> {
-    let kind = world
-        .kind(root, Links::Report)
-        .map_err(StudyError::machine("look at", root))?;
-    let remedy =
-        "A seal makes its own folder: give a name that does not exist yet, or an empty folder";
+    let kind = world.kind(root, Links::Report).map_err(StudyError::machine("look at", root))?;
+    let remedy = "A seal makes its own folder: give a name that does not exist yet, or an empty folder";
     match kind {
         Kind::Nothing => Ok(()),
         Kind::Folder => {
-            let names = world
-                .list(root)
-                .map_err(StudyError::machine("list", root))?;
+            let names = world.list(root).map_err(StudyError::machine("list", root))?;
             if names.is_empty() {
                 return Ok(());
             }
             if names.iter().any(|name| name == LEDGER) {
-                let remedy =
-                    "A sealed plan is never replaced. Give another folder, or amend this one";
-                return Err(StudyError::refused(
-                    root,
-                    "a study was sealed there already",
-                    remedy,
-                ));
+                let remedy = "A sealed plan is never replaced. Give another folder, or amend this one";
+                return Err(StudyError::refused(root, "a study was sealed there already", remedy));
             }
-            Err(StudyError::refused(
-                root,
-                "this folder is not empty",
-                remedy,
-            ))
+            Err(StudyError::refused(root, "this folder is not empty", remedy))
         }
-        Kind::File(_) | Kind::Link | Kind::Other => Err(StudyError::refused(
-            root,
-            "something that is no folder stands there",
-            remedy,
-        )),
+        Kind::File(_) | Kind::Link | Kind::Other => Err(StudyError::refused(root, "something that is no folder stands there", remedy)),
     }
 }
 
 fn pending_beside(root: &Path) -> Result<PathBuf, StudyError> {
     let Some(name) = root.file_name() else {
         let remedy = "Give a folder by its own name, not as . or ..";
-        return Err(StudyError::refused(
-            root,
-            "this path has no name of its own",
-            remedy,
-        ));
+        return Err(StudyError::refused(root, "this path has no name of its own", remedy));
     };
     let mut pending = std::ffi::OsString::from(PENDING);
     pending.push(name);
@@ -489,11 +362,7 @@ fn pending_beside(root: &Path) -> Result<PathBuf, StudyError> {
 }
 
 fn clear_pending_seal(world: &dyn World, pending: &Path) -> Result<(), StudyError> {
-    let look = |path: &Path| {
-        world
-            .kind(path, Links::Report)
-            .map_err(StudyError::machine("look at", path))
-    };
+    let look = |path: &Path| world.kind(path, Links::Report).map_err(StudyError::machine("look at", path));
     let foreign = || {
         let why = "this name is needed while a study folder is built, and something else has it";
         StudyError::refused(pending, why, "Move it away and try again")
@@ -503,17 +372,10 @@ fn clear_pending_seal(world: &dyn World, pending: &Path) -> Result<(), StudyErro
         Kind::Folder => {}
         _ => return Err(foreign()),
     }
-    let names = world
-        .list(pending)
-        .map_err(StudyError::machine("list", pending))?;
-    if names
-        .iter()
-        .any(|name| ![LOCK, LEDGER, "plans"].contains(&name.as_str()))
-    {
+    let names = world.list(pending).map_err(StudyError::machine("list", pending))?;
+    if names.iter().any(|name| ![LOCK, LEDGER, "plans"].contains(&name.as_str())) {
         return Err(foreign());
     }
     let _lock = take_lock(world, pending)?;
-    world
-        .remove_tree(pending)
-        .map_err(StudyError::machine("clear", pending))
+    world.remove_tree(pending).map_err(StudyError::machine("clear", pending))
 }

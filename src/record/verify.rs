@@ -24,33 +24,19 @@ pub(super) struct Reader<'a> {
 
 impl<'a> Reader<'a> {
     pub fn new(world: &'a dyn World, root: &Path) -> Self {
-        Self {
-            world,
-            root: root.to_path_buf(),
-            defects: Vec::new(),
-        }
+        Self { world, root: root.to_path_buf(), defects: Vec::new() }
     }
 
     pub fn defect(&mut self, place: &str, kind: DefectKind) {
         let place = if place.is_empty() { "." } else { place };
-        self.defects.push(Defect {
-            place: place.to_owned(),
-            line: None,
-            kind,
-        });
+        self.defects.push(Defect { place: place.to_owned(), line: None, kind });
     }
 
     fn kind(&self, place: &str) -> Result<Kind, StudyError> {
         // The user may well give the study folder itself through a link.
-        let links = if place.is_empty() {
-            Links::Follow
-        } else {
-            Links::Report
-        };
+        let links = if place.is_empty() { Links::Follow } else { Links::Report };
         let path = at(&self.root, place);
-        self.world
-            .kind(&path, links)
-            .map_err(StudyError::machine("look at", &path))
+        self.world.kind(&path, links).map_err(StudyError::machine("look at", &path))
     }
 
     /// Whether every folder on the way to a place is a folder and no link; a link is a defect.
@@ -141,12 +127,7 @@ impl<'a> Reader<'a> {
     }
 
     /// Requires a regular file with this hash; reads it in pieces.
-    pub fn hashed_file(
-        &mut self,
-        place: &str,
-        expected: Digest,
-        written_in: &'static str,
-    ) -> Result<(), StudyError> {
+    pub fn hashed_file(&mut self, place: &str, expected: Digest, written_in: &'static str) -> Result<(), StudyError> {
         if self.regular_file(place)?.is_some() {
             let found = hash_file(self.world, &at(&self.root, place))?;
             self.compare(place, expected, found, written_in);
@@ -156,28 +137,16 @@ impl<'a> Reader<'a> {
 
     fn compare(&mut self, place: &str, expected: Digest, found: Digest, written_in: &'static str) {
         if found != expected {
-            self.defect(
-                place,
-                DefectKind::HashDiffers {
-                    expected,
-                    found,
-                    written_in,
-                },
-            );
+            self.defect(place, DefectKind::HashDiffers { expected, found, written_in });
         }
     }
 
     fn form<T>(&mut self, place: &str, read: Result<T, CanonError>) -> Option<T> {
-        read.map_err(|error| self.defect(place, DefectKind::Form(error)))
-            .ok()
+        read.map_err(|error| self.defect(place, DefectKind::Form(error))).ok()
     }
 
     /// A sealed plan; `None`, with a defect, if anything in its folder is not as sealed.
-    pub fn plan(
-        &mut self,
-        place: &str,
-        seal_hash: Digest,
-    ) -> Result<Option<SealedFolder>, StudyError> {
+    pub fn plan(&mut self, place: &str, seal_hash: Digest) -> Result<Option<SealedFolder>, StudyError> {
         let before = self.defects.len();
         let inside = |name: &str| format!("{place}/{name}");
         let names = self.folder(place)?.unwrap_or_default();
@@ -191,30 +160,15 @@ impl<'a> Reader<'a> {
         let Some(bytes) = self.file(&inside("seal.json"), limit::SEAL)? else {
             return Ok(None);
         };
-        self.compare(
-            &inside("seal.json"),
-            seal_hash,
-            sha256(&bytes),
-            "the ledger",
-        );
+        self.compare(&inside("seal.json"), seal_hash, sha256(&bytes), "the ledger");
         let Some(seal) = self.form(&inside("seal.json"), Seal::read(&bytes)) else {
             return Ok(None);
         };
         if let Some(source) = &source {
-            self.compare(
-                &inside("plan.yaml"),
-                seal.sha256,
-                sha256(source),
-                "its seal",
-            );
+            self.compare(&inside("plan.yaml"), seal.sha256, sha256(source), "its seal");
         }
         if let Some(resolved) = &resolved {
-            self.compare(
-                &inside("resolved.json"),
-                seal.meaning,
-                sha256(resolved),
-                "its seal",
-            );
+            self.compare(&inside("resolved.json"), seal.meaning, sha256(resolved), "its seal");
             let form = json::from_file_bytes::<IgnoredAny>(resolved);
             self.form(&inside("resolved.json"), form);
         }
@@ -231,24 +185,14 @@ impl<'a> Reader<'a> {
         }
         match (source, resolved) {
             (Some(source), Some(resolved)) if self.defects.len() == before => {
-                Ok(Some(SealedFolder {
-                    seal,
-                    seal_hash,
-                    source,
-                    resolved,
-                    templates,
-                }))
+                Ok(Some(SealedFolder { seal, seal_hash, source, resolved, templates }))
             }
             _ => Ok(None),
         }
     }
 
     /// The manifest of a record or rehearsal, whose folder must hold exactly the files listed, each of the length listed.
-    pub fn output(
-        &mut self,
-        place: &str,
-        manifest_hash: Digest,
-    ) -> Result<Option<Manifest>, StudyError> {
+    pub fn output(&mut self, place: &str, manifest_hash: Digest) -> Result<Option<Manifest>, StudyError> {
         // Where the folder itself is no folder there is nothing to read behind it.
         if self.folder(place)?.is_none() {
             return Ok(None);
@@ -266,16 +210,8 @@ impl<'a> Reader<'a> {
     }
 
     /// Requires a folder to hold exactly these files, besides `own`.
-    fn listing(
-        &mut self,
-        place: &str,
-        entries: &[FileEntry],
-        own: &[&str],
-    ) -> Result<(), StudyError> {
-        let expected: BTreeMap<&str, u64> = entries
-            .iter()
-            .map(|entry| (entry.path.as_str(), entry.size))
-            .collect();
+    fn listing(&mut self, place: &str, entries: &[FileEntry], own: &[&str]) -> Result<(), StudyError> {
+        let expected: BTreeMap<&str, u64> = entries.iter().map(|entry| (entry.path.as_str(), entry.size)).collect();
         let mut found = BTreeSet::new();
         self.walk(place, "", &mut found, 0)?;
         for path in &found {
@@ -288,13 +224,7 @@ impl<'a> Reader<'a> {
                 None => self.defect(&full, DefectKind::Unlisted),
                 Some(size) => {
                     if let Some(found) = self.regular_file(&full)?.filter(|found| found != size) {
-                        self.defect(
-                            &full,
-                            DefectKind::SizeDiffers {
-                                expected: *size,
-                                found,
-                            },
-                        );
+                        self.defect(&full, DefectKind::SizeDiffers { expected: *size, found });
                     }
                 }
             }
@@ -306,28 +236,14 @@ impl<'a> Reader<'a> {
     }
 
     /// Every path under a folder that is not itself a folder with something in it.
-    fn walk(
-        &mut self,
-        place: &str,
-        under: &str,
-        found: &mut BTreeSet<String>,
-        depth: usize,
-    ) -> Result<(), StudyError> {
-        let folder = if under.is_empty() {
-            place.to_owned()
-        } else {
-            format!("{place}/{under}")
-        };
+    fn walk(&mut self, place: &str, under: &str, found: &mut BTreeSet<String>, depth: usize) -> Result<(), StudyError> {
+        let folder = if under.is_empty() { place.to_owned() } else { format!("{place}/{under}") };
         let names = self.folder(&folder)?.unwrap_or_default();
         if names.is_empty() && !under.is_empty() {
             found.insert(under.to_owned());
         }
         for name in names {
-            let path = if under.is_empty() {
-                name
-            } else {
-                format!("{under}/{name}")
-            };
+            let path = if under.is_empty() { name } else { format!("{under}/{name}") };
             match self.kind(&format!("{place}/{path}"))? {
                 Kind::Folder if depth < DEEPEST => self.walk(place, &path, found, depth + 1)?,
                 _ => {
@@ -341,9 +257,7 @@ impl<'a> Reader<'a> {
 
 /// The hash of a file, read in pieces.
 pub(super) fn hash_file(world: &dyn World, path: &Path) -> Result<Digest, StudyError> {
-    let mut source = world
-        .open(path)
-        .map_err(StudyError::machine("open", path))?;
+    let mut source = world.open(path).map_err(StudyError::machine("open", path))?;
     let mut hasher = Hasher::new();
     let mut buffer = vec![0; 1 << 18];
     loop {

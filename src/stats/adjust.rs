@@ -75,10 +75,7 @@ pub fn adjust(procedure: Procedure, p: &[Option<f64>]) -> Vec<Option<f64>> {
         }
         Procedure::FixedSequence => running_maximum(&counted),
     };
-    p.iter()
-        .zip(adjusted)
-        .map(|(&p, a)| probability(p).map(|_| a.min(1.0)))
-        .collect()
+    p.iter().zip(adjusted).map(|(&p, a)| probability(p).map(|_| a.min(1.0))).collect()
 }
 
 fn probability(p: Option<f64>) -> Option<f64> {
@@ -138,9 +135,7 @@ fn hommel(p: &[f64]) -> Vec<f64> {
     let m = sorted.len();
     let simes = |values: &[f64], size: f64, first_rank: usize| {
         let ranked = values.iter().enumerate();
-        ranked
-            .map(|(k, v)| size * v / (first_rank + k) as f64)
-            .fold(f64::INFINITY, f64::min)
+        ranked.map(|(k, v)| size * v / (first_rank + k) as f64).fold(f64::INFINITY, f64::min)
     };
     let mut values = vec![simes(&sorted, m as f64, 1); m];
     for size in (2..m).rev() {

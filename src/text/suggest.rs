@@ -40,6 +40,8 @@ pub fn same_but_for_case_or_space(one: &str, other: &str) -> bool {
     one != other && fold(one) == fold(other)
 }
 
-fn fold(name: &str) -> String {
+/// A name without what is easily mistyped (case, white space, dashes): equal for names that a person may take for one, so
+/// that many names are compared by sorting these.
+pub fn fold(name: &str) -> String {
     name.split_whitespace().collect::<Vec<_>>().join(" ").replace(['_', '-'], " ").to_lowercase()
 }

@@ -44,12 +44,8 @@ impl Disk {
                 self.dead = true;
                 Ok(Allowed::Half(io::Error::other("killed")))
             }
-            Some((at, Fault::DiskFull)) if self.writes >= at && adds => {
-                Ok(Allowed::Half(io::ErrorKind::StorageFull.into()))
-            }
-            Some((at, Fault::ReadOnly)) if self.writes >= at => {
-                Err(io::ErrorKind::PermissionDenied.into())
-            }
+            Some((at, Fault::DiskFull)) if self.writes >= at && adds => Ok(Allowed::Half(io::ErrorKind::StorageFull.into())),
+            Some((at, Fault::ReadOnly)) if self.writes >= at => Err(io::ErrorKind::PermissionDenied.into()),
             _ => Ok(Allowed::All),
         }
     }
@@ -63,11 +59,7 @@ impl Disk {
     }
 
     fn alive(&self) -> io::Result<()> {
-        if self.dead {
-            Err(io::Error::other("killed"))
-        } else {
-            Ok(())
-        }
+        if self.dead { Err(io::Error::other("killed")) } else { Ok(()) }
     }
 }
 
@@ -183,19 +175,12 @@ impl World for FaultWorld {
     fn create_file(&self, path: &Path) -> io::Result<Box<dyn NewFile>> {
         self.disk().whole(true)?;
         let file = OpenOptions::new().write(true).create_new(true).open(path)?;
-        Ok(Box::new(FaultFile {
-            file,
-            disk: self.disk.clone(),
-        }))
+        Ok(Box::new(FaultFile { file, disk: self.disk.clone() }))
     }
 
     fn append(&self, path: &Path, bytes: &[u8]) -> io::Result<()> {
         let allowed = self.disk().write(true)?;
-        halved(
-            &mut OpenOptions::new().append(true).open(path)?,
-            bytes,
-            allowed,
-        )
+        halved(&mut OpenOptions::new().append(true).open(path)?, bytes, allowed)
     }
 
     fn truncate(&self, path: &Path, length: u64) -> io::Result<()> {
@@ -217,10 +202,7 @@ impl World for FaultWorld {
         match self.disk().write(false)? {
             Allowed::All => RealWorld.remove_tree(folder),
             Allowed::Half(error) => {
-                let first = RealWorld
-                    .list(folder)?
-                    .first()
-                    .map(|name| folder.join(name));
+                let first = RealWorld.list(folder)?.first().map(|name| folder.join(name));
                 if let Some(path) = first {
                     match RealWorld.kind(&path, Links::Report)? {
                         Kind::Folder => RealWorld.remove_tree(&path)?,
@@ -234,12 +216,7 @@ impl World for FaultWorld {
 
     fn sync_folder(&self, folder: &Path) -> io::Result<()> {
         self.disk().whole(false)?;
-        assert_eq!(
-            RealWorld.kind(folder, Links::Follow)?,
-            Kind::Folder,
-            "{}",
-            folder.display()
-        );
+        assert_eq!(RealWorld.kind(folder, Links::Follow)?, Kind::Folder, "{}", folder.display());
         Ok(())
     }
 

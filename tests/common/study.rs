@@ -33,36 +33,22 @@ pub fn seal<'w>(world: &'w dyn World, root: &Path) -> Result<Study<'w>, StudyErr
 }
 
 pub fn files() -> BTreeMap<String, Vec<u8>> {
-    [
-        "decisions.jsonl",
-        "figures/01-means.svg",
-        "report.md",
-        "results.json",
-    ]
-    .map(|name| (name.to_owned(), format!("{name}\n").into_bytes()))
-    .into()
+    ["decisions.jsonl", "figures/01-means.svg", "report.md", "results.json"]
+        .map(|name| (name.to_owned(), format!("{name}\n").into_bytes()))
+        .into()
 }
 
 pub fn run<'w>(world: &'w dyn World, root: &Path) -> Result<Committed<'w>, StudyError> {
     let mut study = Study::open(world, root)?;
-    let mut reading = study
-        .receive(Copying::Keep)?
-        .reading(Path::new("visits.csv"), DATA);
+    let mut reading = study.receive(Copying::Keep)?.reading(Path::new("visits.csv"), DATA);
     let mut header = [0; 11];
-    reading
-        .read_exact(&mut header)
-        .expect("a copy that fails must not disturb the reader");
+    reading.read_exact(&mut header).expect("a copy that fails must not disturb the reader");
     let data = reading.finish()?;
     let mut unblinded = study.log_unblinded(Opens::Allocation)?;
     let mut incoming = unblinded.receive(Copying::Keep)?;
     io::copy(&mut &ALLOCATION[..], &mut incoming).unwrap();
     let allocation = Some(incoming.finish()?);
-    let facts = RunFacts {
-        data,
-        allocation,
-        content: sha256(b"content"),
-        decisions: sha256(b"decisions"),
-    };
+    let facts = RunFacts { data, allocation, content: sha256(b"content"), decisions: sha256(b"decisions") };
     unblinded.commit(facts, files())
 }
 
@@ -87,12 +73,7 @@ pub fn complete(root: &Path) -> StudyState {
 }
 
 pub fn kinds(state: &StudyState) -> Vec<&'static str> {
-    state
-        .ledger
-        .events
-        .iter()
-        .map(|event| event.what.kind())
-        .collect()
+    state.ledger.events.iter().map(|event| event.what.kind()).collect()
 }
 
 pub fn names(folder: &Path) -> Vec<String> {
@@ -115,9 +96,7 @@ pub fn recorded() -> (TempDir, PathBuf) {
 }
 
 pub fn file(root: &Path, place: &str) -> Vec<u8> {
-    FaultWorld::sound()
-        .read(&root.join(place), 1 << 20)
-        .unwrap()
+    FaultWorld::sound().read(&root.join(place), 1 << 20).unwrap()
 }
 
 pub fn text(root: &Path, place: &str) -> String {

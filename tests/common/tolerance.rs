@@ -22,11 +22,7 @@ pub const NONCENTRALITY_LIMIT: f64 = 1e-8;
 
 /// |got - want| / |want|, or |got| where 0 is wanted; infinite for a NaN.
 pub fn relative_error(got: f64, want: f64) -> f64 {
-    let error = if want == 0.0 {
-        got.abs()
-    } else {
-        ((got - want) / want).abs()
-    };
+    let error = if want == 0.0 { got.abs() } else { ((got - want) / want).abs() };
     if error.is_nan() { f64::INFINITY } else { error }
 }
 

@@ -24,7 +24,13 @@ pub(super) fn condition(reader: &Reader<'_>, node: &Node, references: &Reference
             EITHER => {
                 let items = reader.list(&entry.node, "`either`")?;
                 if items.len() < 2 {
-                    reader.error("missing-key", entry.node.span, "`either` needs two alternatives or more", "here", "list the alternatives, or write the one without `either`");
+                    reader.error(
+                        "missing-key",
+                        entry.node.span,
+                        "`either` needs two alternatives or more",
+                        "here",
+                        "list the alternatives, or write the one without `either`",
+                    );
                     return None;
                 }
                 let alternatives: Vec<Option<Condition>> = items.iter().map(|item| condition(reader, item, references)).collect();
@@ -63,7 +69,10 @@ fn wrong_verdict(reader: &Reader<'_>, word: &str, span: Span, known: &Known, all
          otherwise say `above zero` or `below zero`"
             .to_owned()
     } else {
+        // `insignificant` is nearer to `significant` by letters, and the contrary by meaning.
+        let negated = ["in", "non", "un", "not"].iter().any(|start| word.starts_with(start)) && word.contains("signif");
         match nearest(word, allowed.iter().map(String::as_str)) {
+            _ if negated && allowed.iter().any(|word| word == "not significant") => "did you mean `not significant`?".to_owned(),
             Some(near) => format!("did you mean `{near}`?"),
             None => format!("it may be: {}", allowed.join(", ")),
         }
@@ -96,7 +105,13 @@ pub(super) fn choice<T>(
         match (fields.get("otherwise"), fields.get("when"), fields.get("use")) {
             (Some(value), None, None) if last => otherwise = read(value),
             (Some(_), None, None) => {
-                reader.error("case-unreachable", item.span, format!("cases of {what} after `otherwise` are never reached"), "this catches everything", "put `otherwise` last");
+                reader.error(
+                    "case-unreachable",
+                    item.span,
+                    format!("cases of {what} after `otherwise` are never reached"),
+                    "this catches everything",
+                    "put `otherwise` last",
+                );
                 sound = false;
             }
             (None, Some(when), Some(value)) => match condition(reader, when, references).zip(read(value)) {
@@ -115,7 +130,7 @@ pub(super) fn choice<T>(
             }
         }
     }
-    if sound && otherwise.is_none() && !items.last().is_some_and(|item| item.get("otherwise").is_some()) {
+    if sound && otherwise.is_none() && items.last().is_none_or(|item| item.get("otherwise").is_none()) {
         reader.error(
             "case-without-otherwise",
             reader.first_line(node.span),

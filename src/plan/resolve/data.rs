@@ -8,7 +8,17 @@ use crate::plan::syntax::tree::{Entry, Node, Value};
 use crate::text::source::Span;
 
 const DATA_KEYS: &[&str] = &[
-    "layout", "subject", "occasions", "values", "allocation", "arms", "missing values", "expected subjects", "columns", "separator", "decimal",
+    "layout",
+    "subject",
+    "occasions",
+    "values",
+    "allocation",
+    "arms",
+    "missing values",
+    "expected subjects",
+    "columns",
+    "separator",
+    "decimal",
 ];
 
 pub(super) fn data(reader: &Reader<'_>, node: &Node, design: &Design) -> Option<DataPlan> {
@@ -24,14 +34,27 @@ pub(super) fn data(reader: &Reader<'_>, node: &Node, design: &Design) -> Option<
     }
     let fields = reader.map(node, "`data`", DATA_KEYS, &["trials"])?;
     let what = "`data`";
-    let layout = reader.required(&fields, "layout", what, "write `layout: long` (a row per subject and occasion) or `layout: wide` (a row per subject)");
+    let layout = reader.required(
+        &fields,
+        "layout",
+        what,
+        "write `layout: long` (a row per subject and occasion) or `layout: wide` (a row per subject)",
+    );
     let wide = layout.and_then(|node| reader.word(node, "`layout`", &[("long", false), ("wide", true)], &[]));
-    let subject = reader.required(&fields, "subject", what, "name the column that identifies the subject").and_then(|node| reader.text(node, "`subject`"));
+    let subject = reader
+        .required(&fields, "subject", what, "name the column that identifies the subject")
+        .and_then(|node| reader.text(node, "`subject`"));
     let values = reader.required(&fields, "values", what, "say in which column each outcome stands");
     let layout = match (wide, values) {
         (Some(true), Some(values)) => {
             if let Some(entry) = fields.entry("occasions") {
-                reader.error("misplaced-key", entry.key_span, "a wide file has no column of occasions", "only for `layout: long`", "name the column of each occasion under `values`");
+                reader.error(
+                    "misplaced-key",
+                    entry.key_span,
+                    "a wide file has no column of occasions",
+                    "only for `layout: long`",
+                    "name the column of each occasion under `values`",
+                );
             }
             wide_values(reader, values, design).map(|values| Layout::Wide { values })
         }
@@ -86,7 +109,13 @@ fn one_character(reader: &Reader<'_>, fields: &Fields<'_>, key: &str, default: c
         Some(character) => Some(character),
         None => {
             let list: Vec<String> = allowed.iter().map(|c| if *c == '\t' { "tab".to_owned() } else { format!("\"{c}\"") }).collect();
-            reader.error("unknown-word", node.span, format!("`{text}` cannot be the {key}"), "here", format!("it may be: {}", list.join(", ")));
+            reader.error(
+                "unknown-word",
+                node.span,
+                format!("`{text}` cannot be the {key}"),
+                "here",
+                format!("it may be: {}", list.join(", ")),
+            );
             None
         }
     }
@@ -96,17 +125,18 @@ fn allocation(reader: &Reader<'_>, fields: &Fields<'_>, design: &Design) -> Opti
     let entry = fields.entry("allocation");
     if design.between.is_empty() {
         if let Some(entry) = entry {
-            reader.error("misplaced-key", entry.key_span, "a design without between factors has no allocation", "not needed", "remove it, or name the arms under `design: between`");
+            reader.error(
+                "misplaced-key",
+                entry.key_span,
+                "a design without between factors has no allocation",
+                "not needed",
+                "remove it, or name the arms under `design: between`",
+            );
         }
         return Some(AllocationPlace::NoArms);
     }
     let node = reader.required(fields, "allocation", "`data`", "write `allocation: separate file` or `allocation: in the data`")?;
-    reader.word(
-        node,
-        "`allocation`",
-        &[("separate file", AllocationPlace::SeparateFile), ("in the data", AllocationPlace::InTheData)],
-        &[],
-    )
+    reader.word(node, "`allocation`", &[("separate file", AllocationPlace::SeparateFile), ("in the data", AllocationPlace::InTheData)], &[])
 }
 
 /// The column of each factor of a side, in design order.
@@ -135,7 +165,13 @@ fn columns_of_factors(reader: &Reader<'_>, fields: &Fields<'_>, key: &str, facto
         match column {
             Some(column) => columns.push(ColumnOf { name: (*name).to_owned(), column }),
             None if sound => {
-                reader.error("missing-key", reader.first_line(node.span), format!("`{key}` lacks the {what} `{name}`"), "missing here", "name its column");
+                reader.error(
+                    "missing-key",
+                    reader.first_line(node.span),
+                    format!("`{key}` lacks the {what} `{name}`"),
+                    "missing here",
+                    "name its column",
+                );
                 sound = false;
             }
             None => {}
@@ -173,9 +209,8 @@ fn wide_values(reader: &Reader<'_>, node: &Node, design: &Design) -> Option<Vec<
                 let column = reader.text(&entry.node, &format!("the column of `{}`", entry.key))?;
                 return Some(WideValues { name: entry.key.clone(), columns: vec![column.to_owned()] });
             }
-            let found = by_cell(reader, &entry.node, &design.within, "occasion", &mut |node| {
-                reader.text(node, "a column").map(str::to_owned)
-            })?;
+            let found =
+                by_cell(reader, &entry.node, &design.within, "occasion", &mut |node| reader.text(node, "a column").map(str::to_owned))?;
             complete(reader, &entry.node, &design.within, found, "occasion").map(|columns| WideValues { name: entry.key.clone(), columns })
         })
         .collect();
@@ -256,7 +291,13 @@ fn expected_subjects(reader: &Reader<'_>, node: &Node, design: &Design) -> Optio
     let mut count = |node: &Node| {
         let number = reader.number(node, "a number of subjects")?;
         if number < 0.0 || libm::trunc(number) != number || number > 1e9 {
-            reader.error("wrong-type", node.span, "a number of subjects must be a whole number", "here", "write a whole number, zero or more");
+            reader.error(
+                "wrong-type",
+                node.span,
+                "a number of subjects must be a whole number",
+                "here",
+                "write a whole number, zero or more",
+            );
             return None;
         }
         Some(number as u64)
@@ -297,7 +338,10 @@ fn missing_values(reader: &Reader<'_>, node: &Node) -> Option<Vec<String>> {
 
 fn column_checks(reader: &Reader<'_>, node: &Node) -> Vec<ColumnCheck> {
     let entries = reader.entries(node, "`columns`", "a map of columns to checks").unwrap_or(&[]);
-    entries.iter().filter_map(|entry| Some(ColumnCheck { column: entry.key.clone(), kind: column_kind(reader, &entry.node, &entry.key)? })).collect()
+    entries
+        .iter()
+        .filter_map(|entry| Some(ColumnCheck { column: entry.key.clone(), kind: column_kind(reader, &entry.node, &entry.key)? }))
+        .collect()
 }
 
 fn column_kind(reader: &Reader<'_>, node: &Node, column: &str) -> Option<ColumnKind> {
@@ -332,43 +376,61 @@ fn range(reader: &Reader<'_>, node: &Node) -> Option<[f64; 2]> {
     }
 }
 
-/// The outcomes that have values in the data, in their order there.
-pub(super) fn outcomes(reader: &Reader<'_>, node: Option<&Node>, data: &DataPlan) -> Option<Vec<Outcome>> {
-    let names: Vec<&str> = match &data.layout {
-        Layout::Long { values, .. } => values.iter().map(|value| value.name.as_str()).collect(),
-        Layout::Wide { values } => values.iter().map(|value| value.name.as_str()).collect(),
-    };
+/// The outcomes that have values in the data, in their order there; they are known even where the rest of `data` is in error.
+pub(super) fn outcomes(reader: &Reader<'_>, node: Option<&Node>, data: &Node) -> Option<Vec<Outcome>> {
+    let names: Vec<&str> = data.get("values")?.map()?.iter().map(|entry| entry.key.as_str()).collect();
+    if names.is_empty() {
+        return None;
+    }
     let mut outcomes: Vec<Outcome> = names
         .iter()
-        .map(|name| Outcome { name: (*name).to_owned(), label: (*name).to_owned(), unit: None, range: None, better: None, smallest_worthwhile_difference: None })
+        .map(|name| Outcome {
+            name: (*name).to_owned(),
+            label: (*name).to_owned(),
+            unit: None,
+            range: None,
+            better: None,
+            smallest_worthwhile_difference: None,
+        })
         .collect();
     let Some(node) = node else { return Some(outcomes) };
-    let mut sound = true;
-    for entry in reader.entries(node, "`outcomes`", "a map of outcomes")? {
+    for entry in reader.entries(node, "`outcomes`", "a map of outcomes").unwrap_or(&[]) {
         let found = reader.name(&entry.key, entry.key_span, "outcome with values in `data`", &names);
-        match found.and_then(|place| Some((place, outcome(reader, entry)?))) {
-            Some((place, outcome)) => outcomes[place] = outcome,
-            None => sound = false,
+        if let Some((place, outcome)) = found.and_then(|place| Some((place, outcome(reader, entry)?))) {
+            outcomes[place] = outcome;
         }
     }
-    sound.then_some(outcomes)
+    Some(outcomes)
 }
 
 fn outcome(reader: &Reader<'_>, entry: &Entry) -> Option<Outcome> {
     let what = format!("outcome `{}`", entry.key);
     let keys = ["label", "unit", "range", "better", "smallest worthwhile difference"];
     if entry.node.value == Value::Null {
-        return Some(Outcome { name: entry.key.clone(), label: entry.key.clone(), unit: None, range: None, better: None, smallest_worthwhile_difference: None });
+        return Some(Outcome {
+            name: entry.key.clone(),
+            label: entry.key.clone(),
+            unit: None,
+            range: None,
+            better: None,
+            smallest_worthwhile_difference: None,
+        });
     }
     let fields = reader.map(&entry.node, &what, &keys, &[])?;
-    let better = fields.get("better").map_or(Some(None), |node| {
-        reader.word(node, "`better`", &[("lower", Better::Lower), ("higher", Better::Higher)], &[]).map(Some)
-    });
+    let better = fields
+        .get("better")
+        .map_or(Some(None), |node| reader.word(node, "`better`", &[("lower", Better::Lower), ("higher", Better::Higher)], &[]).map(Some));
     let range = fields.get("range").map_or(Some(None), |node| range(reader, node).map(Some));
     let worthwhile = fields.get("smallest worthwhile difference").map_or(Some(None), |node| {
         let value = reader.number(node, "`smallest worthwhile difference`")?;
         if value <= 0.0 {
-            reader.error("wrong-range", node.span, "a smallest worthwhile difference must be above zero", "here", "its direction comes from `better:`");
+            reader.error(
+                "wrong-range",
+                node.span,
+                "a smallest worthwhile difference must be above zero",
+                "here",
+                "its direction comes from `better:`",
+            );
             return None;
         }
         Some(Some(value))

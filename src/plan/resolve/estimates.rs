@@ -19,7 +19,13 @@ pub(super) fn complement(level: f64) -> f64 {
     ((1.0 - level) * 1e12).round() / 1e12
 }
 
-pub(super) fn estimate(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, context: &Context<'_>, references: &References<'_>) -> Option<Estimate> {
+pub(super) fn estimate(
+    reader: &Reader<'_>,
+    fields: &Fields<'_>,
+    id: &str,
+    context: &Context<'_>,
+    references: &References<'_>,
+) -> Option<Estimate> {
     let node = fields.get("estimate")?;
     let words = [("cell means", 0), ("standardized change", 1), ("variance explained", 2)];
     let what = reader.word(node, "`estimate`", &words, LATER)?;
@@ -56,7 +62,13 @@ fn interval_level(reader: &Reader<'_>, fields: &Fields<'_>, keys: &[&str], defau
     let Some(node) = interval.get("level") else { return Some(default) };
     let level = probability(reader, node, "the level of an interval")?;
     if level < 0.5 {
-        reader.error("wrong-range", node.span, format!("{level} is a low level of confidence for an interval"), "here", format!("a level is the coverage, such as {default}, not the error"));
+        reader.error(
+            "wrong-range",
+            node.span,
+            format!("{level} is a low level of confidence for an interval"),
+            "here",
+            format!("a level is the coverage, such as {default}, not the error"),
+        );
         return None;
     }
     Some(level)
@@ -80,7 +92,13 @@ fn cell_means(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, context: &Cont
     Some(Estimate::CellMeans { level, items })
 }
 
-fn standardized_change(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, context: &Context<'_>, references: &References<'_>) -> Option<Estimate> {
+fn standardized_change(
+    reader: &Reader<'_>,
+    fields: &Fields<'_>,
+    id: &str,
+    context: &Context<'_>,
+    references: &References<'_>,
+) -> Option<Estimate> {
     let words = [
         ("average sd", Standardizer::AverageSd),
         ("root mean square sd", Standardizer::RootMeanSquareSd),
@@ -89,16 +107,31 @@ fn standardized_change(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, conte
         ("change sd, correlation removed", Standardizer::ChangeSdCorrelationRemoved),
     ];
     let standardizer = reader
-        .required(fields, "standardizer", "the estimate", "say what divides the change: the choice moves the answer, and there is no default")
+        .required(
+            fields,
+            "standardizer",
+            "the estimate",
+            "say what divides the change: the choice moves the answer, and there is no default",
+        )
         .and_then(|node| choice(reader, node, references, "`standardizer`", &mut |node| reader.word(node, "`standardizer`", &words, &[])));
-    let words = [("no", SmallSample::No), ("yes", SmallSample::Yes), ("approximate", SmallSample::Approximate), ("both", SmallSample::Both)];
+    let words =
+        [("no", SmallSample::No), ("yes", SmallSample::Yes), ("approximate", SmallSample::Approximate), ("both", SmallSample::Both)];
     let small_sample_correction = fields.get("small-sample correction").map_or(Some(Choice::Fixed(SmallSample::No)), |node| {
-        choice(reader, node, references, "`small-sample correction`", &mut |node| reader.word(node, "`small-sample correction`", &words, &[]))
+        choice(reader, node, references, "`small-sample correction`", &mut |node| {
+            reader.word(node, "`small-sample correction`", &words, &[])
+        })
     });
     let level = interval_level(reader, fields, &["level", "method"], complement(context.alpha));
     let method = fields.get("interval").and_then(|node| node.get("method")).map(|node| {
-        let words = [("bonett", ChangeIntervalMethod::Bonett), ("noncentral t", ChangeIntervalMethod::NoncentralT), ("noncentral-t", ChangeIntervalMethod::NoncentralT), ("none", ChangeIntervalMethod::None)];
-        choice(reader, node, references, "`method` of the interval", &mut |node| reader.word(node, "`method` of the interval", &words, &["bca", "bootstrap"]))
+        let words = [
+            ("bonett", ChangeIntervalMethod::Bonett),
+            ("noncentral t", ChangeIntervalMethod::NoncentralT),
+            ("noncentral-t", ChangeIntervalMethod::NoncentralT),
+            ("none", ChangeIntervalMethod::None),
+        ];
+        choice(reader, node, references, "`method` of the interval", &mut |node| {
+            reader.word(node, "`method` of the interval", &words, &["bca", "bootstrap"])
+        })
     });
     let items = changes(reader, fields, id, context);
     let standardizer = standardizer?;
@@ -139,14 +172,26 @@ fn changes(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, context: &Context
     let (split, node) = (split?, node?);
     groups?;
     let [(place, pairs)] = split.as_slice() else {
-        reader.error("wrong-type", node.span, "a change runs over one within factor", "several here", "split one factor; the others are averaged over");
+        reader.error(
+            "wrong-type",
+            node.span,
+            "a change runs over one within factor",
+            "several here",
+            "split one factor; the others are averaged over",
+        );
         return None;
     };
     let mut items = Vec::new();
     for pair in pairs {
         let FactorPart::Weights(weights) = &pair.part else { continue };
         let Some((first, second)) = pair_of(weights) else {
-            reader.error("wrong-type", node.span, "a standardized change compares two occasions", "a contrast of several here", "use `all pairs`, `adjacent pairs` or `against LEVEL`");
+            reader.error(
+                "wrong-type",
+                node.span,
+                "a standardized change compares two occasions",
+                "a contrast of several here",
+                "use `all pairs`, `adjacent pairs` or `against LEVEL`",
+            );
             return None;
         };
         let score = |level: &str| -> Vec<FactorPart> {
@@ -185,18 +230,35 @@ fn within_each(reader: &Reader<'_>, fields: &Fields<'_>, context: &Context<'_>) 
         if between.is_empty() {
             return Some(());
         }
-        reader.required(fields, "within each", "the estimate", &format!("a change is standardized within each arm: write `within each: {}`", names.join(" by ")));
+        reader.required(
+            fields,
+            "within each",
+            "the estimate",
+            &format!("a change is standardized within each arm: write `within each: {}`", names.join(" by ")),
+        );
         return None;
     };
     let chosen = effect(reader, reader.text(node, "`within each`")?, node.span, &names)?;
     if chosen.len() != between.len() {
-        reader.error("wrong-type", node.span, "standard deviations are taken within each cell of the between factors", "not all of them", format!("write `within each: {}`", names.join(" by ")));
+        reader.error(
+            "wrong-type",
+            node.span,
+            "standard deviations are taken within each cell of the between factors",
+            "not all of them",
+            format!("write `within each: {}`", names.join(" by ")),
+        );
         return None;
     }
     Some(())
 }
 
-fn variance_explained(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, context: &Context<'_>, references: &References<'_>) -> Option<Estimate> {
+fn variance_explained(
+    reader: &Reader<'_>,
+    fields: &Fields<'_>,
+    id: &str,
+    context: &Context<'_>,
+    references: &References<'_>,
+) -> Option<Estimate> {
     let level = interval_level(reader, fields, &["level"], complement(2.0 * context.alpha));
     let kinds = kinds(reader, fields);
     let names = context.factor_names();
@@ -208,7 +270,8 @@ fn variance_explained(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, contex
             measured_factors.push(name.to_owned());
         }
     }
-    let node = reader.required(fields, "of", "the estimate", "list the tests whose share of variance is wanted, such as `of: [omnibus]`")?;
+    let node =
+        reader.required(fields, "of", "the estimate", "list the tests whose share of variance is wanted, such as `of: [omnibus]`")?;
     let mut of = Vec::new();
     for (reference, span) in reader.texts(node, "a reference") {
         match references.look_up(reader, reference, span) {
@@ -216,7 +279,11 @@ fn variance_explained(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, contex
             Some(known) => match known.kind {
                 Kind::One { .. } => of.push(known.reference.clone()),
                 Kind::Several => of.extend(
-                    references.all().iter().filter(|other| other.step == known.step && matches!(other.kind, Kind::One { .. })).map(|other| other.reference.clone()),
+                    references
+                        .all()
+                        .iter()
+                        .filter(|other| other.step == known.step && matches!(other.kind, Kind::One { .. }))
+                        .map(|other| other.reference.clone()),
                 ),
                 Kind::Screen | Kind::Estimate => {
                     reader.error("wrong-type", span, format!("{} explains no variance", known.in_words()), "not a test", "name a test");
@@ -231,8 +298,12 @@ fn variance_explained(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, contex
 }
 
 fn kinds(reader: &Reader<'_>, fields: &Fields<'_>) -> Option<Vec<VarianceExplainedKind>> {
-    let node: &Node = reader.required(fields, "kind", "the estimate", "write `kind: [partial eta squared]`, or `generalized eta squared`, or both")?;
-    let words = [("partial eta squared", VarianceExplainedKind::PartialEtaSquared), ("generalized eta squared", VarianceExplainedKind::GeneralizedEtaSquared)];
+    let node: &Node =
+        reader.required(fields, "kind", "the estimate", "write `kind: [partial eta squared]`, or `generalized eta squared`, or both")?;
+    let words = [
+        ("partial eta squared", VarianceExplainedKind::PartialEtaSquared),
+        ("generalized eta squared", VarianceExplainedKind::GeneralizedEtaSquared),
+    ];
     let items = match node.list() {
         Some(items) => items,
         None => std::slice::from_ref(node),

@@ -24,11 +24,18 @@ const CONTROLS: &[(&str, Control)] = &[
 const LATER_CONTROLS: &[&str] = &["shaffer", "fallback", "graph", "max-t", "westfall-young"];
 
 /// Reads the families. Identifiers may repeat neither each other nor a step's.
-pub(super) fn families(reader: &Reader<'_>, node: &Node, steps: &[Option<Step>], references: &References<'_>, alpha: f64) -> Option<Vec<Family>> {
+pub(super) fn families(
+    reader: &Reader<'_>,
+    node: &Node,
+    steps: &[Option<Step>],
+    references: &References<'_>,
+    alpha: f64,
+) -> Option<Vec<Family>> {
     let items = reader.list(node, "`families`")?;
     let mut taken: HashMap<String, Span> = references.steps.iter().cloned().collect();
     let mut member_of: HashMap<String, Span> = HashMap::new();
-    let found: Vec<Option<Family>> = items.iter().map(|item| family(reader, item, steps, references, alpha, &mut taken, &mut member_of)).collect();
+    let found: Vec<Option<Family>> =
+        items.iter().map(|item| family(reader, item, steps, references, alpha, &mut taken, &mut member_of)).collect();
     found.into_iter().collect()
 }
 
@@ -42,18 +49,36 @@ fn family(
     member_of: &mut HashMap<String, Span>,
 ) -> Option<Family> {
     let fields = reader.map(node, "a family", &["id", "tests", "control", "alpha"], &["weights", "transfer"])?;
-    let id = reader.required(&fields, "id", "the family", "the report refers to it by its id").and_then(|node| Some((reader.text(node, "`id`")?, node.span)));
-    if let Some((id, span)) = id {
-        if let Some(first) = taken.insert(id.to_owned(), span) {
-            reader.conflict("duplicate-id", [(span, "the second"), (first, "the first")], format!("`{id}` is the id of two things"), "give each step and family an id of its own");
-        }
+    let id = reader
+        .required(&fields, "id", "the family", "the report refers to it by its id")
+        .and_then(|node| Some((reader.text(node, "`id`")?, node.span)));
+    if let Some((id, span)) = id
+        && let Some(first) = taken.insert(id.to_owned(), span)
+    {
+        reader.conflict(
+            "duplicate-id",
+            [(span, "the second"), (first, "the first")],
+            format!("`{id}` is the id of two things"),
+            "give each step and family an id of its own",
+        );
     }
-    let control_node = reader.required(&fields, "control", "the family", "say how the error over its tests is controlled, for instance `control: holm`; there is no default");
+    let control_node = reader.required(
+        &fields,
+        "control",
+        "the family",
+        "say how the error over its tests is controlled, for instance `control: holm`; there is no default",
+    );
     let control = control_node.and_then(|node| reader.word(node, "`control`", CONTROLS, LATER_CONTROLS));
     let own_alpha = fields.get("alpha").map_or(Some(alpha), |node| {
         let own = super::steps::probability(reader, node, "a family's `alpha`")?;
         if own > alpha {
-            reader.error("alpha-overspent", node.span, format!("the family's alpha is above the plan's alpha of {alpha}"), "here", "a family may be given less than alpha, never more");
+            reader.error(
+                "alpha-overspent",
+                node.span,
+                format!("the family's alpha is above the plan's alpha of {alpha}"),
+                "here",
+                "a family may be given less than alpha, never more",
+            );
             return None;
         }
         Some(own)
@@ -64,13 +89,18 @@ fn family(
     for (reference, span) in reader.texts(tests, "a member of a family") {
         match member(reader, reference, span, references) {
             Some(found) => {
-                for name in found {
-                    if let Some(first) = member_of.insert(name.clone(), span) {
-                        reader.conflict("test-in-two-families", [(span, "here"), (first, "and here")], format!("the test `{name}` would be judged twice"), "a test is in one family at most; remove it from one");
-                        sound = false;
-                    }
-                    members.push(name);
+                let twice = found.iter().find_map(|name| member_of.get(name).map(|first| (name, *first)));
+                if let Some((name, first)) = twice {
+                    reader.conflict(
+                        "test-in-two-families",
+                        [(span, "here"), (first, "and here")],
+                        format!("the test `{name}` would be judged twice"),
+                        "a test is in one family at most; remove it from one",
+                    );
+                    sound = false;
                 }
+                member_of.extend(found.iter().map(|name| (name.clone(), span)));
+                members.extend(found);
             }
             None => sound = false,
         }
@@ -109,10 +139,21 @@ fn member(reader: &Reader<'_>, reference: &str, span: Span, references: &Referen
     match known.kind {
         Kind::One { .. } => Some(vec![known.reference.clone()]),
         Kind::Several => Some(
-            references.all().iter().filter(|other| other.step == known.step && matches!(other.kind, Kind::One { .. })).map(|other| other.reference.clone()).collect(),
+            references
+                .all()
+                .iter()
+                .filter(|other| other.step == known.step && matches!(other.kind, Kind::One { .. }))
+                .map(|other| other.reference.clone())
+                .collect(),
         ),
         Kind::Screen | Kind::Estimate => {
-            reader.error("not-a-test", span, format!("{} takes no decision whose error a family could control", known.in_words()), "not a test", "a family holds tests only");
+            reader.error(
+                "not-a-test",
+                span,
+                format!("{} takes no decision whose error a family could control", known.in_words()),
+                "not a test",
+                "a family holds tests only",
+            );
             None
         }
     }
@@ -124,7 +165,10 @@ pub(super) fn families_judged_in_time(reader: &Reader<'_>, families: &[Family], 
         let Some(by) = used.by else { continue };
         let Some(known) = references.get(&used.reference) else { continue };
         let reads = |family: &&Family| {
-            family.members.iter().any(|member| *member == used.reference || (known.kind == Kind::Several && references.get(member).is_some_and(|one| one.step == known.step)))
+            family.members.iter().any(|member| {
+                *member == used.reference
+                    || (known.kind == Kind::Several && references.get(member).is_some_and(|one| one.step == known.step))
+            })
         };
         for family in families.iter().filter(reads).filter(|family| family.control != Control::FixedSequence) {
             let last = family.members.iter().filter_map(|member| references.get(member)).max_by_key(|member| member.step);
@@ -206,7 +250,13 @@ fn said(reader: &Reader<'_>, node: &Node, references: &References<'_>) -> Option
             parts.push(SayPart::Text(rest[..open].to_owned()));
         }
         let Some(length) = rest[open..].find('}') else {
-            reader.error("quote-not-closed", node.span, "a brace opens a quote and is not closed", "in this text", "write `{REFERENCE: estimate}`, or leave the brace out");
+            reader.error(
+                "quote-not-closed",
+                node.span,
+                "a brace opens a quote and is not closed",
+                "in this text",
+                "write `{REFERENCE: estimate}`, or leave the brace out",
+            );
             return None;
         };
         let quote = &rest[open + 1..open + length];
@@ -227,19 +277,32 @@ fn quoted(reader: &Reader<'_>, node: &Node, quote: &str, references: &References
     let written = &reader.source.text()[node.span.start..node.span.end];
     let span = written.find(quote).map_or(node.span, |at| Span::new(node.span.start + at, node.span.start + at + quote.len()));
     let Some((reference, what)) = quote.rsplit_once(": ") else {
-        reader.error("unknown-quote", span, format!("`{{{quote}}}` does not say which number is quoted"), "here", "write `{REFERENCE: WHAT}`; WHAT is p, adjusted p, estimate, interval, standard error, statistic, df or n");
+        reader.error(
+            "unknown-quote",
+            span,
+            format!("`{{{quote}}}` does not say which number is quoted"),
+            "here",
+            "write `{REFERENCE: WHAT}`; WHAT is p, adjusted p, estimate, interval, standard error, statistic, df or n",
+        );
         return None;
     };
     let what = what.trim();
     let Some((_, number)) = QUOTES.iter().find(|(word, _)| *word == what) else {
         let words: Vec<&str> = QUOTES.iter().map(|(word, _)| *word).collect();
-        let hint = crate::text::suggest::nearest(what, words.iter().copied()).map_or_else(|| format!("it may be: {}", words.join(", ")), |near| format!("did you mean `{near}`?"));
+        let hint = crate::text::suggest::nearest(what, words.iter().copied())
+            .map_or_else(|| format!("it may be: {}", words.join(", ")), |near| format!("did you mean `{near}`?"));
         reader.error("unknown-quote", span, format!("`{what}` is not a number that can be quoted"), "here", hint);
         return None;
     };
     match references.get(reference.trim()) {
         Some(known) if known.kind == Kind::Several || known.kind == Kind::Screen && *number != Quoted::P => {
-            reader.error("unknown-quote", span, format!("{} has no `{what}` of its own", known.in_words()), "here", "quote one of its results");
+            reader.error(
+                "unknown-quote",
+                span,
+                format!("{} has no `{what}` of its own", known.in_words()),
+                "here",
+                "quote one of its results",
+            );
             None
         }
         Some(known) => Some(SayPart::Quote { reference: known.reference.clone(), what: *number }),
@@ -256,14 +319,17 @@ pub(super) fn list(steps: &[Step]) -> Vec<(String, String)> {
         .iter()
         .flat_map(|step| match &step.action {
             Action::Test(test) => {
-                let mut of_step: Vec<(String, String)> = test.hypotheses.iter().map(|one| (one.reference.clone(), one.label.clone())).collect();
+                let mut of_step: Vec<(String, String)> =
+                    test.hypotheses.iter().map(|one| (one.reference.clone(), one.label.clone())).collect();
                 if of_step.len() > 1 {
                     of_step.insert(0, (step.id.clone(), format!("{} tests", of_step.len())));
                 }
                 of_step
             }
             Action::Screen(_) => vec![(step.id.clone(), "screen".to_owned())],
-            Action::Estimate(estimate) => super::estimates::references_of(estimate).into_iter().map(|name| (name.to_owned(), "estimate".to_owned())).collect(),
+            Action::Estimate(estimate) => {
+                super::estimates::references_of(estimate).into_iter().map(|name| (name.to_owned(), "estimate".to_owned())).collect()
+            }
         })
         .collect()
 }

@@ -23,7 +23,11 @@ impl Breakdown {
     }
 
     pub fn whole(factor: &Factor) -> Self {
-        Breakdown { name: None, words: Some(factor.name.clone()), held: false, part: FactorPart::Whole }
+        let words = match factor.levels.as_slice() {
+            [first, second] => format!("{second} minus {first}"),
+            _ => factor.name.clone(),
+        };
+        Breakdown { name: None, words: Some(words), held: false, part: FactorPart::Whole }
     }
 
     pub fn hold(level: &str) -> Self {
@@ -47,23 +51,38 @@ pub(super) fn split(reader: &Reader<'_>, node: &Node, factor: &Factor) -> Option
     if let Value::List(items) = &node.value {
         let found: Vec<Option<Breakdown>> = items.iter().map(|item| weights(reader, item, factor)).collect();
         if items.is_empty() {
-            reader.error("missing-key", node.span, "the list of contrasts is empty", "here", "list `{name: ..., weights: {...}}`, or write `all pairs`");
+            reader.error(
+                "missing-key",
+                node.span,
+                "the list of contrasts is empty",
+                "here",
+                "list `{name: ..., weights: {...}}`, or write `all pairs`",
+            );
             return None;
         }
         let found = found.into_iter().collect::<Option<Vec<_>>>()?;
         for (place, option) in found.iter().enumerate() {
             if found[..place].iter().any(|other| other.name == option.name) {
                 let name = option.name.as_deref().unwrap_or("");
-                reader.error("duplicate-name", items[place].span, format!("two contrasts of `{}` are called `{name}`", factor.name), "the second", "give each a name of its own");
+                reader.error(
+                    "duplicate-name",
+                    items[place].span,
+                    format!("two contrasts of `{}` are called `{name}`", factor.name),
+                    "the second",
+                    "give each a name of its own",
+                );
                 return None;
             }
         }
         return Some(found);
     }
     let text = reader.text(node, &format!("the split of `{}`", factor.name))?;
-    let pairs = |pairs: Vec<(usize, usize)>| pairs.into_iter().map(|(first, second)| Breakdown::pair(levels[first], levels[second])).collect();
+    let pairs =
+        |pairs: Vec<(usize, usize)>| pairs.into_iter().map(|(first, second)| Breakdown::pair(levels[first], levels[second])).collect();
     match text {
-        "all pairs" => Some(pairs((0..levels.len()).flat_map(|first| (first + 1..levels.len()).map(move |second| (first, second))).collect())),
+        "all pairs" => {
+            Some(pairs((0..levels.len()).flat_map(|first| (first + 1..levels.len()).map(move |second| (first, second))).collect()))
+        }
         "adjacent pairs" => Some(pairs((1..levels.len()).map(|second| (second - 1, second)).collect())),
         "trends" | "each level against the mean of the later ones" => {
             reader.not_yet(node.span, &format!("the split `{text}`"));
@@ -237,5 +256,11 @@ pub(super) fn splits(reader: &Reader<'_>, node: &Node, factors: &[&Factor], allo
 }
 
 pub(super) fn missing_split(reader: &Reader<'_>, span: Span) {
-    reader.error("missing-key", reader.first_line(span), "nothing says how the effect is split", "`split` is missing", "write for instance `split: {FACTOR: all pairs}`");
+    reader.error(
+        "missing-key",
+        reader.first_line(span),
+        "nothing says how the effect is split",
+        "`split` is missing",
+        "write for instance `split: {FACTOR: all pairs}`",
+    );
 }

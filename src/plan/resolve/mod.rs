@@ -13,19 +13,33 @@ mod reader;
 mod references;
 mod steps;
 
-use crate::plan::resolved::{
-    CompleteOver, DECISION_RULE, MissingData, MissingRule, RESOLVED_FORMAT, ResolvedPlan, Step,
-};
+use crate::plan::resolved::{CompleteOver, DECISION_RULE, MissingData, MissingRule, RESOLVED_FORMAT, ResolvedPlan, Step};
 use crate::plan::syntax::tree::{Node, Value};
 use crate::text::diagnostic::Diagnostic;
 use crate::text::source::{Source, Span};
-use reader::{Fields, Reader};
+use reader::Reader;
 use references::References;
 use std::collections::HashMap;
 
 const PLAN_KEYS: &[&str] = &[
-    "plan", "title", "identifier", "prepared by", "blinding", "administration", "data status", "estimand", "data", "design", "outcomes",
-    "missing data", "alpha", "steps", "families", "conclusions", "planning", "acknowledged",
+    "plan",
+    "title",
+    "identifier",
+    "prepared by",
+    "blinding",
+    "administration",
+    "data status",
+    "estimand",
+    "data",
+    "design",
+    "outcomes",
+    "missing data",
+    "alpha",
+    "steps",
+    "families",
+    "conclusions",
+    "planning",
+    "acknowledged",
 ];
 
 /// What came of resolving.
@@ -56,7 +70,11 @@ pub fn resolve(source: &Source, root: &Node) -> Resolution {
     let mut places = Places::default();
     let plan = plan(&reader, root, &mut places);
     let findings = reader.into_findings();
-    Resolution { plan: plan.filter(|_| findings.iter().all(|finding| finding.severity < crate::text::diagnostic::Severity::Error)), places, findings }
+    Resolution {
+        plan: plan.filter(|_| findings.iter().all(|finding| finding.severity < crate::text::diagnostic::Severity::Error)),
+        places,
+        findings,
+    }
 }
 
 /// Every reference of a plan with its label, in plan order.
@@ -68,22 +86,31 @@ fn plan(reader: &Reader<'_>, root: &Node, places: &mut Places) -> Option<Resolve
     let fields = reader.map(root, "a plan", PLAN_KEYS, &["populations", "sensitivity"])?;
     places.keys = root.map().unwrap_or(&[]).iter().map(|entry| (entry.key.clone(), entry.key_span)).collect();
     let what = "the plan";
-    let language = reader.required(&fields, "plan", what, "a plan starts with `plan: 1`, the version of the language").and_then(|node| language(reader, node));
+    let language = reader
+        .required(&fields, "plan", what, "a plan starts with `plan: 1`, the version of the language")
+        .and_then(|node| language(reader, node));
     let title = reader.required(&fields, "title", what, "the report is headed by it").and_then(|node| reader.text(node, "`title`"));
-    let alpha = reader.required(&fields, "alpha", what, "say at which level the plan is tested, such as `alpha: 0.05`; there is no default").and_then(|node| alpha(reader, node));
+    let alpha = reader
+        .required(&fields, "alpha", what, "say at which level the plan is tested, such as `alpha: 0.05`; there is no default")
+        .and_then(|node| alpha(reader, node));
     let missing_data = reader
-        .required(&fields, "missing data", what, "say what is done about missing values, such as `missing data: complete cases`; there is no default")
+        .required(
+            &fields,
+            "missing data",
+            what,
+            "say what is done about missing values, such as `missing data: complete cases`; there is no default",
+        )
         .and_then(|node| missing_data(reader, node));
     let design_node = reader.required(&fields, "design", what, "name the arms and the occasions");
     let design = design_node.and_then(|node| design::design(reader, node));
     let data_node = reader.required(&fields, "data", what, "say where the data stand in their file");
     let data = data_node.zip(design.as_ref()).and_then(|(node, design)| data::data(reader, node, design));
-    let outcomes = data.as_ref().and_then(|data| data::outcomes(reader, fields.get("outcomes"), data));
+    let outcomes = data_node.and_then(|data| data::outcomes(reader, fields.get("outcomes"), data));
 
     let step_nodes = reader
         .required(&fields, "steps", what, "a plan is a list of steps: what is screened, tested and estimated, in order")
         .and_then(|node| reader.list(node, "`steps`"));
-    let ids = step_nodes.and_then(|nodes| ids(reader, nodes));
+    let ids = step_nodes.map(|nodes| ids(reader, nodes));
     let (mut steps, mut families, mut conclusions) = (None, None, None);
     if let (Some(design), Some(outcomes), Some(nodes), Some(ids)) = (&design, &outcomes, step_nodes, &ids) {
         places.steps = ids.iter().cloned().collect();
@@ -98,7 +125,8 @@ fn plan(reader: &Reader<'_>, root: &Node, places: &mut Places) -> Option<Resolve
             })
             .collect();
         references.current = None;
-        families = fields.get("families").map_or(Some(Vec::new()), |node| families::families(reader, node, &found, &references, context.alpha));
+        families =
+            fields.get("families").map_or(Some(Vec::new()), |node| families::families(reader, node, &found, &references, context.alpha));
         families::families_judged_in_time(reader, families.as_deref().unwrap_or(&[]), &references);
         conclusions = reader
             .required(&fields, "conclusions", what, "say what will be concluded from each way the tests can turn out")
@@ -141,7 +169,13 @@ fn language(reader: &Reader<'_>, node: &Node) -> Option<u32> {
 fn alpha(reader: &Reader<'_>, node: &Node) -> Option<f64> {
     let alpha = steps::probability(reader, node, "`alpha`")?;
     if alpha > 0.5 {
-        reader.error("wrong-range", node.span, "`alpha` is the chance of a false rejection; above one half it protects from nothing", "here", "0.05 and 0.025 are common");
+        reader.error(
+            "wrong-range",
+            node.span,
+            "`alpha` is the chance of a false rejection; above one half it protects from nothing",
+            "here",
+            "0.05 and 0.025 are common",
+        );
         return None;
     }
     Some(alpha)
@@ -160,40 +194,44 @@ fn missing_data(reader: &Reader<'_>, node: &Node) -> Option<MissingData> {
     Some(MissingData { rule: rule?, over: over? })
 }
 
-/// Identifiers of all steps, so that a reference can be told to point down.
-fn ids(reader: &Reader<'_>, nodes: &[Node]) -> Option<Vec<(String, Span)>> {
-    if nodes.is_empty() {
-        return Some(Vec::new());
-    }
-    let mut ids: Vec<(String, Span)> = Vec::new();
+/// Identifiers of all steps, so that a reference can be told to point down. A step whose id is in error gets one that
+/// nothing can refer to, so that the rest of it is read all the same.
+fn ids(reader: &Reader<'_>, nodes: &[Node]) -> Vec<(String, Span)> {
     let mut first_at: HashMap<String, Span> = HashMap::new();
-    let mut sound = true;
-    for node in nodes {
-        let Some(entries) = reader.entries(node, "a step", "a map") else {
-            sound = false;
-            continue;
-        };
-        let fields = reader.map(node, "a step", &entries.iter().map(|entry| entry.key.as_str()).collect::<Vec<_>>(), &[])?;
-        let found: Option<(&str, Span)> = id_of(reader, &fields);
-        match found {
-            Some((id, _)) if matches!(id, "either" | "not") => {
-                reader.error("reserved-id", fields.get("id").map_or(node.span, |node| node.span), format!("`{id}` is a word of conditions and cannot be the id of a step"), "reserved", "choose another id");
-                sound = false;
+    nodes
+        .iter()
+        .enumerate()
+        .map(|(number, node)| {
+            let unnamed = || (format!("\u{0}step {}", number + 1), reader.first_line(node.span));
+            let Some((id, span)) = id_of(reader, node) else { return unnamed() };
+            if matches!(id, "either" | "not") {
+                reader.error(
+                    "reserved-id",
+                    span,
+                    format!("`{id}` is a word of conditions and cannot be the id of a step"),
+                    "reserved",
+                    "choose another id",
+                );
+                return unnamed();
             }
-            Some((id, span)) => {
-                if let Some(first) = first_at.insert(id.to_owned(), span) {
-                    reader.conflict("duplicate-id", [(span, "the second"), (first, "the first")], format!("`{id}` is the id of two steps"), "conditions and the report refer to steps by their ids; rename one");
-                    sound = false;
-                }
-                ids.push((id.to_owned(), span));
+            if let Some(first) = first_at.get(id) {
+                reader.conflict(
+                    "duplicate-id",
+                    [(span, "the second"), (*first, "the first")],
+                    format!("`{id}` is the id of two steps"),
+                    "conditions and the report refer to steps by their ids; rename one",
+                );
+                return unnamed();
             }
-            None => sound = false,
-        }
-    }
-    sound.then_some(ids)
+            first_at.insert(id.to_owned(), span);
+            (id.to_owned(), span)
+        })
+        .collect()
 }
 
-fn id_of<'n>(reader: &Reader<'_>, fields: &Fields<'n>) -> Option<(&'n str, Span)> {
-    let node = reader.required(fields, "id", "the step", "conditions and the report refer to a step by its id")?;
+fn id_of<'n>(reader: &Reader<'_>, node: &'n Node) -> Option<(&'n str, Span)> {
+    let entries = reader.entries(node, "a step", "a map")?;
+    let fields = reader.map(node, "a step", &entries.iter().map(|entry| entry.key.as_str()).collect::<Vec<_>>(), &[])?;
+    let node = reader.required(&fields, "id", "the step", "conditions and the report refer to a step by its id")?;
     Some((reader.text(node, "`id`")?, node.span))
 }

@@ -24,7 +24,8 @@ pub(super) fn prose(reader: &Reader<'_>, fields: &Fields<'_>, places: &mut Place
         None => serde_json::Value::Null,
         Some(node) => {
             let what = format!("`{key}`");
-            let sound = if keys.is_empty() { reader.entries(node, &what, "a map").is_some() } else { reader.map(node, &what, keys, &[]).is_some() };
+            let sound =
+                if keys.is_empty() { reader.entries(node, &what, "a map").is_some() } else { reader.map(node, &what, keys, &[]).is_some() };
             if sound { as_json(node) } else { serde_json::Value::Null }
         }
     };
@@ -48,7 +49,9 @@ fn data_status(reader: &Reader<'_>, node: &Node) -> Option<DataStatus> {
     let fields = reader.map(node, "`data status`", &["collected", "seen", "by"], &[])?;
     let word = |key: &str, words: &[&'static str]| {
         let pairs: Vec<(&str, &'static str)> = words.iter().map(|word| (*word, *word)).collect();
-        reader.required(&fields, key, "`data status`", &format!("it may be: {}", words.join(", "))).and_then(|node| reader.word(node, &format!("`{key}`"), &pairs, &[]))
+        reader
+            .required(&fields, key, "`data status`", &format!("it may be: {}", words.join(", ")))
+            .and_then(|node| reader.word(node, &format!("`{key}`"), &pairs, &[]))
     };
     let collected = word("collected", &["none", "part", "all"]);
     let seen = word("seen", &["nothing", "pooled", "by arm"]);

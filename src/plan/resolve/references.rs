@@ -12,7 +12,10 @@ use std::collections::HashMap;
 pub(super) enum Kind {
     Screen,
     /// One test, perhaps with a direction, perhaps with levels that its directions favour.
-    One { comparison: bool, favours: Option<[String; 2]> },
+    One {
+        comparison: bool,
+        favours: Option<[String; 2]>,
+    },
     /// A step of several tests.
     Several,
     /// Something of an estimate step, which has no verdict.
@@ -146,7 +149,13 @@ impl<'n> References<'n> {
         if let Some(later) = later {
             let (id, place) = &self.steps[later];
             if self.current == Some(later) {
-                reader.error("circular-when", span, format!("the step `{id}` waits for its own verdict"), "refers to itself", "refer to a step above it");
+                reader.error(
+                    "circular-when",
+                    span,
+                    format!("the step `{id}` waits for its own verdict"),
+                    "refers to itself",
+                    "refer to a step above it",
+                );
             } else {
                 reader.conflict(
                     "forward-reference",

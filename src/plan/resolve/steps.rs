@@ -35,16 +35,39 @@ const SCREEN_KEYS: &[&str] = &["screen", "of", "threshold", "method"];
 const TEST_KEYS: &[&str] = &["test", "effect", "at", "split", "error", "correction", "method", "weights", "sides", "level"];
 const ESTIMATE_KEYS: &[&str] =
     &["estimate", "split", "within each", "standardizer", "small-sample correction", "interval", "of", "kind", "measured factors"];
-const LATER_KEYS: &[&str] = &["among", "covariates", "contrast", "contrasts", "margin", "favours", "criterion", "deals", "spacing", "structure", "fallback", "weight"];
+const LATER_KEYS: &[&str] = &[
+    "among",
+    "covariates",
+    "contrast",
+    "contrasts",
+    "margin",
+    "favours",
+    "criterion",
+    "deals",
+    "spacing",
+    "structure",
+    "fallback",
+    "weight",
+];
 
 /// Reads one step; what it defines is entered into `references` even where a part of it is in error.
-pub(super) fn step(reader: &Reader<'_>, node: &Node, number: usize, context: &Context<'_>, references: &mut References<'_>) -> Option<Step> {
+pub(super) fn step(
+    reader: &Reader<'_>,
+    node: &Node,
+    number: usize,
+    context: &Context<'_>,
+    references: &mut References<'_>,
+) -> Option<Step> {
     let entries = reader.entries(node, "a step", "a map")?;
     let species: Vec<&str> = ["screen", "test", "estimate"].into_iter().filter(|key| node.get(key).is_some()).collect();
     let id = references.steps[number].0.clone();
     let [species] = species.as_slice() else {
         let place = reader.first_line(node.span);
-        let message = if species.is_empty() { "the step does not say what it does".to_owned() } else { format!("the step is {} at once", species.join(" and ")) };
+        let message = if species.is_empty() {
+            "the step does not say what it does".to_owned()
+        } else {
+            format!("the step is {} at once", species.join(" and "))
+        };
         reader.error("step-without-species", place, message, "this step", "a step has exactly one of `screen:`, `test:` and `estimate:`");
         return None;
     };
@@ -58,14 +81,22 @@ pub(super) fn step(reader: &Reader<'_>, node: &Node, number: usize, context: &Co
         if own.contains(&key) || COMMON.contains(&key) {
             continue;
         }
-        let elsewhere = [("a screen", SCREEN_KEYS), ("a test", TEST_KEYS), ("an estimate", ESTIMATE_KEYS)].into_iter().find(|(_, keys)| keys.contains(&key));
+        let elsewhere = [("a screen", SCREEN_KEYS), ("a test", TEST_KEYS), ("an estimate", ESTIMATE_KEYS)]
+            .into_iter()
+            .find(|(_, keys)| keys.contains(&key));
         if LATER_KEYS.contains(&key) {
             reader.not_yet(entry.key_span, &format!("`{key}` of a step"));
         } else if let Some((where_, _)) = elsewhere {
-            reader.error("misplaced-key", entry.key_span, format!("`{key}` does not belong to a {species} step"), "here", format!("it is a key of {where_}; remove it here"));
+            reader.error(
+                "misplaced-key",
+                entry.key_span,
+                format!("`{key}` does not belong to a {species} step"),
+                "here",
+                format!("it is a key of {where_}; remove it here"),
+            );
         } else {
             let all: Vec<&str> = COMMON.iter().chain(own).copied().collect();
-            reader.unknown_key(entry, &format!("a {species} step"), &all);
+            reader.unknown_key(node, entry, &format!("a {species} step"), &all);
         }
     }
     let fields = reader.map(node, "a step", &entries.iter().map(|entry| entry.key.as_str()).collect::<Vec<_>>(), &[])?;
@@ -123,7 +154,16 @@ fn role(reader: &Reader<'_>, fields: &Fields<'_>, species: &str) -> Option<Role>
         Some(node) => {
             let role = reader.word(node, "`role`", &words, &[])?;
             if role == Role::Confirmatory && species != "test" {
-                reader.error("misplaced-role", node.span, format!("a step that {}s decides nothing, so it cannot be confirmatory", if species == "screen" { "screen" } else { "estimate" }), "here", "write `supportive` or leave `role` out");
+                reader.error(
+                    "misplaced-role",
+                    node.span,
+                    format!(
+                        "a step that {}s decides nothing, so it cannot be confirmatory",
+                        if species == "screen" { "screen" } else { "estimate" }
+                    ),
+                    "here",
+                    "write `supportive` or leave `role` out",
+                );
                 return None;
             }
             Some(role)
@@ -137,7 +177,12 @@ fn screen(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, context: &Context<
     let later = ["normal residuals", "outlying values", "missingness"];
     let what = reader.word(node, "`screen`", &words, &later);
     let threshold = reader
-        .required(fields, "threshold", "the screen", "say at which p it shows a departure, for instance `threshold: 0.05`; there is no default")
+        .required(
+            fields,
+            "threshold",
+            "the screen",
+            "say at which p it shows a departure, for instance `threshold: 0.05`; there is no default",
+        )
         .and_then(|node| choice(reader, node, references, "`threshold`", &mut |node| probability(reader, node, "`threshold`")));
     let design = context.design;
     let (kind, names): (ScreenKind, Vec<String>) = match what? {
@@ -154,9 +199,15 @@ fn screen(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, context: &Context<
         _ => {
             misplaced(reader, fields, "of", "variances are compared at every occasion");
             needs_arms(reader, node, design, "compares arms")?;
-            let method = reader.required(fields, "method", "the screen", "there are two: `levene` (deviations from means) and `brown-forsythe` (from medians)")?;
+            let method = reader.required(
+                fields,
+                "method",
+                "the screen",
+                "there are two: `levene` (deviations from means) and `brown-forsythe` (from medians)",
+            )?;
             let words = [("levene", VarianceMethod::Levene), ("brown-forsythe", VarianceMethod::BrownForsythe)];
-            let method = choice(reader, method, references, "`method`", &mut |node| reader.word(node, "`method` of equal variances", &words, &[]))?;
+            let method =
+                choice(reader, method, references, "`method`", &mut |node| reader.word(node, "`method` of equal variances", &words, &[]))?;
             let names = if design.occasions() == 1 {
                 vec![id.to_owned()]
             } else {
@@ -176,7 +227,13 @@ fn misplaced(reader: &Reader<'_>, fields: &Fields<'_>, key: &str, why: &str) {
 
 fn needs_arms(reader: &Reader<'_>, node: &Node, design: &Design, what: &str) -> Option<()> {
     if design.between.is_empty() {
-        reader.error("nothing-to-compare", node.span, format!("this screen {what}, and the design has none"), "no between factor", "remove the step, or name the arms under `design: between`");
+        reader.error(
+            "nothing-to-compare",
+            node.span,
+            format!("this screen {what}, and the design has none"),
+            "no between factor",
+            "remove the step, or name the arms under `design: between`",
+        );
         return None;
     }
     Some(())
@@ -189,7 +246,15 @@ fn sphericity_of(reader: &Reader<'_>, fields: &Fields<'_>, context: &Context<'_>
         Some(node) => effect(reader, reader.text(node, "`of`")?, node.span, &names)?,
         None if within.len() == 1 => vec![0],
         None => {
-            reader.required(fields, "of", "the screen", &format!("say of which within effect: {}", if names.is_empty() { "the design has no within factor".to_owned() } else { names.join(", ") }));
+            reader.required(
+                fields,
+                "of",
+                "the screen",
+                &format!(
+                    "say of which within effect: {}",
+                    if names.is_empty() { "the design has no within factor".to_owned() } else { names.join(", ") }
+                ),
+            );
             return None;
         }
     };
@@ -227,10 +292,19 @@ fn test(
     better: Option<crate::plan::resolved::Better>,
 ) -> Option<Test> {
     let node = fields.get("test")?;
-    let words = [("omnibus", TestKind::Omnibus), ("partial interactions", TestKind::PartialInteractions), ("simple effects", TestKind::SimpleEffects)];
+    let words = [
+        ("omnibus", TestKind::Omnibus),
+        ("partial interactions", TestKind::PartialInteractions),
+        ("simple effects", TestKind::SimpleEffects),
+    ];
     let kind = reader.word(node, "`test`", &words, &["contrasts", "equivalence", "non-inferiority", "largest contrast"])?;
     let method = fields.get("method").map_or(Some(Method::Univariate), |node| {
-        reader.word(node, "`method` of a test", &[("univariate", Method::Univariate)], &["multivariate", "welch-james", "randomisation", "mixed model"])
+        reader.word(
+            node,
+            "`method` of a test",
+            &[("univariate", Method::Univariate)],
+            &["multivariate", "welch-james", "randomisation", "mixed model"],
+        )
     });
     if let Some(node) = fields.get("sides") {
         if node.text() == Some("one") {
@@ -239,11 +313,19 @@ fn test(
             reader.word(node, "`sides`", &[("two", ())], &[]);
         }
     }
-    let weights = fields.get("weights").map_or(Some(Weights::Equal), |node| reader.word(node, "`weights`", &[("equal", Weights::Equal)], &["observed"]));
+    let weights = fields
+        .get("weights")
+        .map_or(Some(Weights::Equal), |node| reader.word(node, "`weights`", &[("equal", Weights::Equal)], &["observed"]));
     let level = fields.get("level").map_or(Some(context.alpha), |node| {
         let level = probability(reader, node, "`level`")?;
         if level > context.alpha {
-            reader.error("alpha-overspent", node.span, format!("this level is above the plan's alpha of {}", context.alpha), "here", "a test may be given less than alpha, never more");
+            reader.error(
+                "alpha-overspent",
+                node.span,
+                format!("this level is above the plan's alpha of {}", context.alpha),
+                "here",
+                "a test may be given less than alpha, never more",
+            );
             return None;
         }
         Some(level)
@@ -254,7 +336,8 @@ fn test(
         .and_then(|node| Some((node, effect(reader, reader.text(node, "`effect`")?, node.span, &names)?)));
     let error = error_term(reader, fields, kind, references);
     let options = chosen.as_ref().and_then(|(node, chosen)| options(reader, fields, kind, context, chosen, node.span));
-    let correction = fields.get("correction").map(|node| choice(reader, node, references, "`correction`", &mut |node| correction_rule(reader, node)));
+    let correction =
+        fields.get("correction").map(|node| choice(reader, node, references, "`correction`", &mut |node| correction_rule(reader, node)));
     let (node, chosen) = chosen?;
     let effect_name = chosen.iter().map(|place| names[*place]).collect::<Vec<_>>().join(" by ");
     let options = options?;
@@ -262,7 +345,8 @@ fn test(
         Some(found) => found?,
         None => {
             let within = &options[context.design.between.len()..];
-            let contrasts: usize = context.design.within.iter().zip(within).map(|(factor, options)| df(factor, &options[0].part).max(1)).product();
+            let contrasts: usize =
+                context.design.within.iter().zip(within).map(|(factor, options)| df(factor, &options[0].part).max(1)).product();
             if contrasts > 1 {
                 reader.error(
                     "missing-key",
@@ -306,7 +390,14 @@ fn error_term(reader: &Reader<'_>, fields: &Fields<'_>, kind: TestKind, referenc
 }
 
 /// What is done with each factor of the design, in design order.
-fn options(reader: &Reader<'_>, fields: &Fields<'_>, kind: TestKind, context: &Context<'_>, chosen: &[usize], effect_span: Span) -> Option<Vec<Vec<Breakdown>>> {
+fn options(
+    reader: &Reader<'_>,
+    fields: &Fields<'_>,
+    kind: TestKind,
+    context: &Context<'_>,
+    chosen: &[usize],
+    effect_span: Span,
+) -> Option<Vec<Vec<Breakdown>>> {
     let factors = context.factors();
     let mut options: Vec<Vec<Breakdown>> = factors
         .iter()
@@ -317,10 +408,18 @@ fn options(reader: &Reader<'_>, fields: &Fields<'_>, kind: TestKind, context: &C
         misplaced(reader, fields, "at", "only simple effects are taken at a level");
     }
     match kind {
-        TestKind::Omnibus => misplaced(reader, fields, "split", "an omnibus test keeps its effect whole; `test: partial interactions` splits it"),
+        TestKind::Omnibus => {
+            misplaced(reader, fields, "split", "an omnibus test keeps its effect whole; `test: partial interactions` splits it")
+        }
         TestKind::PartialInteractions => {
             if chosen.len() < 2 {
-                reader.error("not-an-interaction", effect_span, "an interaction has two factors or more", "one factor", "name them joined by `by`, such as `arm by visit`; for one factor use `test: simple effects` or `omnibus`");
+                reader.error(
+                    "not-an-interaction",
+                    effect_span,
+                    "an interaction has two factors or more",
+                    "one factor",
+                    "name them joined by `by`, such as `arm by visit`; for one factor use `test: simple effects` or `omnibus`",
+                );
                 return None;
             }
             match fields.get("split") {
@@ -332,11 +431,17 @@ fn options(reader: &Reader<'_>, fields: &Fields<'_>, kind: TestKind, context: &C
             }
         }
         TestKind::SimpleEffects => {
-            let node = reader.required(fields, "at", "the test", "say at the levels of which factor the effect is tested, such as `at: visit`")?;
+            let node =
+                reader.required(fields, "at", "the test", "say at the levels of which factor the effect is tested, such as `at: visit`")?;
             let names = context.factor_names();
             let at = effect(reader, reader.text(node, "`at`")?, node.span, &names)?;
             if let Some(both) = at.iter().find(|place| chosen.contains(place)) {
-                reader.conflict("factor-in-both", [(node.span, "held here"), (effect_span, "tested here")], format!("the factor `{}` is both tested and held", names[*both]), "name a factor in `effect` or in `at`, not in both");
+                reader.conflict(
+                    "factor-in-both",
+                    [(node.span, "held here"), (effect_span, "tested here")],
+                    format!("the factor `{}` is both tested and held", names[*both]),
+                    "name a factor in `effect` or in `at`, not in both",
+                );
                 return None;
             }
             for place in at {
@@ -349,7 +454,13 @@ fn options(reader: &Reader<'_>, fields: &Fields<'_>, kind: TestKind, context: &C
     }
     let count: usize = options.iter().map(Vec::len).product();
     if count > 5000 {
-        reader.error("too-many-tests", effect_span, format!("this step makes {count} tests; at most 5000 can be judged together"), "here", "split fewer factors, or use `adjacent pairs` or `against LEVEL`");
+        reader.error(
+            "too-many-tests",
+            effect_span,
+            format!("this step makes {count} tests; at most 5000 can be judged together"),
+            "here",
+            "split fewer factors, or use `adjacent pairs` or `against LEVEL`",
+        );
         return None;
     }
     debug_assert!(options.iter().flatten().all(|option| !matches!(&option.part, FactorPart::Hold(level) if level.is_empty())));
@@ -373,10 +484,20 @@ fn correction_rule(reader: &Reader<'_>, node: &Node) -> Option<CorrectionRule> {
             sound &= otherwise.is_some();
             continue;
         }
-        let bound = entry.key.strip_prefix("below ").and_then(|bound| bound.trim().parse::<f64>().ok()).filter(|bound| *bound > 0.0 && *bound <= 1.0);
+        let bound = entry
+            .key
+            .strip_prefix("below ")
+            .and_then(|bound| bound.trim().parse::<f64>().ok())
+            .filter(|bound| *bound > 0.0 && *bound <= 1.0);
         match bound {
             None => {
-                reader.error("unknown-key", entry.key_span, format!("`{}` is not a bound of epsilon", entry.key), "here", "write `below 0.75: greenhouse-geisser` and `otherwise: ...`; epsilon lies between 0 and 1");
+                reader.error(
+                    "unknown-key",
+                    entry.key_span,
+                    format!("`{}` is not a bound of epsilon", entry.key),
+                    "here",
+                    "write `below 0.75: greenhouse-geisser` and `otherwise: ...`; epsilon lies between 0 and 1",
+                );
                 sound = false;
             }
             Some(bound) => match word(&entry.node) {
@@ -386,7 +507,13 @@ fn correction_rule(reader: &Reader<'_>, node: &Node) -> Option<CorrectionRule> {
         }
     }
     if sound && otherwise.is_none() {
-        reader.error("case-without-otherwise", reader.first_line(node.span), "the correction by epsilon has no `otherwise`", "`otherwise` is missing", "add `otherwise: ...`");
+        reader.error(
+            "case-without-otherwise",
+            reader.first_line(node.span),
+            "the correction by epsilon has no `otherwise`",
+            "`otherwise` is missing",
+            "add `otherwise: ...`",
+        );
     }
     otherwise.filter(|_| sound).map(|otherwise| CorrectionRule::ByEpsilon { below, otherwise })
 }

@@ -23,7 +23,9 @@ fn check(plan: &Plan<'_>) -> Vec<Diagnostic> {
         .expected_subjects
         .iter()
         .filter(|planned| planned.subjects < FEWEST)
-        .map(|planned| format!("{} in {}", planned.subjects, if planned.levels.is_empty() { "all".to_owned() } else { planned.levels.join("; ") }))
+        .map(|planned| {
+            format!("{} in {}", planned.subjects, if planned.levels.is_empty() { "all".to_owned() } else { planned.levels.join("; ") })
+        })
         .collect();
     if small.is_empty() {
         return Vec::new();

@@ -15,8 +15,8 @@ use crate::text::render::is_unseen;
 use crate::text::source::{Source, Span};
 use tree::Node;
 
-/// Plans larger than this many bytes are refused.
-pub const LARGEST_PLAN: usize = 4 << 20;
+/// Plans larger than this many bytes are refused: the densest text of this size is read in under a second.
+pub const LARGEST_PLAN: usize = 1 << 20;
 
 /// Maps and lists may be nested this deep.
 pub const DEEPEST_NESTING: usize = 64;
@@ -44,19 +44,20 @@ impl Parsed {
 /// # Errors
 /// More than [`LARGEST_PLAN`] bytes, or bytes that are not UTF-8, with the place of the first bad one.
 pub fn decode(name: &str, bytes: &[u8]) -> Result<Source, Box<Diagnostic>> {
-    let start = || Source::new(name, "").label(Span::default(), "");
     if bytes.len() > LARGEST_PLAN {
-        return Err(Box::new(
-            Diagnostic::error("plan-too-large", format!("this file has {} bytes; a plan may have {LARGEST_PLAN}", bytes.len()))
-                .at(start())
-                .hint("a plan is text that people read; give the data with `--data`, not as the plan"),
-        ));
+        return Err(Box::new(too_large(name, bytes.len())));
     }
     let bytes = bytes.strip_prefix(b"\xEF\xBB\xBF").unwrap_or(bytes);
     match std::str::from_utf8(bytes) {
         Ok(text) => Ok(Source::new(name, text)),
         Err(error) => Err(Box::new(not_utf_8(name, bytes, &error))),
     }
+}
+
+fn too_large(name: &str, size: usize) -> Diagnostic {
+    Diagnostic::error("plan-too-large", format!("this file has {size} bytes; a plan may have {LARGEST_PLAN}"))
+        .at(Source::new(name, "").label(Span::default(), ""))
+        .hint("a plan is text that people read; give the data with `--data`, not as the plan")
 }
 
 fn not_utf_8(name: &str, bytes: &[u8], error: &std::str::Utf8Error) -> Diagnostic {
@@ -108,12 +109,11 @@ pub fn parse(source: &Source) -> Parsed {
 fn unreadable(source: &Source) -> Option<Diagnostic> {
     let text = source.text();
     if text.len() > LARGEST_PLAN {
-        return Some(
-            Diagnostic::error("plan-too-large", format!("the plan has {} bytes; it may have {LARGEST_PLAN}", text.len()))
-                .at(source.label(Span::default(), "")),
-        );
+        return Some(too_large(source.name(), text.len()));
     }
-    if let Some((at, character)) = text.char_indices().find(|(_, c)| is_refused(*c) && *c != '\r') {
+    let bytes = text.as_bytes();
+    let refused = |(at, c): &(usize, char)| is_refused(*c) && !(*c == '\r' && bytes.get(at + 1) == Some(&b'\n'));
+    if let Some((at, character)) = text.char_indices().find(refused) {
         return Some(control_character(source, Span::new(at, at + character.len_utf8()), character));
     }
     directive(source)
@@ -126,7 +126,10 @@ fn is_refused(character: char) -> bool {
 fn control_character(source: &Source, place: Span, character: char) -> Diagnostic {
     Diagnostic::error("control-character", format!("the plan holds a character that cannot be seen (U+{:04X})", character as u32))
         .at(source.label(place, "here"))
-        .hint("remove it: what a reader sees must be all that the plan says")
+        .hint(match character {
+            '\r' => "end lines with LF or CRLF; a carriage return alone hides what stands before it",
+            _ => "remove it: what a reader sees must be all that the plan says",
+        })
 }
 
 /// A line such as `%YAML 1.1` before the plan, which could change what words mean.

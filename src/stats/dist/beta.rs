@@ -52,53 +52,23 @@ impl Point {
         let odds = b / a * ratio;
         let log_odds = log(b) - log(a) + log_ratio;
         let x = 1.0 / (1.0 + odds);
-        let y = if odds.is_finite() {
-            odds / (1.0 + odds)
-        } else {
-            1.0
-        };
+        let y = if odds.is_finite() { odds / (1.0 + odds) } else { 1.0 };
         let extreme = 1e100;
         let log_x = if odds > extreme { -log_odds } else { log(x) };
-        let log_y = if odds < 1.0 / extreme {
-            log_odds
-        } else {
-            log(y)
-        };
+        let log_y = if odds < 1.0 / extreme { log_odds } else { log(y) };
         // a y - b x with y = odds x is b x (ratio - 1), which keeps the digits near the mean.
-        let below_mean = if odds > extreme {
-            a
-        } else {
-            b * less_one / (1.0 + odds)
-        };
-        Self {
-            a,
-            b,
-            x,
-            y,
-            below_mean,
-            log_x,
-            log_y,
-        }
+        let below_mean = if odds > extreme { a } else { b * less_one / (1.0 + odds) };
+        Self { a, b, x, y, below_mean, log_x, log_y }
     }
 
     /// The same point seen from the other side: 1 - X at y.
     pub fn mirrored(self) -> Self {
-        Self {
-            a: self.b,
-            b: self.a,
-            x: self.y,
-            y: self.x,
-            below_mean: -self.below_mean,
-            log_x: self.log_y,
-            log_y: self.log_x,
-        }
+        Self { a: self.b, b: self.a, x: self.y, y: self.x, below_mean: -self.below_mean, log_x: self.log_y, log_y: self.log_x }
     }
 
     /// x^a y^b / B(a, b).
     pub fn density_factor(self) -> f64 {
-        let Self {
-            a, b, below_mean, ..
-        } = self;
+        let Self { a, b, below_mean, .. } = self;
         let sum = a + b;
         let log_sum_over = |part: f64, log_part: f64| log(sum / part) + log_part;
         let exponent = stirling_error(sum)
@@ -115,16 +85,10 @@ impl Point {
         // other tail is then the complement of one that is not near 1.
         if self.x * (self.b + 1.0) <= self.y * (self.a + 1.0) {
             let lower = self.short_tail()?;
-            Ok(BothTails {
-                lower,
-                upper: 1.0 - lower,
-            })
+            Ok(BothTails { lower, upper: 1.0 - lower })
         } else {
             let upper = self.mirrored().short_tail()?;
-            Ok(BothTails {
-                lower: 1.0 - upper,
-                upper,
-            })
+            Ok(BothTails { lower: 1.0 - upper, upper })
         }
     }
 
@@ -142,14 +106,7 @@ impl Point {
     /// Its terms hold the distance below the mean as such, so that nothing cancels
     /// where a is large and x close to 1.
     fn fraction(self) -> Result<f64, DistributionError> {
-        let Self {
-            a,
-            b,
-            x,
-            y,
-            below_mean,
-            ..
-        } = self;
+        let Self { a, b, x, y, below_mean, .. } = self;
         let guarded = |v: f64| if v.abs() < TINY { TINY } else { v };
         let mut value = guarded(a / (a + 1.0) * (below_mean + 1.0));
         let mut c = value;
@@ -186,26 +143,12 @@ pub fn both_tails(a: f64, b: f64, x: f64) -> Result<BothTails, DistributionError
     DOMAIN.not_negative("the point", x)?;
     DOMAIN.not_negative("one minus the point", 1.0 - x)?;
     if x == 0.0 {
-        return Ok(BothTails {
-            lower: 0.0,
-            upper: 1.0,
-        });
+        return Ok(BothTails { lower: 0.0, upper: 1.0 });
     }
     if x == 1.0 {
-        return Ok(BothTails {
-            lower: 1.0,
-            upper: 0.0,
-        });
+        return Ok(BothTails { lower: 1.0, upper: 0.0 });
     }
     let y = 1.0 - x;
-    let point = Point {
-        a,
-        b,
-        x,
-        y,
-        below_mean: a * y - b * x,
-        log_x: log(x),
-        log_y: libm::log1p(-x),
-    };
+    let point = Point { a, b, x, y, below_mean: a * y - b * x, log_x: log(x), log_y: libm::log1p(-x) };
     point.both_tails()
 }

@@ -17,10 +17,7 @@ fn tails(x: f64, df: f64) -> Result<BothTails, DistributionError> {
     DOMAIN.finite("the statistic", x)?;
     DOMAIN.positive("the degrees of freedom", df)?;
     if x <= 0.0 {
-        return Ok(BothTails {
-            lower: 0.0,
-            upper: 1.0,
-        });
+        return Ok(BothTails { lower: 0.0, upper: 1.0 });
     }
     let (a, x) = (df / 2.0, x / 2.0);
     // x^a e^-x / Gamma(a)
@@ -28,16 +25,10 @@ fn tails(x: f64, df: f64) -> Result<BothTails, DistributionError> {
     let factor = (a / TAU).sqrt() * exp(exponent);
     if x <= a + 1.0 {
         let lower = (factor * lower_series(a, x)?).min(1.0);
-        Ok(BothTails {
-            lower,
-            upper: 1.0 - lower,
-        })
+        Ok(BothTails { lower, upper: 1.0 - lower })
     } else {
         let upper = factor * upper_fraction(a, x)?;
-        Ok(BothTails {
-            lower: 1.0 - upper,
-            upper,
-        })
+        Ok(BothTails { lower: 1.0 - upper, upper })
     }
 }
 
@@ -67,12 +58,7 @@ fn upper_fraction(a: f64, x: f64) -> Result<f64, DistributionError> {
         let numerator = -m * (m - a);
         b += 2.0;
         let denominator = numerator * d + b;
-        d = 1.0
-            / if denominator.abs() < 1e-300 {
-                1e-300
-            } else {
-                denominator
-            };
+        d = 1.0 / if denominator.abs() < 1e-300 { 1e-300 } else { denominator };
         c = b + numerator / c;
         if c.abs() < 1e-300 {
             c = 1e-300;

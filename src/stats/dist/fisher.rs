@@ -22,16 +22,10 @@ fn tails(f: f64, df1: f64, df2: f64) -> Result<BothTails, DistributionError> {
     DOMAIN.finite("the statistic", f)?;
     check(df1, df2)?;
     if f <= 0.0 {
-        return Ok(BothTails {
-            lower: 0.0,
-            upper: 1.0,
-        });
+        return Ok(BothTails { lower: 0.0, upper: 1.0 });
     }
     let swapped = point(f, df1, df2).both_tails()?;
-    Ok(BothTails {
-        lower: swapped.upper,
-        upper: swapped.lower,
-    })
+    Ok(BothTails { lower: swapped.upper, upper: swapped.lower })
 }
 
 /// P(F > `f`) with `df1` and `df2` degrees of freedom, fractional ones included;

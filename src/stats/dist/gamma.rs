@@ -54,9 +54,5 @@ pub(super) fn excess_over_log(v: f64) -> f64 {
 /// to full accuracy and `log_ratio` gives ln(m / a).
 pub(super) fn deviance(a: f64, difference: f64, log_ratio: impl FnOnce() -> f64) -> f64 {
     let v = -difference / a;
-    if v < -0.5 {
-        a * (v - log_ratio())
-    } else {
-        a * excess_over_log(v)
-    }
+    if v < -0.5 { a * (v - log_ratio()) } else { a * excess_over_log(v) }
 }

@@ -56,19 +56,10 @@ pub enum DistributionError {
 impl fmt::Display for DistributionError {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
-            Self::OutOfDomain {
-                distribution,
-                argument,
-                value,
-                expected,
-            } => write!(
-                f,
-                "{distribution} distribution: {argument} is {value}, but it must be {expected}"
-            ),
-            Self::OutOfReach {
-                distribution,
-                reason,
-            } => {
+            Self::OutOfDomain { distribution, argument, value, expected } => {
+                write!(f, "{distribution} distribution: {argument} is {value}, but it must be {expected}")
+            }
+            Self::OutOfReach { distribution, reason } => {
                 write!(f, "{distribution} distribution: {reason}")
             }
         }
@@ -95,14 +86,7 @@ impl Tail {
     /// assert_eq!(Tail::reported(0.0), Tail { p: 1e-300, bound: true });
     /// ```
     pub fn reported(p: f64) -> Self {
-        if p < SMALLEST_REPORTED_P {
-            Self {
-                p: SMALLEST_REPORTED_P,
-                bound: true,
-            }
-        } else {
-            Self { p, bound: false }
-        }
+        if p < SMALLEST_REPORTED_P { Self { p: SMALLEST_REPORTED_P, bound: true } } else { Self { p, bound: false } }
     }
 }
 
@@ -111,76 +95,27 @@ impl Tail {
 pub(crate) struct Domain(pub(crate) &'static str);
 
 impl Domain {
-    pub(crate) fn finite(
-        self,
-        argument: &'static str,
-        value: f64,
-    ) -> Result<(), DistributionError> {
+    pub(crate) fn finite(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
         self.check(value.is_finite(), argument, value, "a finite number")
     }
 
-    pub(crate) fn positive(
-        self,
-        argument: &'static str,
-        value: f64,
-    ) -> Result<(), DistributionError> {
-        self.check(
-            value.is_finite() && value > 0.0,
-            argument,
-            value,
-            "finite and above 0",
-        )
+    pub(crate) fn positive(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
+        self.check(value.is_finite() && value > 0.0, argument, value, "finite and above 0")
     }
 
-    pub(crate) fn not_negative(
-        self,
-        argument: &'static str,
-        value: f64,
-    ) -> Result<(), DistributionError> {
-        self.check(
-            value.is_finite() && value >= 0.0,
-            argument,
-            value,
-            "finite and not below 0",
-        )
+    pub(crate) fn not_negative(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
+        self.check(value.is_finite() && value >= 0.0, argument, value, "finite and not below 0")
     }
 
-    pub(crate) fn probability(
-        self,
-        argument: &'static str,
-        value: f64,
-    ) -> Result<(), DistributionError> {
-        self.check(
-            value > 0.0 && value < 1.0,
-            argument,
-            value,
-            "between 0 and 1, both excluded",
-        )
+    pub(crate) fn probability(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
+        self.check(value > 0.0 && value < 1.0, argument, value, "between 0 and 1, both excluded")
     }
 
     pub(crate) fn out_of_reach(self, reason: &'static str) -> DistributionError {
-        DistributionError::OutOfReach {
-            distribution: self.0,
-            reason,
-        }
+        DistributionError::OutOfReach { distribution: self.0, reason }
     }
 
-    fn check(
-        self,
-        holds: bool,
-        argument: &'static str,
-        value: f64,
-        expected: &'static str,
-    ) -> Result<(), DistributionError> {
-        if holds {
-            Ok(())
-        } else {
-            Err(DistributionError::OutOfDomain {
-                distribution: self.0,
-                argument,
-                value,
-                expected,
-            })
-        }
+    fn check(self, holds: bool, argument: &'static str, value: f64, expected: &'static str) -> Result<(), DistributionError> {
+        if holds { Ok(()) } else { Err(DistributionError::OutOfDomain { distribution: self.0, argument, value, expected }) }
     }
 }

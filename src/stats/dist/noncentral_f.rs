@@ -78,11 +78,7 @@ fn mixture(f: f64, df1: f64, df2: f64, lambda: f64) -> Result<Mixture, Distribut
         // I_y(a, b) - I_y(a + 1, b)
         difference: point.density_factor() / point.a,
     };
-    let mut sum = Mixture {
-        lower: 0.0,
-        upper: 0.0,
-        slope: 0.0,
-    };
+    let mut sum = Mixture { lower: 0.0, upper: 0.0, slope: 0.0 };
     let mut previous = (0.0, 0.0);
     // True once the term no longer counts and the terms shrink.
     let mut add = |term: Term| {
@@ -90,10 +86,7 @@ fn mixture(f: f64, df1: f64, df2: f64, lambda: f64) -> Result<Mixture, Distribut
         sum.lower += lower;
         sum.upper += upper;
         sum.slope += 0.5 * term.weight * term.difference;
-        let done = lower <= NEGLIGIBLE * sum.lower
-            && upper <= NEGLIGIBLE * sum.upper
-            && lower <= previous.0
-            && upper <= previous.1;
+        let done = lower <= NEGLIGIBLE * sum.lower && upper <= NEGLIGIBLE * sum.upper && lower <= previous.0 && upper <= previous.1;
         previous = (lower, upper);
         done
     };
@@ -140,21 +133,13 @@ fn tails(f: f64, df1: f64, df2: f64, lambda: f64) -> Result<Mixture, Distributio
     check(f, df1, df2)?;
     DOMAIN.not_negative("the noncentrality", lambda)?;
     if f == 0.0 {
-        return Ok(Mixture {
-            lower: 0.0,
-            upper: 1.0,
-            slope: 0.0,
-        });
+        return Ok(Mixture { lower: 0.0, upper: 1.0, slope: 0.0 });
     }
     mixture(f, df1, df2, lambda)
 }
 
 fn within_reach(p: f64, f: f64) -> Result<f64, DistributionError> {
-    if p > 1e-290 || f == 0.0 {
-        Ok(p.min(1.0))
-    } else {
-        Err(DOMAIN.out_of_reach(TOO_FAR))
-    }
+    if p > 1e-290 || f == 0.0 { Ok(p.min(1.0)) } else { Err(DOMAIN.out_of_reach(TOO_FAR)) }
 }
 
 /// P(F <= `f`) with `df1` and `df2` degrees of freedom and noncentrality `lambda`.
@@ -189,26 +174,13 @@ pub fn upper_tail(f: f64, df1: f64, df2: f64, lambda: f64) -> Result<f64, Distri
 /// let (lower, upper) = noncentrality_limits(4.2, 3.0, 57.0, 0.90).unwrap();
 /// assert!((lower - 1.76850706).abs() < 1e-8 && (upper - 25.34825156).abs() < 1e-8);
 /// ```
-pub fn noncentrality_limits(
-    f: f64,
-    df1: f64,
-    df2: f64,
-    level: f64,
-) -> Result<(f64, f64), DistributionError> {
+pub fn noncentrality_limits(f: f64, df1: f64, df2: f64, level: f64) -> Result<(f64, f64), DistributionError> {
     check(f, df1, df2)?;
     DOMAIN.probability("the confidence level", level)?;
     let each = 0.5 * (1.0 - level);
     let z = normal::quantile_upper(each)?;
-    let lower = if fisher::upper_tail(f, df1, df2)? >= each {
-        0.0
-    } else {
-        solve(f, df1, df2, each, z, Side::Lower)?
-    };
-    let upper = if fisher::lower_tail(f, df1, df2)? <= each {
-        0.0
-    } else {
-        solve(f, df1, df2, each, z, Side::Upper)?
-    };
+    let lower = if fisher::upper_tail(f, df1, df2)? >= each { 0.0 } else { solve(f, df1, df2, each, z, Side::Lower)? };
+    let upper = if fisher::lower_tail(f, df1, df2)? <= each { 0.0 } else { solve(f, df1, df2, each, z, Side::Upper)? };
     Ok((lower, upper))
 }
 
@@ -220,23 +192,12 @@ enum Side {
 }
 
 /// Newton's method on the probit scale in the root of lambda, inside a bracket.
-fn solve(
-    f: f64,
-    df1: f64,
-    df2: f64,
-    target: f64,
-    z: f64,
-    side: Side,
-) -> Result<f64, DistributionError> {
+fn solve(f: f64, df1: f64, df2: f64, target: f64, z: f64, side: Side) -> Result<f64, DistributionError> {
     let (mut left, mut right) = (0.0_f64, f64::INFINITY);
     let mut root = first_guess(f, df1, df2, if side == Side::Lower { -z } else { z });
     for _ in 0..200 {
         let here = mixture(f, df1, df2, root * root)?;
-        let (tail, sign) = if side == Side::Lower {
-            (here.upper, 1.0)
-        } else {
-            (here.lower, -1.0)
-        };
+        let (tail, sign) = if side == Side::Lower { (here.upper, 1.0) } else { (here.lower, -1.0) };
         if sign * (tail - target) > 0.0 {
             right = right.min(root);
         } else {

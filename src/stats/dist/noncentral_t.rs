@@ -198,15 +198,10 @@ impl ScaleRule {
 
     /// E Phi(sign (t S - delta)) and E phi(t S - delta).
     fn tail_and_density(&self, delta: f64, sign: f64) -> (f64, f64) {
-        self.points
-            .iter()
-            .fold((0.0, 0.0), |(tail, density), &(shifted, weight)| {
-                let x = shifted - delta;
-                (
-                    tail + weight * normal::tail(-sign * x),
-                    density + weight * normal::density(x),
-                )
-            })
+        self.points.iter().fold((0.0, 0.0), |(tail, density), &(shifted, weight)| {
+            let x = shifted - delta;
+            (tail + weight * normal::tail(-sign * x), density + weight * normal::density(x))
+        })
     }
 
     /// The delta whose tail on the side of `sign` is `target`, with z its normal quantile.

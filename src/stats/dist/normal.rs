@@ -85,11 +85,7 @@ fn quantile_above_median(p: f64) -> f64 {
     for _ in 0..20 {
         let upper = tail(z);
         let hazard = density(z) / upper;
-        let excess = if p > 0.1 {
-            (upper - p) / upper
-        } else {
-            log(upper) - log_p
-        };
+        let excess = if p > 0.1 { (upper - p) / upper } else { log(upper) - log_p };
         let step = excess / hazard;
         z += step;
         if step.abs() <= 1e-16 * z.abs().max(SQRT_2) {

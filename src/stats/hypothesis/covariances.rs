@@ -65,26 +65,18 @@ pub fn box_m(moments: &Moments) -> Result<BoxM, Refusal> {
     for cell in 0..cells {
         let only: Vec<bool> = (0..cells).map(|other| other == cell).collect();
         let subjects = moments.cells()[cell].subjects;
-        let (logarithm, df) = log_determinant(&only).map_err(|_| Refusal::SingularCell {
-            cell,
-            subjects,
-            occasions,
-        })?;
+        let (logarithm, df) = log_determinant(&only).map_err(|_| Refusal::SingularCell { cell, subjects, occasions })?;
         let inverse = DoubleDouble::ONE / DoubleDouble::from(df);
         weighted += logarithm * DoubleDouble::from(df);
         inverse_sum += inverse;
         inverse_square_sum += inverse.square();
     }
     let (logarithm, df) = log_determinant(&vec![true; cells])?;
-    let m = (logarithm * DoubleDouble::from(df) - weighted)
-        .value()
-        .max(0.0);
+    let m = (logarithm * DoubleDouble::from(df) - weighted).value().max(0.0);
     let inverse = DoubleDouble::ONE / DoubleDouble::from(df);
     let (b, g) = (occasions as f64, cells as f64);
-    let c1 = (inverse_sum - inverse).value() * (2.0 * b * b + 3.0 * b - 1.0)
-        / (6.0 * (b + 1.0) * (g - 1.0));
-    let c2 =
-        (inverse_square_sum - inverse.square()).value() * (b - 1.0) * (b + 2.0) / (6.0 * (g - 1.0));
+    let c1 = (inverse_sum - inverse).value() * (2.0 * b * b + 3.0 * b - 1.0) / (6.0 * (b + 1.0) * (g - 1.0));
+    let c2 = (inverse_square_sum - inverse.square()).value() * (b - 1.0) * (b + 2.0) / (6.0 * (g - 1.0));
     let df1 = b * (b + 1.0) * (g - 1.0) / 2.0;
     let excess = c2 - c1 * c1;
     let (f, df2) = if excess > 0.0 {
@@ -101,13 +93,5 @@ pub fn box_m(moments: &Moments) -> Result<BoxM, Refusal> {
     if f.is_nan() || f < 0.0 || c1 >= 1.0 {
         return Err(Refusal::BoxApproximation);
     }
-    Ok(BoxM {
-        m,
-        f,
-        df1,
-        df2,
-        chi_squared: m * (1.0 - c1),
-        c1,
-        c2,
-    })
+    Ok(BoxM { m, f, df1, df2, chi_squared: m * (1.0 - c1), c1, c2 })
 }

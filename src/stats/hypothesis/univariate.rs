@@ -94,9 +94,7 @@ impl UnivariateTest {
 
 /// A tail that could not be computed, as a refusal.
 pub(super) fn probability(error: impl std::fmt::Display) -> Refusal {
-    Refusal::Probability {
-        reason: error.to_string(),
-    }
+    Refusal::Probability { reason: error.to_string() }
 }
 
 /// Error mean square with what goes with it.

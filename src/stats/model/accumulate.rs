@@ -32,8 +32,7 @@ pub(super) struct Rows<'a> {
 /// Whether two threads are worth starting for so many values.
 pub(super) fn worth_threads(values: usize) -> bool {
     // Asking for the number of processors costs more than small data do, so the size comes first.
-    values >= THREADED_FROM
-        && std::thread::available_parallelism().is_ok_and(|processors| processors.get() > 1)
+    values >= THREADED_FROM && std::thread::available_parallelism().is_ok_and(|processors| processors.get() > 1)
 }
 
 /// Counts, sums and largest magnitudes of the first pass, all cell by cell.
@@ -58,11 +57,7 @@ struct Compensated {
 
 impl Compensated {
     fn new(length: usize) -> Compensated {
-        Compensated {
-            high: vec![0.0; length],
-            low: vec![0.0; length],
-            total: vec![DoubleDouble::ZERO; length],
-        }
+        Compensated { high: vec![0.0; length], low: vec![0.0; length], total: vec![DoubleDouble::ZERO; length] }
     }
 
     fn fold(&mut self) {
@@ -105,11 +100,7 @@ impl Rows<'_> {
     /// `work` for each part that has rows, in order.
     fn in_parts<T: Send>(&self, work: impl Fn(std::ops::Range<usize>) -> T + Sync) -> Vec<T> {
         let run = |parts: std::ops::Range<usize>| -> Vec<T> {
-            parts
-                .map(|part| self.part(part))
-                .filter(|rows| !rows.is_empty())
-                .map(&work)
-                .collect()
+            parts.map(|part| self.part(part)).filter(|rows| !rows.is_empty()).map(&work).collect()
         };
         if !self.threaded {
             return run(0..PARTS);
@@ -128,19 +119,12 @@ impl Rows<'_> {
     /// The first pass.
     pub fn centres(&self) -> Result<Centres, Refusal> {
         let width = self.occasions;
-        let first = (0..self.subjects())
-            .find(|&subject| self.keeps(subject))
-            .ok_or(Refusal::NoSubjects)?;
+        let first = (0..self.subjects()).find(|&subject| self.keeps(subject)).ok_or(Refusal::NoSubjects)?;
         let shift = &self.values[first * width..(first + 1) * width];
         if let Some(occasion) = shift.iter().position(|value| !value.is_finite()) {
-            return Err(Refusal::NotFinite {
-                subject: first,
-                occasion,
-            });
+            return Err(Refusal::NotFinite { subject: first, occasion });
         }
-        let mut parts = self
-            .in_parts(|rows| self.first_part(rows, shift))
-            .into_iter();
+        let mut parts = self.in_parts(|rows| self.first_part(rows, shift)).into_iter();
         let mut all = parts.next().ok_or(Refusal::NoSubjects)?;
         let mut not_finite = all.not_finite;
         for part in parts {
@@ -154,15 +138,10 @@ impl Rows<'_> {
             not_finite = not_finite.or(part.not_finite);
         }
         if let Some(place) = not_finite {
-            return Err(Refusal::NotFinite {
-                subject: place / width,
-                occasion: place % width,
-            });
+            return Err(Refusal::NotFinite { subject: place / width, occasion: place % width });
         }
         for occasion in 0..width {
-            let largest = (0..self.cells)
-                .map(|cell| all.largest[cell * width + occasion])
-                .fold(0.0, f64::max);
+            let largest = (0..self.cells).map(|cell| all.largest[cell * width + occasion]).fold(0.0, f64::max);
             if largest > LARGEST || (largest > 0.0 && largest < SMALLEST) {
                 return Err(Refusal::OutOfRange { occasion });
             }
@@ -171,16 +150,11 @@ impl Rows<'_> {
         for (place, centre) in centre.iter_mut().enumerate() {
             let count = all.count[place / width];
             if count > 0 {
-                let mean = DoubleDouble::from(shift[place % width])
-                    + all.sum.total[place] / DoubleDouble::from(count);
+                let mean = DoubleDouble::from(shift[place % width]) + all.sum.total[place] / DoubleDouble::from(count);
                 *centre = mean.value();
             }
         }
-        Ok(Centres {
-            count: all.count,
-            centre,
-            largest: all.largest,
-        })
+        Ok(Centres { count: all.count, centre, largest: all.largest })
     }
 
     fn first_part(&self, rows: std::ops::Range<usize>, shift: &[f64]) -> FirstPart {
@@ -239,26 +213,16 @@ impl Rows<'_> {
             _ => self.second_part::<0>(rows, centre),
         };
         let width = self.occasions;
-        let mut all = (
-            Compensated::new(self.cells * width),
-            Compensated::new(self.cells * width * (width + 1) / 2),
-        );
+        let mut all = (Compensated::new(self.cells * width), Compensated::new(self.cells * width * (width + 1) / 2));
         for (sum, product) in self.in_parts(work) {
             all.0.merge(&sum);
             all.1.merge(&product);
         }
-        Deviations {
-            sum: all.0.total,
-            product: all.1.total,
-        }
+        Deviations { sum: all.0.total, product: all.1.total }
     }
 
     /// `FIXED` is the number of occasions where it is known when compiling, otherwise 0.
-    fn second_part<const FIXED: usize>(
-        &self,
-        rows: std::ops::Range<usize>,
-        centre: &[f64],
-    ) -> (Compensated, Compensated) {
+    fn second_part<const FIXED: usize>(&self, rows: std::ops::Range<usize>, centre: &[f64]) -> (Compensated, Compensated) {
         let width = if FIXED == 0 { self.occasions } else { FIXED };
         let pairs = width * (width + 1) / 2;
         let mut sum = Compensated::new(self.cells * width);
@@ -305,8 +269,7 @@ impl Rows<'_> {
 
 fn blocks(rows: std::ops::Range<usize>) -> impl Iterator<Item = std::ops::Range<usize>> {
     let end = rows.end;
-    rows.step_by(BLOCK)
-        .map(move |start| start..(start + BLOCK).min(end))
+    rows.step_by(BLOCK).map(move |start| start..(start + BLOCK).min(end))
 }
 
 #[cfg(test)]
@@ -318,32 +281,18 @@ mod tests {
         let (subjects, occasions) = (3 * PARTS * BLOCK / 2 + 17, 3);
         let mut state = 1_u64;
         let mut next = || {
-            state = state
-                .wrapping_mul(6_364_136_223_846_793_005)
-                .wrapping_add(1_442_695_040_888_963_407);
+            state = state.wrapping_mul(6_364_136_223_846_793_005).wrapping_add(1_442_695_040_888_963_407);
             (state >> 11) as f64 / 1e10
         };
         let values: Vec<f64> = (0..subjects * occasions).map(|_| next()).collect();
-        let cell: Vec<u32> = (0..subjects)
-            .map(|subject| (subject % 5 / 2) as u32)
-            .collect();
-        let rows = |threaded| Rows {
-            values: &values,
-            occasions,
-            cell: &cell,
-            cells: 3,
-            kept: None,
-            threaded,
-        };
+        let cell: Vec<u32> = (0..subjects).map(|subject| (subject % 5 / 2) as u32).collect();
+        let rows = |threaded| Rows { values: &values, occasions, cell: &cell, cells: 3, kept: None, threaded };
         let (one, two) = (rows(false), rows(true));
         let centres = [one.centres(), two.centres()].map(|centres| centres.expect("finite values"));
         assert_eq!(centres[0].centre, centres[1].centre);
         assert_eq!(centres[0].largest, centres[1].largest);
         assert_eq!(centres[0].count, centres[1].count);
-        let deviations = [
-            one.deviations(&centres[0].centre),
-            two.deviations(&centres[0].centre),
-        ];
+        let deviations = [one.deviations(&centres[0].centre), two.deviations(&centres[0].centre)];
         assert_eq!(deviations[0].sum, deviations[1].sum);
         assert_eq!(deviations[0].product, deviations[1].product);
     }

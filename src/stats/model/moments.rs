@@ -66,34 +66,11 @@ impl Moments {
     ///
     /// # Panics
     /// Where lengths do not agree or a cell is out of range: a slip of the caller, not of the data.
-    pub fn new(
-        values: &[f64],
-        occasions: usize,
-        cell: &[u32],
-        cells: usize,
-        kept: Option<&[bool]>,
-    ) -> Result<Moments, Refusal> {
-        assert_eq!(
-            values.len(),
-            cell.len() * occasions,
-            "one row of values for each subject"
-        );
-        assert!(
-            kept.is_none_or(|kept| kept.len() == cell.len()),
-            "one flag for each subject"
-        );
-        assert!(
-            cell.iter().all(|&cell| (cell as usize) < cells),
-            "every cell is below the number of cells"
-        );
-        let rows = Rows {
-            values,
-            occasions,
-            cell,
-            cells,
-            kept,
-            threaded: worth_threads(values.len()),
-        };
+    pub fn new(values: &[f64], occasions: usize, cell: &[u32], cells: usize, kept: Option<&[bool]>) -> Result<Moments, Refusal> {
+        assert_eq!(values.len(), cell.len() * occasions, "one row of values for each subject");
+        assert!(kept.is_none_or(|kept| kept.len() == cell.len()), "one flag for each subject");
+        assert!(cell.iter().all(|&cell| (cell as usize) < cells), "every cell is below the number of cells");
+        let rows = Rows { values, occasions, cell, cells, kept, threaded: worth_threads(values.len()) };
         let centres = rows.centres()?;
         let deviations = rows.deviations(&centres.centre);
         let pairs = occasions * (occasions + 1) / 2;
@@ -125,10 +102,7 @@ impl Moments {
             }
             moments
         });
-        Ok(Moments {
-            occasions,
-            cells: cells.collect(),
-        })
+        Ok(Moments { occasions, cells: cells.collect() })
     }
 
     /// Moments that were not read from rows, as where they are drawn directly from their distribution.
@@ -140,10 +114,7 @@ impl Moments {
         for cell in &cells {
             assert_eq!(cell.mean.len(), occasions, "one number of occasions");
             assert_eq!(cell.largest.len(), occasions, "one number of occasions");
-            assert_eq!(
-                (cell.cross_products.rows(), cell.cross_products.columns()),
-                (occasions, occasions)
-            );
+            assert_eq!((cell.cross_products.rows(), cell.cross_products.columns()), (occasions, occasions));
         }
         Moments { occasions, cells }
     }
@@ -176,19 +147,13 @@ impl Moments {
     /// Covariance of two occasions in a cell (a variance where they are the same); none below two subjects.
     pub fn covariance(&self, cell: usize, first: usize, second: usize) -> Option<f64> {
         let cell = &self.cells[cell];
-        (cell.subjects >= 2).then(|| {
-            (cell.cross_products[(first, second)] / DoubleDouble::from(cell.subjects - 1)).value()
-        })
+        (cell.subjects >= 2).then(|| (cell.cross_products[(first, second)] / DoubleDouble::from(cell.subjects - 1)).value())
     }
 
     /// Standard deviation of a cell at an occasion; none below two subjects.
     pub fn standard_deviation(&self, cell: usize, occasion: usize) -> Option<f64> {
         let cell = &self.cells[cell];
-        (cell.subjects >= 2).then(|| {
-            (cell.cross_products[(occasion, occasion)] / DoubleDouble::from(cell.subjects - 1))
-                .sqrt()
-                .value()
-        })
+        (cell.subjects >= 2).then(|| (cell.cross_products[(occasion, occasion)] / DoubleDouble::from(cell.subjects - 1)).sqrt().value())
     }
 
     /// Correlation of two occasions within a cell.
@@ -207,11 +172,8 @@ impl Moments {
                 return Err(Refusal::ConstantOccasion { cell, occasion });
             }
         }
-        let product =
-            moments.cross_products[(first, first)] * moments.cross_products[(second, second)];
-        Ok((moments.cross_products[(first, second)] / product.sqrt())
-            .value()
-            .clamp(-1.0, 1.0))
+        let product = moments.cross_products[(first, first)] * moments.cross_products[(second, second)];
+        Ok((moments.cross_products[(first, second)] / product.sqrt()).value().clamp(-1.0, 1.0))
     }
 
     /// M'EM pooled over the cells kept, for `within` (occasions by contrasts) with orthonormal columns.
@@ -222,12 +184,7 @@ impl Moments {
         let mut pooled = Matrix::zeros(self.occasions, self.occasions);
         let mut rounding = vec![0.0_f64; self.occasions];
         let (mut subjects, mut cells) = (0, 0);
-        for (cell, _) in self
-            .cells
-            .iter()
-            .zip(kept)
-            .filter(|(cell, kept)| **kept && cell.subjects > 0)
-        {
+        for (cell, _) in self.cells.iter().zip(kept).filter(|(cell, kept)| **kept && cell.subjects > 0) {
             pooled.accumulate(&cell.cross_products);
             subjects += cell.subjects;
             cells += 1;
@@ -239,15 +196,7 @@ impl Moments {
             return Err(Refusal::NoErrorDf);
         }
         let df = subjects - cells;
-        Ok(ErrorMatrix {
-            matrix: pooled.congruence(within),
-            df,
-            subjects,
-            cells,
-            within: within.clone(),
-            pooled,
-            rounding,
-        })
+        Ok(ErrorMatrix { matrix: pooled.congruence(within), df, subjects, cells, within: within.clone(), pooled, rounding })
     }
 }
 
@@ -263,14 +212,8 @@ impl ErrorMatrix {
     /// The trace is zero by the rule of [`Moments`].
     pub fn trace(&self) -> Result<DoubleDouble, Refusal> {
         let trace = self.matrix.trace();
-        let noise: f64 = (0..self.contrasts())
-            .map(|contrast| self.noise(&self.within.column(contrast)))
-            .sum();
-        if trace.value() <= noise {
-            Err(Refusal::NoErrorVariance)
-        } else {
-            Ok(trace)
-        }
+        let noise: f64 = (0..self.contrasts()).map(|contrast| self.noise(&self.within.column(contrast))).sum();
+        if trace.value() <= noise { Err(Refusal::NoErrorVariance) } else { Ok(trace) }
     }
 
     /// ln det M'EM.
@@ -286,35 +229,19 @@ impl ErrorMatrix {
     pub fn log_determinant(&self) -> Result<DoubleDouble, Refusal> {
         const PIVOT: f64 = 1e-24;
         let size = self.contrasts();
-        let singular = |rank| Refusal::SingularError {
-            rank,
-            contrasts: size,
-            error_df: self.df,
-        };
+        let singular = |rank| Refusal::SingularError { rank, contrasts: size, error_df: self.df };
         if size > self.df {
             return Err(singular(self.df));
         }
         let (mut weights, mut logarithm) = self.graded_basis();
         let mut left = self.pooled.congruence(&weights.transpose());
-        let own: Vec<f64> = (0..size)
-            .map(|index| left[(index, index)].value())
-            .collect();
+        let own: Vec<f64> = (0..size).map(|index| left[(index, index)].value()).collect();
         let mut waiting: Vec<usize> = (0..size).collect();
         while !waiting.is_empty() {
             let share = |index: usize| {
-                if own[index] > 0.0 {
-                    left[(index, index)].value() / own[index]
-                } else {
-                    0.0
-                }
+                if own[index] > 0.0 { left[(index, index)].value() / own[index] } else { 0.0 }
             };
-            let best = (0..waiting.len()).fold(0, |best, next| {
-                if share(waiting[next]) > share(waiting[best]) {
-                    next
-                } else {
-                    best
-                }
-            });
+            let best = (0..waiting.len()).fold(0, |best, next| if share(waiting[next]) > share(waiting[best]) { next } else { best });
             let pivot = waiting.swap_remove(best);
             let value = left[(pivot, pivot)];
             if value.value() <= (PIVOT * own[pivot]).max(self.noise(weights.row(pivot))) {
@@ -346,13 +273,8 @@ impl ErrorMatrix {
         let mut logarithm = DoubleDouble::ZERO;
         for occasion in occasions {
             let size = |row: usize| rows[(row, occasion)].value().abs();
-            let Some(best) = (0..waiting.len()).reduce(|best, next| {
-                if size(waiting[next]) > size(waiting[best]) {
-                    next
-                } else {
-                    best
-                }
-            }) else {
+            let Some(best) = (0..waiting.len()).reduce(|best, next| if size(waiting[next]) > size(waiting[best]) { next } else { best })
+            else {
                 break;
             };
             if size(waiting[best]) <= NEGLIGIBLE {
@@ -373,12 +295,8 @@ impl ErrorMatrix {
 
     /// The sum of squares that rounding of the values alone may leave in a combination of occasions.
     fn noise(&self, weights: &[DoubleDouble]) -> f64 {
-        let variance: f64 = weights
-            .iter()
-            .zip(&self.rounding)
-            .map(|(weight, unit)| weight.value() * unit)
-            .map(|amount| amount * amount)
-            .sum();
+        let variance: f64 =
+            weights.iter().zip(&self.rounding).map(|(weight, unit)| weight.value() * unit).map(|amount| amount * amount).sum();
         variance * self.df as f64
     }
 }

@@ -79,12 +79,9 @@ pub enum Refusal {
 impl fmt::Display for Refusal {
     fn fmt(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
-            Refusal::NotFinite { subject, occasion } => write!(
-                out,
-                "the value of subject {} at occasion {} is not a finite number",
-                subject + 1,
-                occasion + 1
-            ),
+            Refusal::NotFinite { subject, occasion } => {
+                write!(out, "the value of subject {} at occasion {} is not a finite number", subject + 1, occasion + 1)
+            }
             Refusal::OutOfRange { occasion } => write!(
                 out,
                 "the values at occasion {} are so large or so small that their squares cannot be held; give them in another unit",
@@ -92,20 +89,12 @@ impl fmt::Display for Refusal {
             ),
             Refusal::NoSubjects => write!(out, "there is no subject to analyse"),
             Refusal::EmptyCell { cell } => {
-                write!(
-                    out,
-                    "group {} has no subject, so that its mean cannot be estimated",
-                    cell + 1
-                )
+                write!(out, "group {} has no subject, so that its mean cannot be estimated", cell + 1)
             }
-            Refusal::NotEstimable => write!(
-                out,
-                "the weights leave nothing to test: every combination of them is zero"
-            ),
-            Refusal::NoErrorDf => write!(
-                out,
-                "no group that is compared has two subjects or more, so that there is no error variance to test against"
-            ),
+            Refusal::NotEstimable => write!(out, "the weights leave nothing to test: every combination of them is zero"),
+            Refusal::NoErrorDf => {
+                write!(out, "no group that is compared has two subjects or more, so that there is no error variance to test against")
+            }
             Refusal::NoErrorVariance => write!(
                 out,
                 "the error variance is zero: within groups the values do not vary beyond what rounding leaves, so that there is nothing to test against"
@@ -114,48 +103,32 @@ impl fmt::Display for Refusal {
                 out,
                 "the error mixes several strata, so that no single epsilon applies to it; use the effect's own error, or no correction"
             ),
-            Refusal::HuynhFeldtUndefined => write!(
-                out,
-                "Huynh and Feldt's epsilon has no value: too few subjects for this many contrasts (nu - q e is not above 0)"
-            ),
-            Refusal::OneContrast => {
-                write!(
-                    out,
-                    "sphericity cannot be departed from: there is only one contrast between occasions"
-                )
+            Refusal::HuynhFeldtUndefined => {
+                write!(out, "Huynh and Feldt's epsilon has no value: too few subjects for this many contrasts (nu - q e is not above 0)")
             }
-            Refusal::SingularError {
-                rank,
-                contrasts,
-                error_df,
-            } => write!(
+            Refusal::OneContrast => {
+                write!(out, "sphericity cannot be departed from: there is only one contrast between occasions")
+            }
+            Refusal::SingularError { rank, contrasts, error_df } => write!(
                 out,
                 "the error matrix is singular: {contrasts} contrasts between occasions, {rank} of them independent, {error_df} error df; \
                  there are too few subjects, or occasions that are linear copies of others"
             ),
-            Refusal::SingularCell {
-                cell,
-                subjects,
-                occasions,
-            } => write!(
+            Refusal::SingularCell { cell, subjects, occasions } => write!(
                 out,
                 "the covariance matrix of group {} is singular: {subjects} subjects, {occasions} occasions; \
                  there are too few subjects, or an occasion is constant or a linear copy of others",
                 cell + 1
             ),
-            Refusal::OneCell => write!(
-                out,
-                "there is only one group, so that there is nothing to compare it with"
-            ),
+            Refusal::OneCell => write!(out, "there is only one group, so that there is nothing to compare it with"),
             Refusal::ConstantDeviations { occasion } => write!(
                 out,
                 "the absolute deviations at occasion {} do not vary within groups, so that there is nothing to test against",
                 occasion + 1
             ),
-            Refusal::BoxApproximation => write!(
-                out,
-                "the F approximation to Box's M has no value here: M lies beyond the range that it covers"
-            ),
+            Refusal::BoxApproximation => {
+                write!(out, "the F approximation to Box's M has no value here: M lies beyond the range that it covers")
+            }
             Refusal::Probability { reason } => {
                 write!(out, "the probability could not be computed: {reason}")
             }

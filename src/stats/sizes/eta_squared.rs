@@ -6,9 +6,7 @@ use crate::stats::dist::noncentral_f;
 fn check_sums<'a>(sums: impl IntoIterator<Item = &'a f64>) -> Result<(), Refusal> {
     match sums.into_iter().find(|s| !s.is_finite() || **s < 0.0) {
         None => Ok(()),
-        Some(bad) => Err(Refusal::new(format!(
-            "eta squared needs sums of squares that are finite and not negative; one is {bad}"
-        ))),
+        Some(bad) => Err(Refusal::new(format!("eta squared needs sums of squares that are finite and not negative; one is {bad}"))),
     }
 }
 
@@ -16,9 +14,7 @@ fn share(part: f64, whole: f64) -> Result<f64, Refusal> {
     if whole > 0.0 {
         Ok(part / whole)
     } else {
-        Err(Refusal::new(
-            "eta squared is undefined: effect and error sums of squares are all 0, so the data do not vary",
-        ))
+        Err(Refusal::new("eta squared is undefined: effect and error sums of squares are all 0, so the data do not vary"))
     }
 }
 
@@ -41,12 +37,7 @@ pub fn partial_eta_squared(ss_effect: f64, ss_error: f64) -> Result<f64, Refusal
 ///
 /// # Errors
 /// Arguments outside their domain, and values that the noncentral F cannot give.
-pub fn partial_eta_squared_interval(
-    f: f64,
-    df1: f64,
-    df2: f64,
-    level: f64,
-) -> Result<(f64, f64), Refusal> {
+pub fn partial_eta_squared_interval(f: f64, df1: f64, df2: f64, level: f64) -> Result<(f64, f64), Refusal> {
     let (lower, upper) = noncentral_f::noncentrality_limits(f, df1, df2, level)?;
     let to_eta = |lambda: f64| lambda / (lambda + df1 + df2 + 1.0);
     Ok((to_eta(lower), to_eta(upper)))
@@ -74,28 +65,11 @@ pub struct EffectSum {
 /// # Errors
 /// A sum of squares that is negative or not finite; a denominator of 0; a position
 /// past the end.
-pub fn generalized_eta_squared(
-    effect: usize,
-    effects: &[EffectSum],
-    errors: &[f64],
-) -> Result<f64, Refusal> {
+pub fn generalized_eta_squared(effect: usize, effects: &[EffectSum], errors: &[f64]) -> Result<f64, Refusal> {
     check_sums(effects.iter().map(|e| &e.sum_of_squares).chain(errors))?;
-    let own = effects.get(effect).ok_or_else(|| {
-        Refusal::new(format!(
-            "there is no effect number {} in the design",
-            effect + 1
-        ))
-    })?;
-    let measured: f64 = effects
-        .iter()
-        .filter(|e| e.measured)
-        .map(|e| e.sum_of_squares)
-        .sum();
+    let own = effects.get(effect).ok_or_else(|| Refusal::new(format!("there is no effect number {} in the design", effect + 1)))?;
+    let measured: f64 = effects.iter().filter(|e| e.measured).map(|e| e.sum_of_squares).sum();
     let error: f64 = errors.iter().sum();
-    let manipulated = if own.measured {
-        0.0
-    } else {
-        own.sum_of_squares
-    };
+    let manipulated = if own.measured { 0.0 } else { own.sum_of_squares };
     share(own.sum_of_squares, manipulated + measured + error)
 }

@@ -23,9 +23,7 @@ pub struct Refusal {
 
 impl Refusal {
     fn new(reason: impl Into<String>) -> Self {
-        Self {
-            reason: reason.into(),
-        }
+        Self { reason: reason.into() }
     }
 }
 

@@ -68,30 +68,14 @@ impl PairedSummary {
     /// # Errors
     /// Fewer than two subjects; a value that is not finite; a negative standard
     /// deviation; `r` outside -1 to 1.
-    pub fn with_correlation(
-        n: usize,
-        means: (f64, f64),
-        sds: (f64, f64),
-        r: f64,
-    ) -> Result<Self, Refusal> {
+    pub fn with_correlation(n: usize, means: (f64, f64), sds: (f64, f64), r: f64) -> Result<Self, Refusal> {
         check_numbers(n, &[means.0, means.1, sds.0, sds.1, r], &[sds.0, sds.1])?;
         let (sd1, sd2) = sds;
-        let r = within_unit(r).ok_or_else(|| {
-            Refusal::new(format!(
-                "a correlation lies between -1 and 1, this one is {r}"
-            ))
-        })?;
+        let r = within_unit(r).ok_or_else(|| Refusal::new(format!("a correlation lies between -1 and 1, this one is {r}")))?;
         // (s1 - s2)^2 + 2 (1 - r) s1 s2 loses nothing when r is near 1.
         let variance = (sd1 - sd2) * (sd1 - sd2) + 2.0 * (1.0 - r) * sd1 * sd2;
         let correlation = (sd1 > 0.0 && sd2 > 0.0).then_some(r);
-        Ok(Self {
-            n,
-            change: means.1 - means.0,
-            sd1,
-            sd2,
-            sd_change: variance.sqrt(),
-            correlation,
-        })
+        Ok(Self { n, change: means.1 - means.0, sd1, sd2, sd_change: variance.sqrt(), correlation })
     }
 
     /// A summary with the standard deviation of the change given.
@@ -99,18 +83,9 @@ impl PairedSummary {
     /// # Errors
     /// As for [`PairedSummary::with_correlation`]; three standard deviations that
     /// no correlation can bring together.
-    pub fn with_sd_of_change(
-        n: usize,
-        means: (f64, f64),
-        sds: (f64, f64),
-        sd_change: f64,
-    ) -> Result<Self, Refusal> {
+    pub fn with_sd_of_change(n: usize, means: (f64, f64), sds: (f64, f64), sd_change: f64) -> Result<Self, Refusal> {
         let (sd1, sd2) = sds;
-        check_numbers(
-            n,
-            &[means.0, means.1, sd1, sd2, sd_change],
-            &[sd1, sd2, sd_change],
-        )?;
+        check_numbers(n, &[means.0, means.1, sd1, sd2, sd_change], &[sd1, sd2, sd_change])?;
         let correlation = if sd1 > 0.0 && sd2 > 0.0 {
             let apart = (sd_change - (sd1 - sd2)) * (sd_change + (sd1 - sd2));
             let r = 1.0 - apart / (2.0 * sd1 * sd2);
@@ -123,14 +98,7 @@ impl PairedSummary {
         } else {
             None
         };
-        Ok(Self {
-            n,
-            change: means.1 - means.0,
-            sd1,
-            sd2,
-            sd_change,
-            correlation,
-        })
+        Ok(Self { n, change: means.1 - means.0, sd1, sd2, sd_change, correlation })
     }
 
     /// The correlation of the two occasions; absent where one of them does not vary.
@@ -146,19 +114,13 @@ impl PairedSummary {
 
 fn check_numbers(n: usize, all: &[f64], sds: &[f64]) -> Result<(), Refusal> {
     if n < 2 {
-        return Err(Refusal::new(format!(
-            "a standardized change needs at least two subjects measured twice; there are {n}"
-        )));
+        return Err(Refusal::new(format!("a standardized change needs at least two subjects measured twice; there are {n}")));
     }
     if let Some(bad) = all.iter().find(|v| !v.is_finite()) {
-        return Err(Refusal::new(format!(
-            "a standardized change needs finite means, standard deviations and correlation; one is {bad}"
-        )));
+        return Err(Refusal::new(format!("a standardized change needs finite means, standard deviations and correlation; one is {bad}")));
     }
     match sds.iter().find(|s| **s < 0.0) {
-        Some(bad) => Err(Refusal::new(format!(
-            "a standard deviation cannot be negative ({bad})"
-        ))),
+        Some(bad) => Err(Refusal::new(format!("a standard deviation cannot be negative ({bad})"))),
         None => Ok(()),
     }
 }
@@ -172,17 +134,8 @@ fn within_unit(r: f64) -> Option<f64> {
 /// # Errors
 /// A standardizer of 0, or one that is undefined because an occasion does not
 /// vary or the correlation is 1.
-pub fn standardizer_value(
-    summary: &PairedSummary,
-    standardizer: Standardizer,
-) -> Result<f64, Refusal> {
-    let PairedSummary {
-        sd1,
-        sd2,
-        sd_change,
-        correlation,
-        ..
-    } = *summary;
+pub fn standardizer_value(summary: &PairedSummary, standardizer: Standardizer) -> Result<f64, Refusal> {
+    let PairedSummary { sd1, sd2, sd_change, correlation, .. } = *summary;
     let value = match standardizer {
         Standardizer::AverageSd => 0.5 * (sd1 + sd2),
         Standardizer::RootMeanSquareSd => (0.5 * (sd1 * sd1 + sd2 * sd2)).sqrt(),
@@ -207,10 +160,7 @@ pub fn standardizer_value(
     if value > 0.0 && value.is_finite() {
         Ok(value)
     } else {
-        Err(Refusal::new(format!(
-            "the change cannot be standardized by `{}`: that standard deviation is {value}",
-            standardizer.name()
-        )))
+        Err(Refusal::new(format!("the change cannot be standardized by `{}`: that standard deviation is {value}", standardizer.name())))
     }
 }
 
@@ -225,19 +175,13 @@ pub fn standardizer_value(
 /// let summary = PairedSummary::with_correlation(12, (50.0, 56.0), (8.0, 10.0), 0.7).unwrap();
 /// assert_eq!(standardized_change(&summary, Standardizer::BaselineSd), Ok(0.75));
 /// ```
-pub fn standardized_change(
-    summary: &PairedSummary,
-    standardizer: Standardizer,
-) -> Result<f64, Refusal> {
+pub fn standardized_change(summary: &PairedSummary, standardizer: Standardizer) -> Result<f64, Refusal> {
     let value = standardizer_value(summary, standardizer)?;
     let d = summary.change / value;
     if d.is_finite() {
         Ok(d)
     } else {
-        Err(Refusal::new(format!(
-            "the change over `{}` ({value}) is too large for double precision",
-            standardizer.name()
-        )))
+        Err(Refusal::new(format!("the change over `{}` ({value}) is too large for double precision", standardizer.name())))
     }
 }
 
@@ -274,9 +218,7 @@ pub fn change_interval(
 ) -> Result<ChangeInterval, Refusal> {
     use IntervalMethod::{Bonett, NoncentralT};
     if !(level > 0.0 && level < 1.0) {
-        return Err(Refusal::new(format!(
-            "a confidence level lies between 0 and 1, this one is {level}"
-        )));
+        return Err(Refusal::new(format!("a confidence level lies between 0 and 1, this one is {level}")));
     }
     let variance: fn(&PairedSummary, f64) -> Result<f64, Refusal> = match (standardizer, method) {
         (Standardizer::ChangeSd, NoncentralT) => return exact_interval(summary, level),
@@ -287,11 +229,7 @@ pub fn change_interval(
     let d = standardized_change(summary, standardizer)?;
     let standard_error = variance(summary, d)?.sqrt();
     let half = normal::quantile_upper(0.5 * (1.0 - level))? * standard_error;
-    Ok(ChangeInterval {
-        lower: d - half,
-        upper: d + half,
-        standard_error: Some(standard_error),
-    })
+    Ok(ChangeInterval { lower: d - half, upper: d + half, standard_error: Some(standard_error) })
 }
 
 fn exact_interval(summary: &PairedSummary, level: f64) -> Result<ChangeInterval, Refusal> {
@@ -299,22 +237,11 @@ fn exact_interval(summary: &PairedSummary, level: f64) -> Result<ChangeInterval,
     let root_n = (summary.n as f64).sqrt();
     let df = summary.n as f64 - 1.0;
     let (lower, upper) = noncentral_t::noncentrality_limits(d * root_n, df, level)?;
-    Ok(ChangeInterval {
-        lower: lower / root_n,
-        upper: upper / root_n,
-        standard_error: None,
-    })
+    Ok(ChangeInterval { lower: lower / root_n, upper: upper / root_n, standard_error: None })
 }
 
 fn root_mean_square_variance(summary: &PairedSummary, d: f64) -> Result<f64, Refusal> {
-    let PairedSummary {
-        n,
-        sd1,
-        sd2,
-        sd_change,
-        correlation,
-        ..
-    } = *summary;
+    let PairedSummary { n, sd1, sd2, sd_change, correlation, .. } = *summary;
     let m = n as f64 - 1.0;
     // Where an occasion does not vary its covariance with the other is 0, whatever r.
     let r = correlation.unwrap_or(0.0);
@@ -325,9 +252,7 @@ fn root_mean_square_variance(summary: &PairedSummary, d: f64) -> Result<f64, Ref
 }
 
 fn baseline_variance(summary: &PairedSummary, d: f64) -> Result<f64, Refusal> {
-    let PairedSummary {
-        n, sd1, sd_change, ..
-    } = *summary;
+    let PairedSummary { n, sd1, sd_change, .. } = *summary;
     let m = n as f64 - 1.0;
     Ok(d * d / (2.0 * m) + sd_change * sd_change / (m * sd1 * sd1))
 }
@@ -335,21 +260,16 @@ fn baseline_variance(summary: &PairedSummary, d: f64) -> Result<f64, Refusal> {
 fn no_such_interval(standardizer: Standardizer, method: IntervalMethod) -> Refusal {
     let name = standardizer.name();
     Refusal::new(match (method, standardizer) {
-        (IntervalMethod::Bonett, Standardizer::ChangeSd) => format!(
-            "Bonett (2008) gives no interval for `{name}`; the noncentral t gives an exact one"
-        ),
+        (IntervalMethod::Bonett, Standardizer::ChangeSd) => {
+            format!("Bonett (2008) gives no interval for `{name}`; the noncentral t gives an exact one")
+        }
         (IntervalMethod::Bonett, Standardizer::AverageSd) => format!(
             "Bonett (2008) gives no interval for `{name}`, (s1 + s2) / 2; it belongs to \
              `root mean square sd`, sqrt((s1^2 + s2^2) / 2). Name that standardizer, or a bootstrap \
              interval for this one"
         ),
-        (IntervalMethod::Bonett, _) => format!(
-            "Bonett (2008) gives no interval for `{name}`; a bootstrap interval can be named instead"
-        ),
-        (
-            IntervalMethod::NoncentralT,
-            Standardizer::RootMeanSquareSd | Standardizer::BaselineSd,
-        ) => {
+        (IntervalMethod::Bonett, _) => format!("Bonett (2008) gives no interval for `{name}`; a bootstrap interval can be named instead"),
+        (IntervalMethod::NoncentralT, Standardizer::RootMeanSquareSd | Standardizer::BaselineSd) => {
             format!(
                 "`{name}` does not follow a noncentral t in paired data, only `change sd` does; \
                  name Bonett's interval or a bootstrap one"
