@@ -101,10 +101,10 @@ fn table() -> impl Strategy<Value = String> {
     })
 }
 
-/// The same file with a quotation mark in every row, so that no row is read the quick way.
+/// The same file with a doubled quotation mark in every row, so that no row is read the quick way.
 fn with_a_quoted_column(text: &str) -> String {
     let row = |(at, line): (usize, &str)| {
-        if line.is_empty() { String::new() } else { format!("{},{line}\n", if at == 0 { "more" } else { "\"\"" }) }
+        if line.is_empty() { String::new() } else { format!("{},{line}\n", if at == 0 { "more" } else { "\"a\"\"b\"" }) }
     };
     text.split('\n').enumerate().map(row).collect()
 }
@@ -153,7 +153,7 @@ proptest! {
     }
 
     #[test]
-    fn both_ways_of_reading_agree(text in table().prop_filter("LF and commas", |text| !text.contains(['\r', ';', '"']))) {
+    fn both_ways_of_reading_agree(text in table().prop_filter("LF, commas, pairs of quotation marks", |text| !text.replace("\"x\"", "").contains(['\r', ';', '"']))) {
         for plan in PLANS.iter() {
             let quick = compared(read_data(plan, "d.csv", text.as_bytes(), ReadArms::Yes));
             let slow = compared(read_data(plan, "d.csv", with_a_quoted_column(&text).as_bytes(), ReadArms::Yes));
