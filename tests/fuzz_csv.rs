@@ -44,7 +44,7 @@ fn read_all(bytes: &[u8]) {
         for arms in [ReadArms::Yes, ReadArms::No] {
             match read_data(plan, "data.csv", bytes, arms) {
                 Ok(table) => {
-                    assert!(table.rows > 0 && table.subjects.len() > 0);
+                    assert!(table.rows > 0 && !table.subjects.is_empty());
                     blind::check(plan, &table, list.as_ref().ok()).to_text();
                     if let Err(findings) = bind(plan, table, allocation.as_ref().ok().cloned()) {
                         assert!(!findings.is_empty());
@@ -101,17 +101,20 @@ fn table() -> impl Strategy<Value = String> {
     })
 }
 
-/// The same file with a quotation mark in every row, so that no row is read the quick way.
+/// The same file with a doubled quotation mark in every row, so that no row is read the quick way.
 fn with_a_quoted_column(text: &str) -> String {
     let row = |(at, line): (usize, &str)| {
-        if line.is_empty() { String::new() } else { format!("{},{line}\n", if at == 0 { "more" } else { "\"\"" }) }
+        if line.is_empty() { String::new() } else { format!("{},{line}\n", if at == 0 { "more" } else { "\"a\"\"b\"" }) }
     };
     text.split('\n').enumerate().map(row).collect()
 }
 
 type Said = Vec<(String, String, Vec<usize>)>;
 
-fn compared(outcome: Result<Table, Vec<Diagnostic>>) -> Result<(Vec<u32>, Vec<Vec<u64>>, Option<Vec<u32>>, String, usize), Said> {
+/// Lines, values by their bits, cells, content hash, rows.
+type Compared = (Vec<u32>, Vec<Vec<u64>>, Option<Vec<u32>>, String, usize);
+
+fn compared(outcome: Result<Table, Vec<Diagnostic>>) -> Result<Compared, Said> {
     outcome
         .map(|table| {
             let bits = table.values.iter().map(|values| values.iter().map(|value| value.to_bits()).collect()).collect();
@@ -150,7 +153,7 @@ proptest! {
     }
 
     #[test]
-    fn both_ways_of_reading_agree(text in table().prop_filter("LF and commas", |text| !text.contains(['\r', ';', '"']))) {
+    fn both_ways_of_reading_agree(text in table().prop_filter("LF, commas, pairs of quotation marks", |text| !text.replace("\"x\"", "").contains(['\r', ';', '"']))) {
         for plan in PLANS.iter() {
             let quick = compared(read_data(plan, "d.csv", text.as_bytes(), ReadArms::Yes));
             let slow = compared(read_data(plan, "d.csv", with_a_quoted_column(&text).as_bytes(), ReadArms::Yes));

@@ -4,7 +4,6 @@
 #[path = "common/in_memory.rs"]
 mod in_memory;
 #[path = "common/tolerance.rs"]
-#[allow(dead_code)]
 mod tolerance;
 
 use aforesaid::results::{Detail, Entry, Results, State};

@@ -1,14 +1,16 @@
 //! Rows that are in order in every respect, taken quickly.
 //!
 //! A row is looked at once, from left to right. Where a text can be foreseen (the subject of the row before, the next
-//! occasion, the same arm) it is compared, not searched for. Whatever is not exactly as it should be, and every quotation
-//! mark, is left for the reader that explains faults; nothing is kept of such a row.
+//! occasion, the same arm) it is compared, not searched for. Whatever is not exactly as it should be, and
+//! every quotation mark but a pair around a whole cell, is left for the reader that explains faults; nothing is kept of such a
+//! row.
 
 use super::blocks::LONGEST_LINE;
 use super::number::{self, LARGEST, SMALLEST, is_written_zero, parse};
 use super::schema::{Role, Schema, text_of};
 use super::table::Gathered;
 use crate::plan::resolved::{ColumnKind, Factor};
+use std::ops::Range;
 
 /// Takes rows without a fault; anything else is left for others to look at.
 pub(super) struct Quick<'p> {
@@ -153,7 +155,7 @@ impl<'p> Quick<'p> {
         let ends = Ends { bytes, separator: self.separator };
         for (number, field) in self.fields.iter_mut().enumerate() {
             let end = match field {
-                Field::Skipped => ends.of_cell(at)?,
+                Field::Skipped => ends.cell(at)?.1,
                 Field::Subject => {
                     let (before, word) = match self.batch.last() {
                         Some(row) => {
@@ -165,30 +167,36 @@ impl<'p> Quick<'p> {
                             (before, word_of(before))
                         }
                     };
-                    as_before = !before.is_empty() && ends.is_cell(at, before, word);
-                    let end = if as_before { at + before.len() } else { ends.of_cell(at)? };
-                    identifier = (at, end);
-                    end
+                    if !before.is_empty() && ends.is_cell(at, before, word) {
+                        as_before = true;
+                        identifier = (at, at + before.len());
+                        identifier.1
+                    } else {
+                        let (cell, end) = ends.cell(at)?;
+                        as_before = !before.is_empty() && bytes[cell.clone()] == *before;
+                        identifier = (cell.start, cell.end);
+                        end
+                    }
                 }
                 Field::Within { levels, stride } => {
-                    let level = levels.find(&ends, at)?;
+                    let (level, end) = levels.find(&ends, at)?;
                     levels.foreseen = if level + 1 == levels.texts.len() { 0 } else { level + 1 };
                     occasion += level * *stride;
-                    at + levels.texts[level].len()
+                    end
                 }
                 Field::Between { levels, stride } => {
-                    let level = levels.find(&ends, at)?;
+                    let (level, end) = levels.find(&ends, at)?;
                     levels.foreseen = level;
                     cell += level * *stride;
-                    at + levels.texts[level].len()
+                    end
                 }
                 Field::Value { outcome, occasion, range } => {
                     let plain = if self.number_may_be_missing { None } else { number::plain_prefix(&bytes[at..], self.decimal) };
                     let (value, end) = match plain.filter(|(_, length)| ends.is_end(at + length)) {
                         Some((value, length)) => (Some(value), at + length),
                         None => {
-                            let end = ends.of_cell(at)?;
-                            (number_of(&bytes[at..end], self.decimal, &self.missing)?, end)
+                            let (cell, end) = ends.cell(at)?;
+                            (number_of(&bytes[cell], self.decimal, &self.missing)?, end)
                         }
                     };
                     let value = match value {
@@ -202,8 +210,8 @@ impl<'p> Quick<'p> {
                     end
                 }
                 Field::Check { number, kind } => {
-                    let end = ends.of_cell(at)?;
-                    self.checks.push((*number, passes(kind, &bytes[at..end], self.decimal, &self.missing)?));
+                    let (cell, end) = ends.cell(at)?;
+                    self.checks.push((*number, passes(kind, &bytes[cell], self.decimal, &self.missing)?));
                     end
                 }
             };
@@ -275,9 +283,17 @@ impl<'p> Quick<'p> {
 }
 
 impl Levels<'_> {
-    fn find(&self, ends: &Ends<'_>, at: usize) -> Option<usize> {
-        let count = self.texts.len();
-        (self.foreseen..count).chain(0..self.foreseen).find(|level| ends.is_cell(at, self.texts[*level], self.words[*level]))
+    /// The level that the cell at `at` names, and where the cell ends.
+    fn find(&self, ends: &Ends<'_>, at: usize) -> Option<(usize, usize)> {
+        let in_turn = (self.foreseen..self.texts.len()).chain(0..self.foreseen);
+        if ends.bytes.get(at) == Some(&b'"') {
+            let (cell, end) = ends.cell(at)?;
+            return in_turn.into_iter().find(|level| *self.texts[*level] == ends.bytes[cell.clone()]).map(|level| (level, end));
+        }
+        in_turn
+            .into_iter()
+            .find(|level| ends.is_cell(at, self.texts[*level], self.words[*level]))
+            .map(|level| (level, at + self.texts[level].len()))
     }
 }
 
@@ -301,10 +317,16 @@ impl Ends<'_> {
         self.bytes.get(at).is_some_and(|byte| *byte == self.separator || *byte == b'\n' || *byte == b'\r')
     }
 
-    /// Where the cell that starts at `at` ends; `None` where there is a quotation mark in it or no end.
-    fn of_cell(&self, at: usize) -> Option<usize> {
-        let length = self.bytes[at..].iter().position(|byte| *byte == self.separator || matches!(byte, b'\n' | b'\r' | b'"'))?;
-        (self.bytes[at + length] != b'"').then_some(at + length)
+    /// The text of the cell that starts at `at`, and where the cell ends: up to the next separator or line end, or between
+    /// two quotation marks with none of these, nor a third, within. `None` for all else.
+    fn cell(&self, at: usize) -> Option<(Range<usize>, usize)> {
+        let special = |byte: &u8| *byte == self.separator || matches!(byte, b'\n' | b'\r' | b'"');
+        if self.bytes.get(at) == Some(&b'"') {
+            let close = at + 1 + self.bytes[at + 1..].iter().position(special)?;
+            return (self.bytes[close] == b'"' && self.is_end(close + 1)).then_some((at + 1..close, close + 1));
+        }
+        let end = at + self.bytes.get(at..)?.iter().position(special)?;
+        (self.bytes[end] != b'"').then_some((at..end, end))
     }
 }
 

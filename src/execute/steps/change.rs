@@ -70,9 +70,17 @@ fn size(entry: &mut Entry, summary: &PairedSummary, choices: &Choices, n: usize)
     put(&mut entry.details, "d", d);
     let m = n as f64 - 1.0;
     let j = match choices.small_sample {
-        SmallSample::No => None,
-        SmallSample::Yes | SmallSample::Both => Some(hedges_j_exact(m)?),
-        SmallSample::Approximate => Some(hedges_j_approximate(m)?),
+        SmallSample::No => Ok(None),
+        SmallSample::Yes | SmallSample::Both => hedges_j_exact(m).map(Some),
+        SmallSample::Approximate => hedges_j_approximate(m).map(Some),
+    };
+    // Where both are asked for, d stands although g cannot.
+    let j = match j {
+        Err(refusal) if choices.small_sample == SmallSample::Both => {
+            entry.because = Some(format!("no g: {}", refusal.reason));
+            None
+        }
+        other => other?,
     };
     if let Some(j) = j {
         put(&mut entry.details, "J", j);
@@ -99,7 +107,10 @@ fn size(entry: &mut Entry, summary: &PairedSummary, choices: &Choices, n: usize)
                 entry.details.insert("interval_of".to_owned(), Detail::Text("d, uncorrected".to_owned()));
             }
         }
-        Err(refusal) => entry.because = Some(format!("no interval: {}", refusal.reason)),
+        Err(refusal) => {
+            let earlier = entry.because.take().map(|earlier| format!("{earlier}; ")).unwrap_or_default();
+            entry.because = Some(format!("{earlier}no interval: {}", refusal.reason));
+        }
     }
     Ok(())
 }

@@ -69,7 +69,10 @@ fn wrong_verdict(reader: &Reader<'_>, word: &str, span: Span, known: &Known, all
          otherwise say `above zero` or `below zero`"
             .to_owned()
     } else {
+        // `insignificant` is nearer to `significant` by letters, and the contrary by meaning.
+        let negated = ["in", "non", "un", "not"].iter().any(|start| word.starts_with(start)) && word.contains("signif");
         match nearest(word, allowed.iter().map(String::as_str)) {
+            _ if negated && allowed.iter().any(|word| word == "not significant") => "did you mean `not significant`?".to_owned(),
             Some(near) => format!("did you mean `{near}`?"),
             None => format!("it may be: {}", allowed.join(", ")),
         }

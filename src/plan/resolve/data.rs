@@ -376,12 +376,12 @@ fn range(reader: &Reader<'_>, node: &Node) -> Option<[f64; 2]> {
     }
 }
 
-/// The outcomes that have values in the data, in their order there.
-pub(super) fn outcomes(reader: &Reader<'_>, node: Option<&Node>, data: &DataPlan) -> Option<Vec<Outcome>> {
-    let names: Vec<&str> = match &data.layout {
-        Layout::Long { values, .. } => values.iter().map(|value| value.name.as_str()).collect(),
-        Layout::Wide { values } => values.iter().map(|value| value.name.as_str()).collect(),
-    };
+/// The outcomes that have values in the data, in their order there; they are known even where the rest of `data` is in error.
+pub(super) fn outcomes(reader: &Reader<'_>, node: Option<&Node>, data: &Node) -> Option<Vec<Outcome>> {
+    let names: Vec<&str> = data.get("values")?.map()?.iter().map(|entry| entry.key.as_str()).collect();
+    if names.is_empty() {
+        return None;
+    }
     let mut outcomes: Vec<Outcome> = names
         .iter()
         .map(|name| Outcome {
@@ -394,15 +394,13 @@ pub(super) fn outcomes(reader: &Reader<'_>, node: Option<&Node>, data: &DataPlan
         })
         .collect();
     let Some(node) = node else { return Some(outcomes) };
-    let mut sound = true;
-    for entry in reader.entries(node, "`outcomes`", "a map of outcomes")? {
+    for entry in reader.entries(node, "`outcomes`", "a map of outcomes").unwrap_or(&[]) {
         let found = reader.name(&entry.key, entry.key_span, "outcome with values in `data`", &names);
-        match found.and_then(|place| Some((place, outcome(reader, entry)?))) {
-            Some((place, outcome)) => outcomes[place] = outcome,
-            None => sound = false,
+        if let Some((place, outcome)) = found.and_then(|place| Some((place, outcome(reader, entry)?))) {
+            outcomes[place] = outcome;
         }
     }
-    sound.then_some(outcomes)
+    Some(outcomes)
 }
 
 fn outcome(reader: &Reader<'_>, entry: &Entry) -> Option<Outcome> {

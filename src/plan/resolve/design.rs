@@ -4,7 +4,8 @@ use super::reader::Reader;
 use crate::plan::resolved::{Design, Factor, FactorKind, Randomised};
 use crate::plan::syntax::tree::{Node, Value};
 use crate::text::source::Span;
-use crate::text::suggest::same_but_for_case_or_space;
+use crate::text::suggest::fold;
+use std::collections::HashMap;
 
 /// Larger designs are refused: no study has them, and matrices grow with their square.
 const MOST_CELLS: usize = 1000;
@@ -73,12 +74,10 @@ fn factor(reader: &Reader<'_>, name: &str, node: &Node, within: bool) -> Option<
             let fields = reader.map(node, &format!("within factor `{name}`"), &["kind", "levels"], &[])?;
             let kind = match fields.get("kind") {
                 None => FactorKind::Time,
-                Some(kind) => reader.word(
-                    kind,
-                    "`kind` of a within factor",
-                    &[("time", FactorKind::Time), ("condition", FactorKind::Condition)],
-                    &[],
-                )?,
+                Some(kind) => reader
+                    .word(kind, "`kind` of a within factor", &[("time", FactorKind::Time), ("condition", FactorKind::Condition)], &[])
+                    // What was said of the kind need not keep the steps from being read.
+                    .unwrap_or(FactorKind::Time),
             };
             (reader.required(&fields, "levels", &format!("within factor `{name}`"), "list the levels in their order")?, kind)
         }
@@ -100,18 +99,17 @@ fn factor(reader: &Reader<'_>, name: &str, node: &Node, within: bool) -> Option<
         return None;
     }
     let mut sound = true;
-    for (place, (level, span)) in found.iter().enumerate() {
-        for (other, first) in &found[..place] {
-            if level == other || same_but_for_case_or_space(level, other) {
-                let differ = if level == other { "twice" } else { "twice, but for case or space" };
-                reader.conflict(
-                    "duplicate-level",
-                    [(*span, "the second"), (*first, "the first")],
-                    format!("factor `{name}` has the level `{level}` {differ}"),
-                    "levels must be told apart in the data; rename or remove one",
-                );
-                sound = false;
-            }
+    let mut seen: HashMap<String, (&str, Span)> = HashMap::new();
+    for (level, span) in &found {
+        if let Some((other, first)) = seen.insert(fold(level), (level, *span)) {
+            let differ = if *level == other { "twice" } else { "twice, but for case or space" };
+            reader.conflict(
+                "duplicate-level",
+                [(*span, "the second"), (first, "the first")],
+                format!("factor `{name}` has the level `{level}` {differ}"),
+                "levels must be told apart in the data; rename or remove one",
+            );
+            sound = false;
         }
     }
     sound.then(|| Factor { name: name.to_owned(), levels: found.into_iter().map(|(level, _)| level.to_owned()).collect(), kind })

@@ -89,18 +89,18 @@ fn family(
     for (reference, span) in reader.texts(tests, "a member of a family") {
         match member(reader, reference, span, references) {
             Some(found) => {
-                for name in found {
-                    if let Some(first) = member_of.insert(name.clone(), span) {
-                        reader.conflict(
-                            "test-in-two-families",
-                            [(span, "here"), (first, "and here")],
-                            format!("the test `{name}` would be judged twice"),
-                            "a test is in one family at most; remove it from one",
-                        );
-                        sound = false;
-                    }
-                    members.push(name);
+                let twice = found.iter().find_map(|name| member_of.get(name).map(|first| (name, *first)));
+                if let Some((name, first)) = twice {
+                    reader.conflict(
+                        "test-in-two-families",
+                        [(span, "here"), (first, "and here")],
+                        format!("the test `{name}` would be judged twice"),
+                        "a test is in one family at most; remove it from one",
+                    );
+                    sound = false;
                 }
+                member_of.extend(found.iter().map(|name| (name.clone(), span)));
+                members.extend(found);
             }
             None => sound = false,
         }

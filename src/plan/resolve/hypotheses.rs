@@ -23,7 +23,11 @@ impl Breakdown {
     }
 
     pub fn whole(factor: &Factor) -> Self {
-        Breakdown { name: None, words: Some(factor.name.clone()), held: false, part: FactorPart::Whole }
+        let words = match factor.levels.as_slice() {
+            [first, second] => format!("{second} minus {first}"),
+            _ => factor.name.clone(),
+        };
+        Breakdown { name: None, words: Some(words), held: false, part: FactorPart::Whole }
     }
 
     pub fn hold(level: &str) -> Self {

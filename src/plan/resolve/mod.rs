@@ -17,7 +17,7 @@ use crate::plan::resolved::{CompleteOver, DECISION_RULE, MissingData, MissingRul
 use crate::plan::syntax::tree::{Node, Value};
 use crate::text::diagnostic::Diagnostic;
 use crate::text::source::{Source, Span};
-use reader::{Fields, Reader};
+use reader::Reader;
 use references::References;
 use std::collections::HashMap;
 
@@ -105,12 +105,12 @@ fn plan(reader: &Reader<'_>, root: &Node, places: &mut Places) -> Option<Resolve
     let design = design_node.and_then(|node| design::design(reader, node));
     let data_node = reader.required(&fields, "data", what, "say where the data stand in their file");
     let data = data_node.zip(design.as_ref()).and_then(|(node, design)| data::data(reader, node, design));
-    let outcomes = data.as_ref().and_then(|data| data::outcomes(reader, fields.get("outcomes"), data));
+    let outcomes = data_node.and_then(|data| data::outcomes(reader, fields.get("outcomes"), data));
 
     let step_nodes = reader
         .required(&fields, "steps", what, "a plan is a list of steps: what is screened, tested and estimated, in order")
         .and_then(|node| reader.list(node, "`steps`"));
-    let ids = step_nodes.and_then(|nodes| ids(reader, nodes));
+    let ids = step_nodes.map(|nodes| ids(reader, nodes));
     let (mut steps, mut families, mut conclusions) = (None, None, None);
     if let (Some(design), Some(outcomes), Some(nodes), Some(ids)) = (&design, &outcomes, step_nodes, &ids) {
         places.steps = ids.iter().cloned().collect();
@@ -194,51 +194,44 @@ fn missing_data(reader: &Reader<'_>, node: &Node) -> Option<MissingData> {
     Some(MissingData { rule: rule?, over: over? })
 }
 
-/// Identifiers of all steps, so that a reference can be told to point down.
-fn ids(reader: &Reader<'_>, nodes: &[Node]) -> Option<Vec<(String, Span)>> {
-    if nodes.is_empty() {
-        return Some(Vec::new());
-    }
-    let mut ids: Vec<(String, Span)> = Vec::new();
+/// Identifiers of all steps, so that a reference can be told to point down. A step whose id is in error gets one that
+/// nothing can refer to, so that the rest of it is read all the same.
+fn ids(reader: &Reader<'_>, nodes: &[Node]) -> Vec<(String, Span)> {
     let mut first_at: HashMap<String, Span> = HashMap::new();
-    let mut sound = true;
-    for node in nodes {
-        let Some(entries) = reader.entries(node, "a step", "a map") else {
-            sound = false;
-            continue;
-        };
-        let fields = reader.map(node, "a step", &entries.iter().map(|entry| entry.key.as_str()).collect::<Vec<_>>(), &[])?;
-        let found: Option<(&str, Span)> = id_of(reader, &fields);
-        match found {
-            Some((id, _)) if matches!(id, "either" | "not") => {
+    nodes
+        .iter()
+        .enumerate()
+        .map(|(number, node)| {
+            let unnamed = || (format!("\u{0}step {}", number + 1), reader.first_line(node.span));
+            let Some((id, span)) = id_of(reader, node) else { return unnamed() };
+            if matches!(id, "either" | "not") {
                 reader.error(
                     "reserved-id",
-                    fields.get("id").map_or(node.span, |node| node.span),
+                    span,
                     format!("`{id}` is a word of conditions and cannot be the id of a step"),
                     "reserved",
                     "choose another id",
                 );
-                sound = false;
+                return unnamed();
             }
-            Some((id, span)) => {
-                if let Some(first) = first_at.insert(id.to_owned(), span) {
-                    reader.conflict(
-                        "duplicate-id",
-                        [(span, "the second"), (first, "the first")],
-                        format!("`{id}` is the id of two steps"),
-                        "conditions and the report refer to steps by their ids; rename one",
-                    );
-                    sound = false;
-                }
-                ids.push((id.to_owned(), span));
+            if let Some(first) = first_at.get(id) {
+                reader.conflict(
+                    "duplicate-id",
+                    [(span, "the second"), (*first, "the first")],
+                    format!("`{id}` is the id of two steps"),
+                    "conditions and the report refer to steps by their ids; rename one",
+                );
+                return unnamed();
             }
-            None => sound = false,
-        }
-    }
-    sound.then_some(ids)
+            first_at.insert(id.to_owned(), span);
+            (id.to_owned(), span)
+        })
+        .collect()
 }
 
-fn id_of<'n>(reader: &Reader<'_>, fields: &Fields<'n>) -> Option<(&'n str, Span)> {
-    let node = reader.required(fields, "id", "the step", "conditions and the report refer to a step by its id")?;
+fn id_of<'n>(reader: &Reader<'_>, node: &'n Node) -> Option<(&'n str, Span)> {
+    let entries = reader.entries(node, "a step", "a map")?;
+    let fields = reader.map(node, "a step", &entries.iter().map(|entry| entry.key.as_str()).collect::<Vec<_>>(), &[])?;
+    let node = reader.required(&fields, "id", "the step", "conditions and the report refer to a step by its id")?;
     Some((reader.text(node, "`id`")?, node.span))
 }

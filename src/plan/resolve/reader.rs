@@ -10,6 +10,8 @@ use std::cell::RefCell;
 pub(super) struct Reader<'s> {
     pub source: &'s Source,
     findings: RefCell<Vec<Diagnostic>>,
+    /// Keys that a misspelt one was most likely meant to be, with the start of their map: they are not also missing.
+    misspelt: RefCell<Vec<(usize, String)>>,
 }
 
 /// The entries of a map whose keys have been checked.
@@ -31,7 +33,7 @@ impl<'n> Fields<'n> {
 
 impl<'s> Reader<'s> {
     pub fn new(source: &'s Source) -> Self {
-        Reader { source, findings: RefCell::new(Vec::new()) }
+        Reader { source, findings: RefCell::new(Vec::new()), misspelt: RefCell::new(Vec::new()) }
     }
 
     pub fn into_findings(self) -> Vec<Diagnostic> {
@@ -74,15 +76,18 @@ impl<'s> Reader<'s> {
             if later.contains(&entry.key.as_str()) {
                 self.not_yet(entry.key_span, &format!("`{}` of {what}", entry.key));
             } else if !keys.contains(&entry.key.as_str()) {
-                self.unknown_key(entry, what, keys);
+                self.unknown_key(node, entry, what, keys);
             }
         }
         Some(Fields { entries, span: node.span })
     }
 
-    pub fn unknown_key(&self, entry: &Entry, what: &str, keys: &[&str]) {
+    pub fn unknown_key(&self, map: &Node, entry: &Entry, what: &str, keys: &[&str]) {
         let hint = match nearest(&entry.key, keys.iter().copied()) {
-            Some(near) => format!("did you mean `{near}`?"),
+            Some(near) => {
+                self.misspelt.borrow_mut().push((map.span.start, near.to_owned()));
+                format!("did you mean `{near}`?")
+            }
             None => format!("{what} may have: {}", keys.join(", ")),
         };
         self.error("unknown-key", entry.key_span, format!("`{}` is not a key of {what}", entry.key), "unknown", hint);
@@ -110,7 +115,8 @@ impl<'s> Reader<'s> {
     /// A compulsory entry.
     pub fn required<'n>(&self, fields: &Fields<'n>, key: &str, what: &str, why: &str) -> Option<&'n Node> {
         let found = fields.get(key);
-        if found.is_none() {
+        let misspelt = || self.misspelt.borrow().iter().any(|(start, meant)| *start == fields.span.start && meant == key);
+        if found.is_none() && !misspelt() {
             let first = self.first_line(fields.span);
             self.error("missing-key", first, format!("{what} lacks `{key}`"), format!("`{key}` is missing here"), why);
         }

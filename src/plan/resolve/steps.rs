@@ -96,7 +96,7 @@ pub(super) fn step(
             );
         } else {
             let all: Vec<&str> = COMMON.iter().chain(own).copied().collect();
-            reader.unknown_key(entry, &format!("a {species} step"), &all);
+            reader.unknown_key(node, entry, &format!("a {species} step"), &all);
         }
     }
     let fields = reader.map(node, "a step", &entries.iter().map(|entry| entry.key.as_str()).collect::<Vec<_>>(), &[])?;
