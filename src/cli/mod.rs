@@ -164,8 +164,9 @@ pub fn main(world: &dyn World, arguments: Vec<std::ffi::OsString>) -> u8 {
         Command::Audit(arguments) => (audit::audit(&terminal, &arguments), arguments.format),
         Command::Demo(arguments) => (demo::demo(&terminal, &arguments.dir), Format::Text),
     };
-    match done {
+    let status = match done {
         Ok(status) => status,
         Err(failure) => terminal.fail(failure, format),
-    }
+    };
+    terminal.ended(status)
 }

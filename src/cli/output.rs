@@ -5,6 +5,11 @@ use crate::record::error::StudyError;
 use crate::text::diagnostic::{Diagnostic, Severity};
 use crate::text::render::{to_json, to_text};
 use crate::world::World;
+use std::cell::Cell;
+use std::io;
+
+/// The exit status where the machine failed.
+const MACHINE_FAILED: u8 = 3;
 
 /// Findings shown in text; the rest are counted.
 const MOST_SHOWN: usize = 100;
@@ -35,17 +40,33 @@ impl Failure {
 /// The person at the terminal, or the program at the pipe.
 pub(super) struct Terminal<'w> {
     pub world: &'w dyn World,
+    /// Why an answer could not be written, such as a full disk.
+    lost: Cell<Option<io::Error>>,
 }
 
 impl<'w> Terminal<'w> {
     pub fn new(world: &'w dyn World) -> Self {
-        Terminal { world }
+        Terminal { world, lost: Cell::new(None) }
     }
 
     /// What was asked for. A reader that went away ends it in silence.
     pub fn answer(&self, text: &str) {
         let mut out = self.world.stdout();
-        let _ = out.write_all(text.as_bytes()).and_then(|()| out.flush());
+        match out.write_all(text.as_bytes()).and_then(|()| out.flush()) {
+            Err(error) if error.kind() != io::ErrorKind::BrokenPipe => self.lost.set(Some(error)),
+            _ => {}
+        }
+    }
+
+    /// The status to end with: the machine's failure where an answer was lost, else `status`.
+    pub fn ended(&self, status: u8) -> u8 {
+        match self.lost.take() {
+            None => status,
+            Some(error) => {
+                self.aside(&format!("error: the answer could not be written to standard output: {error}\n"));
+                MACHINE_FAILED
+            }
+        }
     }
 
     /// All else.
