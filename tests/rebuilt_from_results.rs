@@ -9,7 +9,6 @@
 #[allow(dead_code)]
 mod commands;
 #[path = "common/tolerance.rs"]
-#[allow(dead_code)]
 mod tolerance;
 #[path = "common/mod.rs"]
 #[allow(dead_code)]
