@@ -227,6 +227,17 @@ fn a_blinded_check_says_the_same_however_the_arms_are_dealt() {
 }
 
 #[test]
+fn a_blinded_check_finds_who_is_missing_from_the_allocation() {
+    let wrist = Wrist::sealed();
+    let (header, rows) = ALLOCATION.split_once('\n').unwrap();
+    let (first, others) = rows.split_once('\n').unwrap();
+    wrist.write("allocation.csv", format!("{header}\n{others}").as_bytes());
+    let ran = command(&["check", &wrist.at("study"), "--data", &wrist.at("visits.csv"), "--allocation", &wrist.at("allocation.csv")]);
+    assert_eq!(ran.status, 1, "{}", ran.said());
+    assert!(ran.out.contains(first.split(',').next().unwrap()), "{}", ran.out);
+}
+
+#[test]
 fn data_that_hold_the_arms_are_checked_without_looking_at_them() {
     let mut rows = String::from("who,arm,t1,t2\n");
     for subject in 0..12 {

@@ -89,7 +89,12 @@ fn check_data(terminal: &Terminal<'_>, arguments: &CheckArguments, data: &Path) 
     let report = blind::check(resolved, &table, identifiers.as_ref());
     let wrong = report.findings.iter().any(|finding| finding.severity == Severity::Error);
     match arguments.format {
-        Format::Text => terminal.answer(&report.to_text()),
+        Format::Text => {
+            if !report.findings.is_empty() {
+                terminal.answer(&format!("{}\n", terminal.findings_in_text(&report.findings, terminal.colour_answer())));
+            }
+            terminal.answer(&report.to_text());
+        }
         Format::Json => terminal.answer(&format!("{}\n", json!(report))),
     }
     // Nothing that could tell arms is written before they are opened.

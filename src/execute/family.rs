@@ -77,7 +77,9 @@ fn judge_family(machine: &mut Machine<'_, '_>, family: usize) {
     let mut evidence = Map::new();
     let mut verdicts = Vec::new();
     for slot in members {
-        evidence.insert(program.slots[*slot].reference.clone(), Value::Object(numbers(machine, *slot)));
+        let mut seen = numbers(machine, *slot);
+        seen.insert("verdict".to_owned(), json!(machine.verdict_text(*slot)));
+        evidence.insert(program.slots[*slot].reference.clone(), Value::Object(seen));
         verdicts.push(format!("{}: {}", program.slots[*slot].reference, machine.verdict_text(*slot)));
     }
     let control = in_plan_words(&plan.control);

@@ -4,6 +4,7 @@ use super::escape::markdown;
 use super::input::ChainedDecision;
 use super::tables::p_in_words;
 use crate::canon::number::Finite;
+use crate::results::decision::Decision;
 use crate::results::numbers;
 use serde::Serialize;
 use serde_json::Value;
@@ -45,7 +46,7 @@ fn sentence(chained: &ChainedDecision) -> String {
         "family" => {
             let control = decision.rule.get("control").and_then(Value::as_str).unwrap_or("");
             let alpha = decision.rule.get("alpha").and_then(Value::as_f64).map(|alpha| alpha.to_string()).unwrap_or_default();
-            format!("The family **{step}** was judged together ({}, alpha {alpha}): {}.", markdown(control), markdown(&decision.verdict))
+            format!("The family **{step}** was judged together ({}, alpha {alpha}): {}.", markdown(control), members(decision))
         }
         "conclusion" => format!("{}{}", upper_first(&markdown(&decision.verdict)), if decision.verdict.ends_with('.') { "" } else { "." }),
         _ => match decision.rule.get("threshold").and_then(Value::as_f64) {
@@ -53,6 +54,17 @@ fn sentence(chained: &ChainedDecision) -> String {
             None => format!("**{step}**: {} ({seen}).", markdown(&decision.verdict)),
         },
     }
+}
+
+/// Each member of a family in the family's order, with its verdict and numbers.
+fn members(decision: &Decision) -> String {
+    let listed = decision.rule.get("members").and_then(Value::as_array).map(Vec::as_slice).unwrap_or_default();
+    let parts: Vec<String> = listed
+        .iter()
+        .filter_map(Value::as_str)
+        .filter_map(|member| decision.evidence.get(member).and_then(Value::as_object).map(|object| one(member, object)))
+        .collect();
+    if parts.is_empty() { markdown(&decision.verdict) } else { parts.join("; ") }
 }
 
 /// The value chosen, without the wrapping of the resolved form.
