@@ -63,7 +63,7 @@ pub(crate) fn refusal(refusal: &Refusal, design: &Design) -> String {
         }
         Refusal::EmptyCell { cell } => format!("no subject of {} was analysed, so that its mean cannot be estimated", arm(*cell)),
         Refusal::SingularCell { cell, subjects, occasions } => format!(
-            "the covariance matrix of {} is singular: {subjects} subjects, {occasions} occasions; there are too few subjects, or an occasion is constant or a linear copy of others",
+            "the covariance matrix of {} is singular (subjects: {subjects}, occasions: {occasions}); there are too few subjects, or an occasion is constant or a linear copy of others",
             arm(*cell)
         ),
         Refusal::ConstantDeviations { occasion } => {
