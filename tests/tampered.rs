@@ -102,8 +102,7 @@ fn a_whole_last_event_with_another_end_is_no_killed_command() {
 fn folders_and_hidden_files_that_nothing_lists() {
     let wrist = Wrist::run_already();
     let at = |name: &str| wrist.at(&format!("study/{name}"));
-    for name in ["extra", "records/002", "records/001/extra", "records/001/figures/more", "plans/extra", "plans/001/more", "data/more"]
-    {
+    for name in ["extra", "records/002", "records/001/extra", "records/001/figures/more", "plans/extra", "plans/001/more", "data/more"] {
         std::fs::create_dir(at(name)).unwrap();
         let audited = wrist.audit();
         assert_eq!(audited.status, 1, "{name}: {}", audited.said());
