@@ -328,3 +328,28 @@ fn every_effect_of_obrien_and_kaiser() {
     }
     assert!(held.compared >= 15 * 5 + 12 * 2, "{}", held.compared);
 }
+
+/// A step over two of four occasions keeps the moments of those two, with the rows of M in their order; subjects who miss
+/// another occasion stay in.
+#[test]
+fn moments_are_of_the_occasions_that_a_step_uses() {
+    let steps = "  - {id: ends, test: partial interactions, effect: sex by age, split: {age: [{name: ends, weights: {10: -1, 14: 1}}]}, error: own, role: supportive}\n";
+    let plan = growth_plan(steps, "")
+        .replace("missing data: complete cases", "missing data: {rule: complete cases, over: the step's occasions}")
+        .replace("  layout: wide", "  layout: wide\n  missing values: [\"\"]");
+    // The first subject misses the first occasion, which this step does not use.
+    let mut lines: Vec<String> = POTTHOFF_ROY.lines().map(str::to_owned).collect();
+    let mut cells: Vec<&str> = lines[1].split(',').collect();
+    cells[2] = "";
+    lines[1] = cells.join(",");
+    let results = run(&plan, &(lines.join("\n") + "\n"));
+    let step = &results.steps[0];
+    let mut held = Held { values: values("potthoff roy"), compared: 0 };
+    held.to("reduced/Male-Female/10-14/interaction/estimate", detail(entry(&results, "ends"), "estimate"));
+    held.to("reduced/Male-Female/10-14/interaction/p", entry(&results, "ends").p.unwrap().get());
+    assert_eq!(step.moments[0].occasions, ["10", "14"]);
+    // Girls' means at 10 and 14 as published: 22.227 and 24.091 (Potthoff & Roy 1964).
+    assert!((step.moments[0].means[0].get() - 22.227).abs() < 5e-4 && (step.moments[0].means[1].get() - 24.091).abs() < 5e-4);
+    let m = &step.results[0].hypothesis.as_ref().unwrap().m;
+    assert_eq!(m.iter().map(|row| row[0].get()).collect::<Vec<_>>(), [-1.0, 1.0]);
+}

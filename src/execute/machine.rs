@@ -274,24 +274,19 @@ impl<'a, 'w> Machine<'a, 'w> {
 fn moments(program: &Program<'_>, sample: &Sample<'_>) -> Vec<CellMoments> {
     let design = &program.plan.design;
     let Ok(moments) = &sample.moments else { return Vec::new() };
-    let occasions = 0..sample.occasions.len();
+    let names: Vec<String> = sample.occasions.iter().map(|occasion| design.occasion_levels(*occasion).join("; ")).collect();
+    let used = || sample.occasions.iter().copied();
     (0..design.cells())
-        .map(|cell| CellMoments {
-            levels: design.cell_levels(cell).into_iter().map(str::to_owned).collect(),
-            n: moments.cells()[cell].subjects,
-            means: if moments.cells()[cell].subjects == 0 {
-                Vec::new()
-            } else {
-                occasions.clone().filter_map(|k| Finite::new(moments.mean(cell, k))).collect()
-            },
-            covariance: if moments.cells()[cell].subjects < 2 {
-                Vec::new()
-            } else {
-                occasions
-                    .clone()
-                    .map(|j| occasions.clone().filter_map(|k| moments.covariance(cell, j, k).and_then(Finite::new)).collect())
-                    .collect()
-            },
+        .map(|cell| {
+            let n = moments.cells()[cell].subjects;
+            let row = |one: usize| used().filter_map(|other| moments.covariance(cell, one, other).and_then(Finite::new)).collect();
+            CellMoments {
+                levels: design.cell_levels(cell).into_iter().map(str::to_owned).collect(),
+                n,
+                occasions: names.clone(),
+                means: if n == 0 { Vec::new() } else { used().filter_map(|occasion| Finite::new(moments.mean(cell, occasion))).collect() },
+                covariance: if n < 2 { Vec::new() } else { used().map(row).collect() },
+            }
         })
         .collect()
 }

@@ -157,13 +157,15 @@ pub struct StepResult {
     pub results: Vec<Entry>,
 }
 
-/// n, means and covariance matrix of one between cell over all occasions.
+/// n, means and covariance matrix of one between cell over the occasions that the step uses.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 pub struct CellMoments {
     /// Level of each between factor.
     pub levels: Vec<String>,
     /// Subjects.
     pub n: usize,
+    /// The occasions, in design order; the rows of M are in the same order.
+    pub occasions: Vec<String>,
     /// Means, one per occasion.
     pub means: Vec<Finite>,
     /// Covariances, divisor n - 1; empty where n < 2.
