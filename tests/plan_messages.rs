@@ -105,6 +105,7 @@ const SPOILT: &[(&str, &str, &str)] = &[
     ("unknown-word", "control: holm", "control: homl"),
     ("weights-do-not-sum-to-zero", "month: adjacent pairs", "month: [{name: early, weights: {june: -1, july: 0.5}}]"),
     ("wrong-case", "  - otherwise: The drills differed in course.", "  - when: {whole: significant}"),
+    ("wrong-level", "[june, july, august]", "[june, \"july\\naugust\", september]"),
     ("wrong-range", "alpha: 0.05", "alpha: 5"),
     ("wrong-type", "steps:", "acknowledged: [small-cells]\nsteps:"),
 ];

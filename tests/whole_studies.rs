@@ -263,6 +263,59 @@ fn data_that_hold_the_arms_are_checked_without_looking_at_them() {
     assert!(said.iter().all(|other| *other == said[0]));
 }
 
+/// Data with marks out of place: whatever the arms are called and however they are dealt, the same is said, and no arm is.
+#[test]
+fn marks_out_of_place_tell_no_arm_to_a_blinded_check() {
+    let labels = ["plain", "with, comma", "with \"mark\"", "\""];
+    let broken = ["\"5", "5\"", "\"5\"x", "\"\"\"", "5", "6", "\"7\"", "8", "", "\"\"", "9", "\"10"];
+    let quoted = |text: &str| if text.contains([',', '"']) { format!("\"{}\"", text.replace('"', "\"\"")) } else { text.to_owned() };
+    // The arm stands last, in the middle and first: marks out of place lie before it, behind it and on both sides.
+    for place in 0..3 {
+        for from in 0..broken.len() {
+            for (one, other) in [(0, 1), (0, 2), (1, 3), (2, 3)] {
+                let plan = format!(
+                    "plan: 1\ntitle: Invented\nalpha: 0.05\nmissing data: complete cases\n\
+                     data: {{layout: wide, subject: who, values: {{y: {{t1: t1, t2: t2}}}}, allocation: in the data, arms: {{arm: arm}}, missing values: [\"\"]}}\n\
+                     design: {{between: {{arm: [{}, {}]}}, within: {{when: [t1, t2]}}}}\n\
+                     steps: [{{id: both, test: omnibus, effect: arm by when}}]\nconclusions: [{{otherwise: Described.}}]\n",
+                    serde_json::to_string(labels[one]).unwrap(),
+                    serde_json::to_string(labels[other]).unwrap()
+                );
+                let wrist = Wrist { folder: tempfile::tempdir().unwrap() };
+                wrist.write("plan.yaml", plan.as_bytes());
+                let sealed = command(&["seal", &wrist.at("plan.yaml"), "--study", &wrist.at("study")]);
+                assert_eq!(sealed.status, 0, "{}", sealed.said());
+                let mut said = Vec::new();
+                for deal in [0b0101_0101_u32, 0b1010_1010, 0b0000_1111, 0b0110_1001] {
+                    let mut text = String::new();
+                    for row in 0..9_usize {
+                        let arm = quoted(labels[if deal >> (row % 8) & 1 == 1 { one } else { other }]);
+                        let scores = if row > 4 {
+                            [broken[(from + row) % broken.len()], broken[(from + 2 * row) % broken.len()]]
+                        } else {
+                            ["3", "4"]
+                        };
+                        let mut cells = vec![format!("s{row}"), scores[0].to_owned(), scores[1].to_owned()];
+                        let header = ["who", "t1", "t2"].map(str::to_owned);
+                        let mut names = header.to_vec();
+                        names.insert(place + 1, "arm".to_owned());
+                        cells.insert(place + 1, arm);
+                        if row == 0 {
+                            text.push_str(&format!("{}\n", names.join(",")));
+                        }
+                        text.push_str(&format!("{}\n", cells.join(",")));
+                    }
+                    wrist.write("data.csv", text.as_bytes());
+                    let ran = command(&["check", &wrist.at("study"), "--data", &wrist.at("data.csv")]);
+                    said.push((ran.status, ran.said().replace(wrist.folder.path().to_str().unwrap(), "DIR")));
+                }
+                assert!(said.iter().all(|other| *other == said[0]), "{said:#?}");
+                assert!(!said[0].1.contains("plain") && !said[0].1.contains("comma"), "{}", said[0].1);
+            }
+        }
+    }
+}
+
 #[test]
 fn another_run_on_other_data_says_what_was_corrected() {
     let wrist = Wrist::run_already();

@@ -5,7 +5,7 @@ use super::cells::{Cell, wrong_number_of_fields};
 use super::content;
 use super::problems::{Problems, quoted};
 use super::quick::Quick;
-use super::rows::{Broken, Row, TakeRows, each_row};
+use super::rows::{Broken, Row, Rows, TakeRows, each_row};
 use super::schema::{Needed, Role, Schema, text_of};
 use super::table::{Checked, Gathered, Sorted, Table};
 use crate::plan::resolved::ResolvedPlan;
@@ -72,8 +72,9 @@ pub(super) struct Contents<'p> {
 /// Reads a file of which `schema` says what it must be.
 pub(super) fn read<'p>(schema: Schema<'p>, name: &str, reader: impl Read + Send) -> Result<Contents<'p>, Vec<Diagnostic>> {
     let separator = schema.separator;
+    let blind = schema.needed.iter().any(|needed| matches!(needed.role, Role::Unseen { .. }));
     let mut reading = Reading::new(schema, name);
-    let outcome = each_row(reader, separator, &mut reading);
+    let outcome = each_row(reader, separator, if blind { Rows::OneLine } else { Rows::Quoted }, &mut reading);
     reading.finish(outcome)
 }
 
@@ -322,5 +323,18 @@ impl TakeRows for Reading<'_> {
         }
         self.data_row(row);
         ControlFlow::Continue(())
+    }
+
+    fn unclear(&mut self, line: usize) -> ControlFlow<()> {
+        let message =
+            format!("line {line}: its quotation marks do not pair up cell by cell, so that the arms in it could be shown by mistake");
+        self.problems.add("row-not-on-one-line", |problems| {
+            Diagnostic::error("row-not-on-one-line", message).at(problems.line(line, "this line")).hint(
+                "where arms must not be seen, each row stands on one line and each quotation mark around a whole cell, a mark inside being doubled; \
+                 mend the line (it is not shown here)",
+            )
+        });
+        // Without a header the next line would be taken for one, and shown.
+        if self.header.is_empty() { ControlFlow::Break(()) } else { ControlFlow::Continue(()) }
     }
 }

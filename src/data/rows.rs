@@ -46,14 +46,27 @@ pub(super) trait TakeRows {
 
     /// Takes a row that may have any fault.
     fn row(&mut self, row: &Row<'_>) -> ControlFlow<()>;
+
+    /// Takes note of a line whose cells cannot be told apart by itself; nothing of it may be shown.
+    fn unclear(&mut self, line: usize) -> ControlFlow<()>;
+}
+
+/// How rows are told apart.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Rows {
+    /// As the `csv` crate says: a cell between quotation marks may hold line ends.
+    Quoted,
+    /// Each on one line, every quotation mark around a whole cell. Where arms must not be seen, a mark out of place could
+    /// otherwise make a cell swallow the arm beside it, so that what is said of the cell would tell the arm.
+    OneLine,
 }
 
 /// Gives the rows of a file to `taker`.
 ///
 /// # Errors
 /// What the reader says.
-pub(super) fn each_row(reader: impl Read + Send, separator: u8, taker: &mut impl TakeRows) -> io::Result<Option<Broken>> {
-    let mut cutter = Cutter { separator, line: 1, pending: Vec::new(), bounds: Vec::new(), broken: None, first: true };
+pub(super) fn each_row(reader: impl Read + Send, separator: u8, rows: Rows, taker: &mut impl TakeRows) -> io::Result<Option<Broken>> {
+    let mut cutter = Cutter { separator, rows, line: 1, pending: Vec::new(), bounds: Vec::new(), broken: None, first: true };
     each_block(reader, |block| {
         let start = if cutter.first && block.bytes.starts_with(b"\xef\xbb\xbf") { 3 } else { 0 };
         cutter.first = false;
@@ -96,6 +109,7 @@ pub(super) fn count_lines(bytes: &[u8]) -> usize {
 
 struct Cutter {
     separator: u8,
+    rows: Rows,
     line: usize,
     /// A row that its block does not finish: it has an open quotation mark.
     pending: Vec<u8>,
@@ -117,7 +131,12 @@ impl Cutter {
             }
             let end = rest.iter().position(|byte| *byte == b'\n').unwrap_or(rest.len());
             let raw = rest[..end].strip_suffix(b"\r").unwrap_or(&rest[..end]);
-            if raw.iter().any(|byte| matches!(byte, b'"' | b'\r')) || (end == rest.len() && raw.len() < end) {
+            let odd = raw.iter().any(|byte| matches!(byte, b'"' | b'\r'));
+            if odd && self.rows == Rows::OneLine {
+                at += self.one_line(rest, taker)?;
+                continue;
+            }
+            if odd || (end == rest.len() && raw.len() < end) {
                 return self.by_the_csv_crate(rest, last, taker);
             }
             if !raw.is_empty() {
@@ -128,6 +147,49 @@ impl Cutter {
             at += end + 1;
         }
         ControlFlow::Continue(())
+    }
+
+    /// Takes one line, up to LF, CRLF or CR alone; how many bytes it has with its end.
+    fn one_line(&mut self, bytes: &[u8], taker: &mut impl TakeRows) -> ControlFlow<(), usize> {
+        let length = bytes.iter().position(|byte| matches!(byte, b'\n' | b'\r')).unwrap_or(bytes.len());
+        let raw = &bytes[..length];
+        let (cells, open) = spans(raw, self.separator);
+        let whole = |cell: &Range<usize>| {
+            let cell = &raw[cell.clone()];
+            match cell.first() {
+                Some(b'"') => {
+                    cell.len() > 1
+                        && cell.ends_with(b"\"")
+                        && !cell[1..cell.len() - 1].split(|byte| *byte != b'"').any(|run| run.len() % 2 == 1)
+                }
+                _ => !cell.contains(&b'"'),
+            }
+        };
+        if open.is_some() || !cells.iter().all(whole) {
+            taker.unclear(self.line)?;
+        } else if !raw.is_empty() {
+            let mut text = Vec::with_capacity(raw.len());
+            self.bounds.clear();
+            for cell in cells {
+                let start = text.len() as u32;
+                match raw[cell.clone()].strip_prefix(b"\"").and_then(|cell| cell.strip_suffix(b"\"")) {
+                    // Marks stand in pairs here; the first of each goes.
+                    Some(quoted) => {
+                        let mut marks = 0;
+                        text.extend(quoted.iter().filter(|byte| {
+                            marks = if **byte == b'"' { marks + 1 } else { 0 };
+                            marks % 2 == 0
+                        }));
+                    }
+                    None => text.extend_from_slice(&raw[cell]),
+                }
+                self.bounds.push((start, text.len() as u32));
+            }
+            taker.row(&Row { line: self.line, raw, text: &text, bounds: &self.bounds })?;
+        }
+        self.line += 1;
+        let end = if bytes[length..].starts_with(b"\r\n") { length + 2 } else { (length + 1).min(bytes.len()) };
+        ControlFlow::Continue(end)
     }
 
     fn by_the_csv_crate(&mut self, bytes: &[u8], last: bool, taker: &mut impl TakeRows) -> ControlFlow<()> {
@@ -219,7 +281,7 @@ mod tests {
     use proptest::prelude::*;
 
     #[derive(Default)]
-    struct Collect(Vec<Vec<Vec<u8>>>, Vec<usize>);
+    struct Collect(Vec<Vec<Vec<u8>>>, Vec<usize>, Vec<usize>);
 
     impl TakeRows for Collect {
         fn quick(&mut self, _: &[u8], _: usize) -> (usize, usize) {
@@ -231,6 +293,11 @@ mod tests {
             assert_eq!(spans.len(), row.len(), "{:?}", String::from_utf8_lossy(row.raw));
             self.0.push((0..row.len()).map(|field| row.cell(field).to_vec()).collect());
             self.1.push(row.line);
+            ControlFlow::Continue(())
+        }
+
+        fn unclear(&mut self, line: usize) -> ControlFlow<()> {
+            self.2.push(line);
             ControlFlow::Continue(())
         }
     }
@@ -257,7 +324,7 @@ mod tests {
         #[test]
         fn rows_are_those_of_the_csv_crate(text in "[a,\"\r\n x]{0,60}", piece in 1_usize..9) {
             let mut taker = Collect::default();
-            let broken = each_row(Pieces(text.as_bytes(), piece), b',', &mut taker).unwrap();
+            let broken = each_row(Pieces(text.as_bytes(), piece), b',', Rows::Quoted, &mut taker).unwrap();
             let mut expected = by_csv(text.as_bytes());
             if let Some(Broken::OpenQuote(..)) = broken {
                 expected.pop();
@@ -265,11 +332,21 @@ mod tests {
             prop_assert_eq!(taker.0, expected);
         }
 
+        /// Where every mark stands around a whole cell, both ways of telling rows apart give the same.
+        #[test]
+        fn rows_on_one_line_are_those_of_the_csv_crate(rows in proptest::collection::vec(proptest::collection::vec("[a x]{0,3}|\"[a, x]{0,3}\"|\"(a|\"\"){0,3}\"", 1..4), 0..6), end in "\n|\r\n|\r") {
+            let text: String = rows.iter().map(|row| format!("{}{end}", row.join(","))).collect();
+            let mut taker = Collect::default();
+            prop_assert_eq!(each_row(text.as_bytes(), b',', Rows::OneLine, &mut taker).unwrap(), None);
+            prop_assert_eq!(&taker.2, &Vec::<usize>::new());
+            prop_assert_eq!(taker.0, by_csv(text.as_bytes()));
+        }
+
         #[test]
         fn lines_are_counted(rows in proptest::collection::vec("[a,x]{1,5}|\"a\n\"|\"\"\"\"", 1..20), end in "\n|\r\n|\r|\n\n") {
             let text: String = rows.iter().map(|row| format!("{row}{end}")).collect();
             let mut taker = Collect::default();
-            prop_assert_eq!(each_row(text.as_bytes(), b',', &mut taker).unwrap(), None);
+            prop_assert_eq!(each_row(text.as_bytes(), b',', Rows::Quoted, &mut taker).unwrap(), None);
             let mut line = 1;
             let per_end = if end == "\n\n" { 2 } else { 1 };
             for (row, found) in rows.iter().zip(&taker.1) {
@@ -282,15 +359,25 @@ mod tests {
     #[test]
     fn a_quotation_mark_left_open_is_placed() {
         let mut taker = Collect::default();
-        let broken = each_row(&b"a,b\n1,\"x\n2,y\n"[..], b',', &mut taker).unwrap();
+        let broken = each_row(&b"a,b\n1,\"x\n2,y\n"[..], b',', Rows::Quoted, &mut taker).unwrap();
         assert_eq!(broken, Some(Broken::OpenQuote(2, b"1,".to_vec())));
+    }
+
+    #[test]
+    fn a_mark_out_of_place_swallows_nothing_where_rows_stand_on_one_line() {
+        let text = b"who,y,arm\ns1,\"5,c\ns2,5\",d\ns3,6\"6,c\ns4,\"7\"x,d\ns5,\"8\",\"c\"\"\"\n";
+        let mut taker = Collect::default();
+        assert_eq!(each_row(&text[..], b',', Rows::OneLine, &mut taker).unwrap(), None);
+        assert_eq!(taker.2, [2, 3, 4, 5]);
+        assert_eq!(taker.0[1], [&b"s5"[..], b"8", b"c\""]);
+        assert_eq!(taker.1, [1, 6]);
     }
 
     #[test]
     fn a_quoted_line_end_may_fall_between_blocks() {
         let long = format!("a,\"{}\nend\"\nb,c\n", "x".repeat(300_000));
         let mut taker = Collect::default();
-        assert_eq!(each_row(long.as_bytes(), b',', &mut taker).unwrap(), None);
+        assert_eq!(each_row(long.as_bytes(), b',', Rows::Quoted, &mut taker).unwrap(), None);
         assert_eq!(taker.0, by_csv(long.as_bytes()));
         assert_eq!(taker.1, [1, 3]);
     }

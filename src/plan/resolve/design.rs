@@ -101,6 +101,16 @@ fn factor(reader: &Reader<'_>, name: &str, node: &Node, within: bool) -> Option<
     let mut sound = true;
     let mut seen: HashMap<String, (&str, Span)> = HashMap::new();
     for (level, span) in &found {
+        if level.chars().any(char::is_control) {
+            reader.error(
+                "wrong-level",
+                *span,
+                format!("a level of `{name}` holds a line end or another control character"),
+                "here",
+                "a level stands in one cell of one line; write its name on one line",
+            );
+            sound = false;
+        }
         if let Some((other, first)) = seen.insert(fold(level), (level, *span)) {
             let differ = if *level == other { "twice" } else { "twice, but for case or space" };
             reader.conflict(
