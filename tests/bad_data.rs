@@ -31,10 +31,14 @@ const WIDE: &str =
 const LONG: &str = "{layout: long, subject: who, occasions: {visit: visit}, values: {y: y}, allocation: in the data, arms: {arm: arm}, missing values: [NA]}";
 
 fn refused(wrist: &Wrist, data: &[u8], words: &[&str]) {
+    refused_blind_and_open(wrist, data, words, words);
+}
+
+fn refused_blind_and_open(wrist: &Wrist, data: &[u8], blind: &[&str], open: &[&str]) {
     wrist.write("data.csv", data);
-    for command_line in [
-        vec!["check", &wrist.at("study"), "--data", &wrist.at("data.csv")],
-        vec!["run", &wrist.at("study"), "--data", &wrist.at("data.csv")],
+    for (command_line, words) in [
+        (vec!["check", &wrist.at("study"), "--data", &wrist.at("data.csv")], blind),
+        (vec!["run", &wrist.at("study"), "--data", &wrist.at("data.csv")], open),
     ] {
         let ran = command(&command_line);
         // What concerns arms is found only once they are opened.
@@ -70,7 +74,13 @@ fn wide_files() {
     refused(&wrist, &changed("2,usual", "1,usual"), &["data.csv:3:1", "subject `1` has a second row", "line 2"]);
     refused(&wrist, &changed("4,extra,1,9,3", "4,extra,1,9"), &["data.csv:5", "4 cells", "5"]);
     refused(&wrist, &changed("4,extra,1,9,3", "4,extra,1,9,3,7"), &["data.csv:5", "6 cells"]);
-    refused(&wrist, &changed("1,9,3", "1,9,\"3"), &["data.csv:5:13", "never closed"]);
+    // Without seeing arms nobody can say which cell the mark was meant for.
+    refused_blind_and_open(
+        &wrist,
+        &changed("1,9,3", "1,9,\"3"),
+        &["data.csv:5:1", "do not pair up cell by cell", "(it is not shown here)"],
+        &["data.csv:5:13", "never closed"],
+    );
     refused(&wrist, &changed("1,9,3", "1,,3"), &["data.csv:5:11", "missing values"]);
     refused(&wrist, &changed("4,extra", ",extra"), &["data.csv:5:1", "whose it is"]);
     refused(&wrist, &changed("1,9,3", "1,\"9,5\",3"), &["data.csv:5:11", "decimal comma", "decimal: \",\""]);
