@@ -251,7 +251,10 @@ impl<'a, 'w> Machine<'a, 'w> {
                     Action::Test(test) => words::verdict(self.verdicts[slots.start], test.hypotheses[0].favours.as_ref()),
                     _ => words::verdict(self.verdicts[slots.start], None),
                 },
-                _ => words::step_verdict(&self.verdicts[slots]).to_owned(),
+                _ => {
+                    let claims = matches!(&self.program.plan.steps[number].action, Action::Test(test) if test.is_claim());
+                    words::step_verdict(&self.verdicts[slots], claims).to_owned()
+                }
             });
         }
     }
@@ -275,7 +278,9 @@ fn moments(program: &Program<'_>, sample: &Sample<'_>) -> Vec<CellMoments> {
     let design = &program.plan.design;
     let Ok(moments) = &sample.moments else { return Vec::new() };
     let names: Vec<String> = sample.occasions.iter().map(|occasion| design.occasion_levels(*occasion).join("; ")).collect();
-    let used = || sample.occasions.iter().copied();
+    // Covariates stand after the occasions.
+    let further = design.occasions()..design.occasions() + sample.covariates.len();
+    let used = || sample.occasions.iter().copied().chain(further.clone());
     (0..design.cells())
         .map(|cell| {
             let n = moments.cells()[cell].subjects;
@@ -284,6 +289,7 @@ fn moments(program: &Program<'_>, sample: &Sample<'_>) -> Vec<CellMoments> {
                 levels: design.cell_levels(cell).into_iter().map(str::to_owned).collect(),
                 n,
                 occasions: names.clone(),
+                covariates: sample.covariates.iter().map(words::covariate).collect(),
                 means: if n == 0 { Vec::new() } else { used().filter_map(|occasion| Finite::new(moments.mean(cell, occasion))).collect() },
                 covariance: if n < 2 { Vec::new() } else { used().map(row).collect() },
             }

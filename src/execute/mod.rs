@@ -9,6 +9,7 @@ pub mod condition;
 mod family;
 pub mod lower;
 pub mod machine;
+mod multiplicity;
 mod steps;
 pub mod verdict;
 mod words;

@@ -9,13 +9,21 @@
 mod contrast;
 mod covariances;
 mod effects;
+mod largest_contrast;
+mod multivariate;
+mod outlying;
 mod sphericity;
 mod spread;
 mod univariate;
+mod welch_james;
 
 pub use contrast::{FactorPart, Hypothesis, Part, Weighting, trend_weights};
 pub use covariances::{BoxM, box_m};
 pub use effects::{Effect, ErrorStratum, crossed_effects, error_strata};
+pub use largest_contrast::{LargestContrast, largest_contrast};
+pub use multivariate::{Criterion, MultivariateTest, test_multivariate};
+pub use outlying::{Distance, Sample, mahalanobis_distances, studentized_residuals};
 pub use sphericity::{Correction, Epsilons, Mauchly, epsilons, mauchly};
 pub use spread::{Centre, SpreadTest, equal_spread};
 pub use univariate::{ErrorTerm, Estimate, UnivariateTest, hypothesis_matrix, test_univariate};
+pub use welch_james::{WelchJames, test_welch_james};
