@@ -18,4 +18,5 @@ pub use covariances::{BoxM, box_m};
 pub use effects::{Effect, ErrorStratum, crossed_effects, error_strata};
 pub use sphericity::{Correction, Epsilons, Mauchly, epsilons, mauchly};
 pub use spread::{Centre, SpreadTest, equal_spread};
+pub(crate) use univariate::pooled_strata;
 pub use univariate::{ErrorTerm, Estimate, UnivariateTest, hypothesis_matrix, test_univariate};
