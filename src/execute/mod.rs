@@ -6,6 +6,8 @@
 
 mod conclude;
 pub mod condition;
+mod deals;
+mod largest_t;
 mod family;
 pub mod lower;
 pub mod machine;

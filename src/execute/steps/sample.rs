@@ -61,6 +61,15 @@ impl<'a> Samples<'a> {
         self.over(self.outcome(step), self.occasions(step), covariates(step))
     }
 
+    /// The sample of a step, where it has been asked for before.
+    pub fn known_of(&self, step: &Step) -> Option<Rc<Sample<'a>>> {
+        let (outcome, occasions) = (self.outcome(step), self.occasions(step));
+        let is_it = |sample: &&Rc<Sample<'a>>| {
+            sample.outcome == outcome && sample.occasions == occasions && sample.covariates == covariates(step)
+        };
+        self.known.iter().find(is_it).map(Rc::clone)
+    }
+
     /// The sample of an outcome over all occasions.
     pub fn whole(&mut self, outcome: usize) -> Rc<Sample<'a>> {
         self.over(outcome, (0..self.plan.design.occasions()).collect(), &[])

@@ -25,5 +25,6 @@ pub use multivariate::{Criterion, MultivariateTest, test_multivariate};
 pub use outlying::{Distance, Sample, mahalanobis_distances, studentized_residuals};
 pub use sphericity::{Correction, Epsilons, Mauchly, epsilons, mauchly};
 pub use spread::{Centre, SpreadTest, equal_spread};
+pub(crate) use univariate::pooled_strata;
 pub use univariate::{ErrorTerm, Estimate, UnivariateTest, hypothesis_matrix, test_univariate};
 pub use welch_james::{WelchJames, test_welch_james};

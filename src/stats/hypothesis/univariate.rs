@@ -1,5 +1,5 @@
 use super::contrast::Hypothesis;
-use super::effects::{Stratum, strata};
+use super::effects::strata;
 use super::sphericity::{Correction, Epsilons, epsilons};
 use crate::stats::dist::fisher;
 use crate::stats::linear::{DoubleDouble, Matrix};
@@ -112,21 +112,14 @@ impl Error {
     }
 
     fn pooled(moments: &Moments, hypothesis: &Hypothesis) -> Result<Error, Refusal> {
-        let spanned: Vec<(Stratum, DoubleDouble)> = strata(hypothesis.within_levels())
-            .into_iter()
-            .filter_map(|stratum| {
-                let projected = stratum.basis.transpose().multiply(hypothesis.within());
-                let share = projected.sum_of_squares() / DoubleDouble::from(hypothesis.contrasts());
-                (share.value() > Matrix::DEPENDENCE).then_some((stratum, share))
-            })
-            .collect();
+        let spanned = pooled_strata(hypothesis);
         let everyone = vec![true; moments.cells().len()];
-        if let [(stratum, _)] = &spanned[..] {
-            return Error::of(&moments.error(&stratum.basis, &everyone)?);
+        if let [(basis, _)] = &spanned[..] {
+            return Error::of(&moments.error(basis, &everyone)?);
         }
         let (mut mean_square, mut df_sum, mut variance) = (DoubleDouble::ZERO, 0.0, DoubleDouble::ZERO);
-        for (stratum, share) in &spanned {
-            let error = moments.error(&stratum.basis, &everyone)?;
+        for (basis, share) in &spanned {
+            let error = moments.error(basis, &everyone)?;
             let df = DoubleDouble::from(error.df * error.contrasts());
             df_sum += df.value();
             match error.trace() {
@@ -144,6 +137,17 @@ impl Error {
         }
         Ok(Error { ss: mean_square * DoubleDouble::from(df_sum), df_sum, df: (mean_square.square() / variance).value(), epsilons: None })
     }
+}
+
+/// The strata that a hypothesis's contrasts lie in, each with its orthonormal basis (occasions by contrasts) and the share
+/// w_s that [`ErrorTerm::Pooled`] gives it.
+pub(crate) fn pooled_strata(hypothesis: &Hypothesis) -> Vec<(Matrix, DoubleDouble)> {
+    let spanned = strata(hypothesis.within_levels()).into_iter().map(|stratum| {
+        let projected = stratum.basis.transpose().multiply(hypothesis.within());
+        let share = projected.sum_of_squares() / DoubleDouble::from(hypothesis.contrasts());
+        (stratum.basis, share)
+    });
+    spanned.filter(|(_, share)| share.value() > Matrix::DEPENDENCE).collect()
 }
 
 /// H = (LBM)' [L (X'X)^-1 L']^-1 (LBM), contrasts by contrasts, of a model fitted to the cells in `fitted`.

@@ -4,7 +4,7 @@ use super::super::put;
 use super::{Case, Tested, claim};
 use crate::canon::number::Finite;
 use crate::execute::verdict::Direction;
-use crate::plan::resolved::{Hypothesis, Sides, TestKind};
+use crate::plan::resolved::{Hypothesis, Sides};
 use crate::results::{Detail, Entry, Statistic};
 use crate::stats::dist::{Tail, student};
 use std::collections::BTreeMap;
@@ -21,19 +21,8 @@ pub(super) struct Compared {
 impl Compared {
     /// Puts estimate and interval into the entry and judges by the sides of the test, or by its margins.
     pub fn put(&self, case: &Case<'_>, entry: &mut Entry) -> Result<Tested, String> {
-        let details = &mut entry.details;
-        put(details, "estimate", self.estimate);
-        put(details, "standard_error", self.standard_error);
-        put(details, "t", self.estimate / self.standard_error);
-        put(details, "df_of_t", self.df);
-        if let Some((between, within)) = case.lowered.single() {
-            let cells = (0..between.len()).filter(|cell| !between[*cell].is_zero());
-            let mean = |cell: usize| -> f64 {
-                (0..within.len()).map(|occasion| within[occasion].value() * case.moments.mean(cell, occasion)).sum()
-            };
-            details.insert("means".to_owned(), Detail::Numbers(cells.filter_map(|cell| Finite::new(mean(cell))).collect()));
-        }
-        if matches!(case.chosen.test.kind, TestKind::Equivalence | TestKind::NonInferiority) {
+        self.put_estimate(case, entry);
+        if case.chosen.test.is_claim() {
             return claim::test(self, case, entry);
         }
         match one_side(&case.chosen.test.sides, case.hypothesis) {
@@ -54,6 +43,22 @@ impl Compared {
                 self.put_interval(entry, case.chosen.level, 1.0 - 2.0 * case.chosen.level);
                 Ok(Tested { p: reported.p, direction })
             }
+        }
+    }
+
+    /// Puts the estimate and what it rests on into the entry.
+    pub fn put_estimate(&self, case: &Case<'_>, entry: &mut Entry) {
+        let details = &mut entry.details;
+        put(details, "estimate", self.estimate);
+        put(details, "standard_error", self.standard_error);
+        put(details, "t", self.estimate / self.standard_error);
+        put(details, "df_of_t", self.df);
+        if let Some((between, within)) = case.lowered.single() {
+            let cells = (0..between.len()).filter(|cell| !between[*cell].is_zero());
+            let mean = |cell: usize| -> f64 {
+                (0..within.len()).map(|occasion| within[occasion].value() * case.moments.mean(cell, occasion)).sum()
+            };
+            details.insert("means".to_owned(), Detail::Numbers(cells.filter_map(|cell| Finite::new(mean(cell))).collect()));
         }
     }
 

@@ -1,0 +1,20 @@
+//! Inference by dealing again and by drawing again: randomisation tests, their joint form for families, and the BCa
+//! bootstrap.
+//!
+//! Everything random comes from [`Stream`]s numbered by blocks of work, so that results depend on the key alone: not on the
+//! machine, not on the number of threads.
+
+mod deals;
+mod engine;
+mod joint;
+mod random;
+mod randomisation;
+mod refusal;
+mod statistic;
+mod sums;
+
+pub use deals::{Listing, Scheme, Shuffle};
+pub use joint::{JointTest, Scale, WestfallYoung, westfall_young};
+pub use random::Stream;
+pub use randomisation::{Deals, DealtData, Question, RandomisationTest, Side, Statistic, randomisation};
+pub use refusal::Refusal;
