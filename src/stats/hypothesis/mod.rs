@@ -9,6 +9,7 @@
 mod contrast;
 mod covariances;
 mod effects;
+mod normality;
 mod sphericity;
 mod spread;
 mod univariate;
@@ -16,6 +17,7 @@ mod univariate;
 pub use contrast::{FactorPart, Hypothesis, Part, Weighting, trend_weights};
 pub use covariances::{BoxM, box_m};
 pub use effects::{Effect, ErrorStratum, crossed_effects, error_strata};
+pub use normality::{ShapiroWilk, shapiro_wilk};
 pub use sphericity::{Correction, Epsilons, Mauchly, epsilons, mauchly};
 pub use spread::{Centre, SpreadTest, equal_spread};
 pub use univariate::{ErrorTerm, Estimate, UnivariateTest, hypothesis_matrix, test_univariate};
