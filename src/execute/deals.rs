@@ -111,7 +111,7 @@ pub(crate) fn key(method: &str, times: u64, hypotheses: &[&Hypothesis], errors: 
             }
         }
     }
-    *hasher.finish().as_bytes()
+    hasher.finish().0
 }
 
 /// Judges a family by the largest statistic over the same deals (Westfall & Young 1993), step down.

@@ -188,13 +188,18 @@ impl<'a, 'w> Machine<'a, 'w> {
         words::verdict(self.verdicts[slot], favours)
     }
 
+    /// The verdict of a step of several tests.
+    fn step_verdict(&self, slots: std::ops::Range<usize>) -> &'static str {
+        let step = &self.program.plan.steps[self.program.slots[slots.start].step];
+        words::step_verdict(&self.verdicts[slots], claims(step))
+    }
+
     /// What was found about everything that a condition names, for sentences.
     fn in_words(&self, condition: &BoundCondition) -> String {
         let mut parts = Vec::new();
         condition.each_target(&mut |reference, target| {
             let slots = target.slots();
-            let verdict =
-                if slots.len() == 1 { self.verdict_text(slots.start) } else { words::step_verdict(&self.verdicts[slots]).to_owned() };
+            let verdict = if slots.len() == 1 { self.verdict_text(slots.start) } else { self.step_verdict(slots).to_owned() };
             parts.push(format!("{reference} is {verdict}"));
         });
         parts.join("; ")
@@ -251,10 +256,7 @@ impl<'a, 'w> Machine<'a, 'w> {
                     Action::Test(test) => words::verdict(self.verdicts[slots.start], test.hypotheses[0].favours.as_ref()),
                     _ => words::verdict(self.verdicts[slots.start], None),
                 },
-                _ => {
-                    let claims = matches!(&self.program.plan.steps[number].action, Action::Test(test) if test.is_claim());
-                    words::step_verdict(&self.verdicts[slots], claims).to_owned()
-                }
+                _ => words::step_verdict(&self.verdicts[slots], claims(&self.program.plan.steps[number])).to_owned(),
             });
         }
     }
@@ -272,6 +274,11 @@ impl<'a, 'w> Machine<'a, 'w> {
             arms: flow.arms,
         }
     }
+}
+
+/// Whether a step tests claims.
+fn claims(step: &Step) -> bool {
+    matches!(&step.action, Action::Test(test) if test.is_claim())
 }
 
 fn moments(program: &Program<'_>, sample: &Sample<'_>) -> Vec<CellMoments> {

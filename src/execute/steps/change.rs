@@ -19,6 +19,7 @@ pub(super) struct Choices {
     pub small_sample: SmallSample,
     pub method: ChangeIntervalMethod,
     pub level: f64,
+    pub resamples: Option<u64>,
 }
 
 pub(super) fn run(machine: &mut Machine<'_, '_>, number: usize, choices: &Choices, items: &[Change], sample: &Sample<'_>) {

@@ -1,38 +1,27 @@
 //! The noncentral t distribution, by quadrature over the scale.
 //!
 //! T = (Z + delta) / S with S^2 df a chi-squared variable, so that
-//! P(T <= t) = E Phi(t S - delta). With S = e^w the density of w falls off
-//! exponentially on the left and faster on the right, and the plain
-//! trapezoidal rule converges geometrically (Trefethen & Weideman 2014, *SIAM
-//! Review* 56:385). Every term is positive: both tails keep their relative
+//! P(T <= t) = E Phi(t S - delta), which the trapezoidal rule in ln S gives to
+//! full accuracy. Every term is positive: both tails keep their relative
 //! accuracy, far tails and large df included.
-
-use std::f64::consts::PI;
 
 use libm::{exp, expm1};
 
-use super::gamma::stirling_error;
+use super::scale::{TooManyPoints, density_at_one, log_density, sum_around};
 use super::{DistributionError, Domain, normal};
 
 const DOMAIN: Domain = Domain("noncentral t");
 
-/// Terms below this fraction of the largest one are left out.
-const NEGLIGIBLE: f64 = 1e-19;
-
-/// Points of the rule after which it is given up.
-const MOST_POINTS: usize = 100_000;
-
 const TOO_SHARP: &str = "the statistic is so many times the square root of its degrees of freedom \
                          that the quadrature would need too many points";
+
+fn too_sharp(_: TooManyPoints) -> DistributionError {
+    DOMAIN.out_of_reach(TOO_SHARP)
+}
 
 fn check(t: f64, df: f64) -> Result<(), DistributionError> {
     DOMAIN.finite("the statistic", t)?;
     DOMAIN.positive("the degrees of freedom", df)
-}
-
-/// ln of the density of w, up to a constant: df (w - (e^2w - 1) / 2).
-fn log_scale_density(w: f64, df: f64) -> f64 {
-    df * (w - 0.5 * expm1(2.0 * w))
 }
 
 /// Step of the rule: the error is about exp(-2 pi theta / step) times the
@@ -41,26 +30,6 @@ fn log_scale_density(w: f64, df: f64) -> f64 {
 fn step(t: f64, df: f64, scale: f64) -> f64 {
     let sharpness = df + t * t * (0.5 + 1.0 / df.sqrt());
     0.42 / (sharpness * (scale * scale).max(1.0) + 10.0).sqrt()
-}
-
-/// Walks away from `centre` on both sides, summing what `term` gives until it is negligible.
-fn sum_around(centre: f64, step: f64, mut term: impl FnMut(f64) -> f64) -> Result<(), DistributionError> {
-    let mut largest = term(centre);
-    for side in [-1.0, 1.0] {
-        let mut previous = largest;
-        for k in 1.. {
-            let here = term(centre + side * k as f64 * step);
-            largest = largest.max(here);
-            if here <= NEGLIGIBLE * largest && here <= previous {
-                break;
-            }
-            if k > MOST_POINTS {
-                return Err(DOMAIN.out_of_reach(TOO_SHARP));
-            }
-            previous = here;
-        }
-    }
-    Ok(())
 }
 
 /// E Phi(sign (t S - delta)).
@@ -72,16 +41,12 @@ fn tail(t: f64, df: f64, delta: f64, sign: f64) -> Result<f64, DistributionError
     let step = step(t, df, exp(mode));
     let mut sum = 0.0;
     sum_around(mode, step, |w| {
-        let here = exp(log_scale_density(w, df)) * normal::tail(-sign * (t * exp(w) - delta));
+        let here = exp(log_density(w, df)) * normal::tail(-sign * (t * exp(w) - delta));
         sum += here;
         here
-    })?;
+    })
+    .map_err(too_sharp)?;
     Ok((step * sum * density_at_one(df)).min(1.0))
-}
-
-/// The density of w at S = 1.
-fn density_at_one(df: f64) -> f64 {
-    (df / PI).sqrt() * exp(-stirling_error(df / 2.0))
 }
 
 /// Where the integrand is largest. It has one peak: in S its logarithm is concave.
@@ -185,11 +150,12 @@ impl ScaleRule {
         let mut points = Vec::with_capacity(96);
         let mut mass = 0.0;
         sum_around(0.0, step(t, df, 1.0), |w| {
-            let density = exp(log_scale_density(w, df));
+            let density = exp(log_density(w, df));
             mass += density;
             points.push((t * exp(w), density));
             density
-        })?;
+        })
+        .map_err(too_sharp)?;
         for (_, weight) in &mut points {
             *weight /= mass;
         }

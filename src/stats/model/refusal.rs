@@ -96,6 +96,27 @@ pub enum Refusal {
         /// The occasion.
         occasion: usize,
     },
+    /// A list of values is too short for what is to be computed from it.
+    TooFewValues {
+        /// How many there are.
+        given: usize,
+        /// The fewest that would do.
+        fewest: usize,
+    },
+    /// A list of values is longer than the method was made for.
+    TooManyValues {
+        /// How many there are.
+        given: usize,
+        /// The most that would do.
+        most: usize,
+    },
+    /// A value of a list is infinite or not a number.
+    ValueNotFinite {
+        /// Its position, from 0.
+        position: usize,
+    },
+    /// The values of a list do not vary.
+    ConstantValues,
 }
 
 impl fmt::Display for Refusal {
@@ -178,6 +199,18 @@ impl fmt::Display for Refusal {
                 cell + 1,
                 occasion + 1
             ),
+            Refusal::TooFewValues { given, fewest } => {
+                write!(out, "there are too few values: {given}, but at least {fewest} are needed")
+            }
+            Refusal::TooManyValues { given, most } => write!(
+                out,
+                "there are {given} values, but the published approximation to this test's probability reaches to {most} only; \
+                 with so many values look at the distribution itself"
+            ),
+            Refusal::ValueNotFinite { position } => write!(out, "value number {} is not a finite number", position + 1),
+            Refusal::ConstantValues => {
+                write!(out, "the values do not vary beyond what rounding leaves, so that the shape of their distribution cannot be judged")
+            }
         }
     }
 }
