@@ -178,6 +178,13 @@ impl<'a, 'w> Machine<'a, 'w> {
         self.steps.get(place.step)?.results.get(place.hypothesis)
     }
 
+    /// Whether a slot's test is one-sided and counts estimates below zero.
+    pub fn counts_below(&self, slot: usize) -> bool {
+        let place = &self.program.slots[slot];
+        let Action::Test(test) = &self.program.plan.steps[place.step].action else { return false };
+        steps::one_side(&test.sides, &test.hypotheses[place.hypothesis]) == Some(crate::execute::verdict::Direction::Below)
+    }
+
     /// The verdict of a slot as the plan words it.
     pub fn verdict_text(&self, slot: usize) -> String {
         let place = &self.program.slots[slot];

@@ -7,6 +7,7 @@
 //! (Kirk 2013; Maxwell & Delaney 2004; Muller & Peterson 1984).
 
 mod contrast;
+mod correlations;
 mod covariances;
 mod effects;
 mod largest_contrast;
@@ -19,6 +20,7 @@ mod univariate;
 mod welch_james;
 
 pub use contrast::{FactorPart, Hypothesis, Part, Weighting, trend_weights};
+pub use correlations::{OccasionErrors, contrast_correlations};
 pub use covariances::{BoxM, box_m};
 pub use effects::{Effect, ErrorStratum, crossed_effects, error_strata};
 pub use largest_contrast::{LargestContrast, largest_contrast};

@@ -12,8 +12,8 @@ use crate::stats::model::Refusal;
 pub(crate) struct Groups {
     /// One cell, or two: the first is taken away from the second.
     pub rows: Vec<Vec<Scores>>,
-    /// Whether there are two occasions.
-    pub change: bool,
+    /// Cells and weights of occasions, as bits: what random numbers may hang on.
+    pub identity: Vec<u64>,
 }
 
 /// Scores of one subject; the earlier one is 0 where there is one occasion only.
@@ -35,7 +35,6 @@ impl Groups {
     pub fn of(design: &Design, trial: &Trial, sample: &Sample<'_>, item: &Hypothesis) -> Result<Groups, Refusal> {
         let cells = cells(design, &item.between);
         let (first, second) = occasions(&design.within, &item.within);
-        let change = first.is_some();
         let later = weights(design, &second)?;
         let earlier = first.map(|first| weights(design, &first)).transpose()?;
         let score = |subject: usize, weights: &[DoubleDouble]| -> f64 {
@@ -43,6 +42,10 @@ impl Groups {
             let weighed = row.iter().zip(weights).filter(|(_, weight)| !weight.is_zero());
             weighed.map(|(value, weight)| DoubleDouble::from(*value) * *weight).sum::<DoubleDouble>().value()
         };
+        let mut identity: Vec<u64> = cells.iter().map(|cell| *cell as u64).collect();
+        for weight in earlier.iter().chain([&later]).flatten() {
+            identity.push((weight.value() + 0.0).to_bits());
+        }
         let kept = |subject: &usize| sample.kept.as_ref().is_none_or(|kept| kept[*subject]);
         let rows = cells
             .iter()
@@ -57,7 +60,7 @@ impl Groups {
                     .collect()
             })
             .collect();
-        Ok(Groups { rows, change })
+        Ok(Groups { rows, identity })
     }
 
     /// Subjects of all cells compared.

@@ -2,7 +2,7 @@
 
 use super::super::put as put_number;
 use super::super::sample::Sample;
-use super::bootstrap::{Bootstrap, interval as bca_interval};
+use super::bootstrap::{Bootstrap, of_rows};
 use super::groups::{Groups, Scores};
 use super::{Chosen, count};
 use crate::canon::number::Finite;
@@ -26,10 +26,10 @@ pub(super) fn put(
     entry: &mut Entry,
 ) -> Result<(), String> {
     match chosen.comparison.measure {
-        Measure::StandardizedDifference => difference(chosen, item, groups, entry),
-        Measure::DifferenceInStandardizedChange => in_change(chosen, item, groups, entry),
-        Measure::ProbabilityOfSuperiority => of_superiority(chosen, item, groups, entry),
-        Measure::RobustStandardizedDifference => robust(chosen, item, groups, entry),
+        Measure::StandardizedDifference => difference(chosen, groups, entry),
+        Measure::DifferenceInStandardizedChange => in_change(chosen, groups, entry),
+        Measure::ProbabilityOfSuperiority => of_superiority(chosen, groups, entry),
+        Measure::RobustStandardizedDifference => robust(chosen, groups, entry),
         Measure::Responders => responders(chosen, groups, entry),
         Measure::ReliableChange => reliable(machine, chosen, item, groups, sample, entry),
     }
@@ -55,14 +55,12 @@ fn put_limits(entry: &mut Entry, found: Option<Result<Limits, String>>) {
 
 fn bootstrapped(
     chosen: &Chosen<'_>,
-    item: &Hypothesis,
     groups: &Groups,
     entry: &mut Entry,
     statistic: &(dyn Fn(&[Vec<Scores>]) -> Result<f64, Refusal> + Sync),
 ) -> Result<Limits, String> {
-    let name = crate::execute::steps::in_plan_words(&chosen.comparison.measure);
-    let settings = Bootstrap { resamples: chosen.comparison.resamples, level: chosen.comparison.level, method: &name, item, outcome: chosen.outcome };
-    bca_interval(&settings, groups, statistic, entry).map(|(lower, upper)| (lower, upper, None))
+    let asked = Bootstrap { resamples: chosen.comparison.resamples, level: chosen.comparison.level, identity: &groups.identity };
+    of_rows(&asked, groups, statistic, entry).map(|(lower, upper)| (lower, upper, None))
 }
 
 fn summary(gains: &[f64]) -> GroupSummary {
@@ -77,7 +75,7 @@ fn summary(gains: &[f64]) -> GroupSummary {
     GroupSummary { n, mean: mean.value(), sd: if variance <= unit * unit { 0.0 } else { variance.sqrt() } }
 }
 
-fn difference(chosen: &Chosen<'_>, item: &Hypothesis, groups: &Groups, entry: &mut Entry) -> Result<(), String> {
+fn difference(chosen: &Chosen<'_>, groups: &Groups, entry: &mut Entry) -> Result<(), String> {
     let [first, second] = two(groups)?;
     let standardizer = match chosen.standardizer {
         Some(DifferenceStandardizer::ReferenceSd) => GroupStandardizer::ReferenceSd,
@@ -120,7 +118,7 @@ fn difference(chosen: &Chosen<'_>, item: &Hypothesis, groups: &Groups, entry: &m
     let limits = match chosen.method {
         IntervalMethod::NoncentralT => Some(by(GroupInterval::NoncentralT)),
         IntervalMethod::Bonett => Some(by(GroupInterval::Bonett)),
-        IntervalMethod::Bca => Some(bootstrapped(chosen, item, groups, entry, &|rows| {
+        IntervalMethod::Bca => Some(bootstrapped(chosen, groups, entry, &|rows| {
             let gains: Vec<Vec<f64>> = rows.iter().map(|rows| rows.iter().map(Scores::gain).collect()).collect();
             let (one, other) = (summary(&gains[0]), summary(&gains[1]));
             Ok(standardized_difference(&one, &other, other.mean - one.mean, standardizer)?.d)
@@ -157,7 +155,7 @@ fn changes(rows: &[Vec<Scores>]) -> TwoChanges {
     }
 }
 
-fn in_change(chosen: &Chosen<'_>, item: &Hypothesis, groups: &Groups, entry: &mut Entry) -> Result<(), String> {
+fn in_change(chosen: &Chosen<'_>, groups: &Groups, entry: &mut Entry) -> Result<(), String> {
     two(groups)?;
     let groups_two = changes(&groups.rows);
     let found = change_difference(&groups_two).map_err(|refusal| refusal.reason)?;
@@ -176,7 +174,7 @@ fn in_change(chosen: &Chosen<'_>, item: &Hypothesis, groups: &Groups, entry: &mu
                 .map_err(|refusal| refusal.reason),
         ),
         IntervalMethod::Bca => {
-            Some(bootstrapped(chosen, item, groups, entry, &|rows| change_difference(&changes(rows)).map(|found| found.d)))
+            Some(bootstrapped(chosen, groups, entry, &|rows| change_difference(&changes(rows)).map(|found| found.d)))
         }
         _ => None,
     };
@@ -192,21 +190,21 @@ fn superior(rows: &[Vec<Scores>]) -> Result<Superiority, Refusal> {
     }
 }
 
-fn of_superiority(chosen: &Chosen<'_>, item: &Hypothesis, groups: &Groups, entry: &mut Entry) -> Result<(), String> {
+fn of_superiority(chosen: &Chosen<'_>, groups: &Groups, entry: &mut Entry) -> Result<(), String> {
     let found = superior(&groups.rows).map_err(|refusal| refusal.reason)?;
     entry.estimate = Finite::new(found.p);
     let limits = match chosen.method {
         IntervalMethod::Logit => Some(
             found.logit_interval(chosen.comparison.level).map(|(lower, upper)| (lower, upper, None)).map_err(|refusal| refusal.reason),
         ),
-        IntervalMethod::Bca => Some(bootstrapped(chosen, item, groups, entry, &|rows| superior(rows).map(|found| found.p))),
+        IntervalMethod::Bca => Some(bootstrapped(chosen, groups, entry, &|rows| superior(rows).map(|found| found.p))),
         _ => None,
     };
     put_limits(entry, limits);
     Ok(())
 }
 
-fn robust(chosen: &Chosen<'_>, item: &Hypothesis, groups: &Groups, entry: &mut Entry) -> Result<(), String> {
+fn robust(chosen: &Chosen<'_>, groups: &Groups, entry: &mut Entry) -> Result<(), String> {
     let of = |rows: &[Vec<Scores>]| {
         let gains: Vec<Vec<f64>> = rows.iter().map(|rows| rows.iter().map(Scores::gain).collect()).collect();
         match gains.as_slice() {
@@ -215,7 +213,7 @@ fn robust(chosen: &Chosen<'_>, item: &Hypothesis, groups: &Groups, entry: &mut E
         }
     };
     entry.estimate = Finite::new(of(&groups.rows).map_err(|refusal| refusal.reason)?);
-    let limits = (chosen.method == IntervalMethod::Bca).then(|| bootstrapped(chosen, item, groups, entry, &of));
+    let limits = (chosen.method == IntervalMethod::Bca).then(|| bootstrapped(chosen, groups, entry, &of));
     put_limits(entry, limits);
     Ok(())
 }

@@ -4,7 +4,7 @@ mod bootstrap;
 mod groups;
 mod measure;
 
-pub(super) use bootstrap::{Bootstrap, interval as bca_interval};
+pub(super) use bootstrap::{Bootstrap, of_pair};
 
 use super::sample::Sample;
 use super::{entry, in_plan_words, refused};
@@ -22,8 +22,6 @@ struct Chosen<'c> {
     small_sample: SmallSample,
     method: IntervalMethod,
     higher_is_better: bool,
-    /// Standard deviation at the earlier occasion of each item, pooled over all cells, for reliable change.
-    outcome: usize,
 }
 
 pub(super) fn run(machine: &mut Machine<'_, '_>, number: usize, comparison: &Comparison, sample: &Sample<'_>) {
@@ -36,7 +34,6 @@ pub(super) fn run(machine: &mut Machine<'_, '_>, number: usize, comparison: &Com
             .map_or(SmallSample::No, |choice| machine.choose(number, "small-sample correction", choice)),
         method: machine.choose(number, "interval method", &comparison.method),
         higher_is_better: machine.program.plan.outcomes[sample.outcome].better == Some(Better::Higher),
-        outcome: sample.outcome,
     };
     put_settings(machine, number, &chosen);
     for item in &comparison.items {
