@@ -18,6 +18,7 @@ pub mod beta;
 pub mod chi_squared;
 pub mod fisher;
 pub mod gamma;
+pub mod multivariate_t;
 pub mod noncentral_f;
 pub mod noncentral_t;
 pub mod normal;

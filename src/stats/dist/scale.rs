@@ -69,32 +69,25 @@ pub(super) fn centre_and_step(c: f64, df: f64) -> (f64, f64) {
     (centre, step)
 }
 
-/// A tail at some point with its derivative there.
+/// A tail with its derivative.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub(super) struct TailAndSlope {
     pub tail: f64,
     pub slope: f64,
 }
 
-/// E g(c S) and its derivative by ln c, for a tail g that falls like e^(-x^2 / (2 spread^2)).
-pub(super) fn tail_over_scale(
-    c: f64,
-    df: f64,
-    spread: f64,
-    mut at: impl FnMut(f64) -> TailAndSlope,
-) -> Result<TailAndSlope, TooManyPoints> {
+/// E g(S) and E g'(S), g' being the derivative by ln S, for a tail g that falls like e^(-c^2 S^2 / 2).
+pub(super) fn tail_over_scale(df: f64, c: f64, mut at: impl FnMut(f64) -> TailAndSlope) -> Result<TailAndSlope, TooManyPoints> {
     if df.is_infinite() {
-        let TailAndSlope { tail, slope } = at(c);
-        return Ok(TailAndSlope { tail, slope: c * slope });
+        return Ok(at(1.0));
     }
-    let (centre, step) = centre_and_step(c / spread, df);
+    let (centre, step) = centre_and_step(c, df);
     let mut sum = TailAndSlope { tail: 0.0, slope: 0.0 };
     sum_around(centre, step, |w| {
-        let x = c * exp(w);
         let density = exp(log_density(w, df));
-        let here = at(x);
+        let here = at(exp(w));
         sum.tail += density * here.tail;
-        sum.slope += density * x * here.slope;
+        sum.slope += density * here.slope;
         density * here.tail
     })?;
     let factor = step * density_at_one(df);

@@ -65,7 +65,7 @@ impl Range {
         Self { others, step, first, points }
     }
 
-    /// The tail of the range at width `w`, with its derivative.
+    /// The tail of the range at width `w`, with its derivative by ln w.
     fn at(&self, w: f64) -> TailAndSlope {
         let index = |z: f64| (z / self.step - self.first).clamp(0.0, self.points.len() as f64) as usize;
         let (from, to) = (index(0.5 * w - HALF_WIDTH), index(0.5 * w + HALF_WIDTH));
@@ -78,11 +78,12 @@ impl Range {
             let rest = if self.others > 1.0 { exp((self.others - 1.0) * log_rest) } else { 1.0 };
             sum.slope -= point.weight * self.others * normal::density(point.z - w) / point.below * rest;
         }
+        sum.slope *= w;
         sum
     }
 
     fn over_scale(&self, q: f64, df: f64) -> Result<TailAndSlope, DistributionError> {
-        tail_over_scale(q, df, SQRT_2, |w| self.at(w))
+        tail_over_scale(df, q / SQRT_2, |s| self.at(q * s))
             .map_err(|_| DOMAIN.out_of_reach("with so few degrees of freedom the quadrature would need too many points"))
     }
 }
