@@ -120,11 +120,7 @@ fn tail(n: usize, w: f64, one_less_w: f64) -> Result<f64, Refusal> {
         )
     } else {
         let u = log(count);
-        (
-            log_rest,
-            polynomial(&[-1.5861, -0.31082, -0.083751, 0.0038915], u),
-            polynomial(&[-0.4803, -0.082676, 0.0030302], u),
-        )
+        (log_rest, polynomial(&[-1.5861, -0.31082, -0.083751, 0.0038915], u), polynomial(&[-0.4803, -0.082676, 0.0030302], u))
     };
     normal::upper_tail((y - mean) / exp(log_sd)).map_err(probability)
 }
