@@ -4,6 +4,8 @@
 //! Everything random comes from [`Stream`]s numbered by blocks of work, so that results depend on the key alone: not on the
 //! machine, not on the number of threads.
 
+mod bca;
+mod bootstrap;
 mod deals;
 mod engine;
 mod joint;
@@ -13,6 +15,8 @@ mod refusal;
 mod statistic;
 mod sums;
 
+pub use bca::{BcaInterval, Replicates};
+pub use bootstrap::{ArmMoments, ArmRows, OfMoments, OfRows, Resamples, Spread, bca_of_moments, bca_of_rows};
 pub use deals::{Listing, Scheme, Shuffle};
 pub use joint::{JointTest, Scale, WestfallYoung, westfall_young};
 pub use random::Stream;

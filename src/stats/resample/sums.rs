@@ -7,7 +7,6 @@ const PANEL: usize = 16;
 #[derive(Clone, Debug)]
 pub(super) struct Table {
     columns: usize,
-    rows: usize,
     panels: Vec<Panel>,
 }
 
@@ -35,7 +34,7 @@ impl Table {
                 panel.values.extend_from_slice(&part[..panel.width]);
             }
         }
-        Table { columns, rows, panels }
+        Table { columns, panels }
     }
 
     /// Number of columns.
@@ -69,15 +68,6 @@ impl Table {
                 _ => add::<16>(&panel.values, picked, out),
             }
         }
-    }
-
-    /// Sums of all rows.
-    pub fn sum_all(&self) -> Vec<f64> {
-        let everyone: Vec<u32> = (0..self.rows as u32).collect();
-        let mut sums = self.room();
-        self.sum(&everyone, &mut sums);
-        sums.truncate(self.columns);
-        sums
     }
 
     /// Adds one row to `sums`.
