@@ -6,7 +6,9 @@ use std::num::NonZero;
 use std::time::Instant;
 
 use aforesaid::stats::hypothesis::{ErrorTerm, FactorPart, Hypothesis, Part, Weighting};
-use aforesaid::stats::resample::{Deals, DealtData, Question, Side, Stream, westfall_young};
+use aforesaid::stats::resample::{
+    ArmMoments, ArmRows, DealtData, Deals, Question, Resamples, Side, Spread, Stream, bca_of_moments, westfall_young,
+};
 
 const ARMS: usize = 3;
 const OCCASIONS: usize = 4;
@@ -75,8 +77,37 @@ fn deals(threads: NonZero<usize>) {
     }
 }
 
+/// Standardized change by the average of the two SDs, every pair of occasions in every arm.
+fn resamples(threads: NonZero<usize>) {
+    let occasions: Vec<Vec<usize>> = pairs(OCCASIONS).collect();
+    let statistics = |arms: &[ArmMoments], out: &mut [f64]| {
+        for (arm, out) in arms.iter().zip(out.chunks_exact_mut(occasions.len())) {
+            let mut spread = [0.0; OCCASIONS];
+            for (occasion, spread) in spread.iter_mut().enumerate() {
+                *spread = arm.standard_deviation(occasion);
+            }
+            for (pair, out) in occasions.iter().zip(out) {
+                *out = (arm.mean[pair[1]] - arm.mean[pair[0]]) / ((spread[pair[0]] + spread[pair[1]]) / 2.0);
+            }
+        }
+    };
+    for per_arm in [20, 200, 2_000] {
+        let values = values(per_arm);
+        let arm: Vec<u32> = (0..ARMS * per_arm).map(|subject| (subject / per_arm) as u32).collect();
+        let rows = ArmRows { values: &values, occasions: OCCASIONS, arm: &arm, arms: ARMS, kept: None };
+        let options = Resamples { asked: 10_000, level: 0.95, key: [3; 32], threads };
+        let count = ARMS * occasions.len();
+        let seconds = best(|| {
+            let intervals = bca_of_moments(&rows, Spread::Variances, count, &statistics, &options).unwrap();
+            assert!(intervals.iter().all(Result::is_ok));
+        });
+        println!("bootstrap: {per_arm:5} a group, 18 BCa intervals of 10,000 resamples: {:8.2} ms", 1e3 * seconds);
+    }
+}
+
 fn main() {
     let threads = std::env::args().skip(1).find_map(|argument| argument.parse().ok()).unwrap_or(NonZero::<usize>::MIN);
     println!("{threads} thread(s), best of {RUNS}");
     deals(threads);
+    resamples(threads);
 }

@@ -34,14 +34,50 @@ pub struct ArmMoments {
     pub subjects: f64,
     /// Mean at each occasion.
     pub mean: Vec<f64>,
-    /// Centred cross-products, not divided by anything: the lower triangle by rows.
+    /// Centred squares or cross-products, not divided by anything: one for each occasion, or the lower triangle by rows.
     products: Vec<f64>,
 }
 
+/// What is kept of the spread in each resample.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Spread {
+    /// Variances only, which is faster.
+    Variances,
+    /// Covariances of all occasions too.
+    Covariances,
+}
+
+/// Values of subjects in arms.
+#[derive(Clone, Copy, Debug)]
+pub struct ArmRows<'a> {
+    /// One row of `occasions` values for each subject.
+    pub values: &'a [f64],
+    /// Number of occasions.
+    pub occasions: usize,
+    /// The arm of each subject, counted from 0.
+    pub arm: &'a [u32],
+    /// Number of arms.
+    pub arms: usize,
+    /// Who takes part; everybody where none.
+    pub kept: Option<&'a [bool]>,
+}
+
 impl ArmMoments {
-    /// Covariance of two occasions (their variance where they are the same), over n - 1.
+    /// Variance at an occasion, over n - 1.
+    #[inline]
+    pub fn variance(&self, occasion: usize) -> f64 {
+        let place = if self.products.len() == self.mean.len() { occasion } else { occasion * (occasion + 3) / 2 };
+        // Rounding may leave a variance of zero just below zero.
+        self.products[place].max(0.0) / (self.subjects - 1.0)
+    }
+
+    /// Covariance of two occasions, over n - 1.
+    ///
+    /// # Panics
+    /// Where [`Spread::Variances`] were asked for: a slip of the caller.
     #[inline]
     pub fn covariance(&self, first: usize, second: usize) -> f64 {
+        assert!(self.products.len() > self.mean.len() || self.mean.len() == 1, "covariances were asked for");
         let (low, high) = if first < second { (first, second) } else { (second, first) };
         self.products[high * (high + 1) / 2 + low] / (self.subjects - 1.0)
     }
@@ -49,8 +85,7 @@ impl ArmMoments {
     /// Standard deviation at an occasion, over n - 1.
     #[inline]
     pub fn standard_deviation(&self, occasion: usize) -> f64 {
-        // Rounding may leave a variance of zero just below zero.
-        self.covariance(occasion, occasion).max(0.0).sqrt()
+        self.variance(occasion).sqrt()
     }
 }
 
@@ -62,15 +97,15 @@ pub type OfRows<'a> = dyn Fn(&[Vec<u32>], &mut [f64]) + Sync + 'a;
 
 /// BCa intervals of `count` statistics that depend on the arms' means, variances and covariances.
 ///
-/// `values` has one row of `occasions` values for each subject, `arm` says whose it is; `kept`, where given, who takes part.
 /// The result does not depend on the number of threads, but on the order of the subjects.
 ///
 /// ```
-/// use aforesaid::stats::resample::{Resamples, bca_of_moments};
+/// use aforesaid::stats::resample::{ArmMoments, ArmRows, Resamples, Spread, bca_of_moments};
 /// let values = [3.0, 5.0, 4.0, 7.0, 6.0, 6.5, 2.0, 4.5, 5.0, 9.0, 4.0, 5.5]; // invented
+/// let rows = ArmRows { values: &values, occasions: 2, arm: &[0; 6], arms: 1, kept: None };
 /// let options = Resamples { asked: 2_000, level: 0.95, key: [0; 32], threads: 1.try_into().unwrap() };
-/// let change = |arms: &[aforesaid::stats::resample::ArmMoments], out: &mut [f64]| out[0] = arms[0].mean[1] - arms[0].mean[0];
-/// let intervals = bca_of_moments(&values, 2, &[0; 6], 1, None, 1, &change, &options).unwrap();
+/// let change = |arms: &[ArmMoments], out: &mut [f64]| out[0] = arms[0].mean[1] - arms[0].mean[0];
+/// let intervals = bca_of_moments(&rows, Spread::Variances, 1, &change, &options).unwrap();
 /// let interval = intervals[0].as_ref().unwrap();
 /// assert!(interval.lower < interval.estimate && interval.estimate < interval.upper);
 /// ```
@@ -81,24 +116,20 @@ pub type OfRows<'a> = dyn Fn(&[Vec<u32>], &mut [f64]) + Sync + 'a;
 ///
 /// # Panics
 /// Where lengths do not agree or an arm is out of range: slips of the caller.
-#[expect(clippy::too_many_arguments)] // the data as everywhere else, then what is asked
 pub fn bca_of_moments(
-    values: &[f64],
-    occasions: usize,
-    arm: &[u32],
-    arms: usize,
-    kept: Option<&[bool]>,
+    rows: &ArmRows<'_>,
+    spread: Spread,
     count: usize,
     statistics: &OfMoments<'_>,
     options: &Resamples,
 ) -> Result<Vec<Result<BcaInterval, Refusal>>, Refusal> {
-    assert_eq!(values.len(), arm.len() * occasions, "one row of values for each subject");
-    let mut subjects = vec![Vec::new(); arms];
-    for (subject, &arm) in arm.iter().enumerate().filter(|(subject, _)| kept.is_none_or(|kept| kept[*subject])) {
+    assert_eq!(rows.values.len(), rows.arm.len() * rows.occasions, "one row of values for each subject");
+    let mut subjects = vec![Vec::new(); rows.arms];
+    for (subject, &arm) in rows.arm.iter().enumerate().filter(|(subject, _)| rows.kept.is_none_or(|kept| kept[*subject])) {
         subjects[arm as usize].push(subject);
     }
     let sizes: Vec<usize> = subjects.iter().map(Vec::len).collect();
-    let arms = subjects.iter().map(|subjects| ArmSums::new(values, occasions, subjects)).collect();
+    let arms = subjects.iter().map(|subjects| ArmSums::new(rows, spread, subjects)).collect();
     intervals(&sizes, count, options, &|| MomentSampler::new(&arms, statistics))
 }
 
@@ -193,8 +224,10 @@ fn draw(sizes: &[usize], count: usize, options: &Resamples, blocks: std::ops::Ra
 /// As many of an arm's subjects as it has, with replacement.
 fn draw_again(picks: &mut [u32], stream: &mut Stream) {
     match picks.len() {
+        ..=32 => fill::<11>(picks, stream),
         ..=128 => fill::<8>(picks, stream),
-        ..=1_024 => fill::<5>(picks, stream),
+        ..=256 => fill::<7>(picks, stream),
+        ..=2_048 => fill::<5>(picks, stream),
         ..=16_384 => fill::<4>(picks, stream),
         ..=0x1000_0000 => fill::<2>(picks, stream),
         _ => fill::<1>(picks, stream),
@@ -223,22 +256,26 @@ struct ArmSums {
 }
 
 impl ArmSums {
-    fn new(values: &[f64], occasions: usize, subjects: &[usize]) -> ArmSums {
+    fn new(rows: &ArmRows<'_>, spread: Spread, subjects: &[usize]) -> ArmSums {
+        let occasions = rows.occasions;
         let count = subjects.len() as f64;
-        let value = |subject: usize, occasion: usize| values[subject * occasions + occasion];
+        let value = |subject: usize, occasion: usize| rows.values[subject * occasions + occasion];
         let centre: Vec<f64> =
             (0..occasions).map(|occasion| subjects.iter().map(|&subject| value(subject, occasion) / count).sum()).collect();
-        let columns = occasions + occasions * (occasions + 1) / 2;
+        let columns = occasions
+            + match spread {
+                Spread::Variances => occasions,
+                Spread::Covariances => occasions * (occasions + 1) / 2,
+            };
         let table = Table::new(subjects.len(), columns, |number, row| {
-            for occasion in 0..occasions {
-                row[occasion] = value(subjects[number], occasion) - centre[occasion];
+            let (centred, products) = row.split_at_mut(occasions);
+            for (occasion, centred) in centred.iter_mut().enumerate() {
+                *centred = value(subjects[number], occasion) - centre[occasion];
             }
-            let mut column = occasions;
-            for first in 0..occasions {
-                for second in 0..=first {
-                    row[column] = row[first] * row[second];
-                    column += 1;
-                }
+            let pairs = (0..occasions).flat_map(|high| (0..=high).map(move |low| (high, low)));
+            let wanted = pairs.filter(|(high, low)| spread == Spread::Covariances || high == low);
+            for (product, (high, low)) in products.iter_mut().zip(wanted) {
+                *product = centred[high] * centred[low];
             }
         });
         let mut everybody = table.room();
@@ -257,12 +294,17 @@ impl ArmSums {
         for ((mean, centre), sum) in moments.mean.iter_mut().zip(&self.centre).zip(sum) {
             *mean = centre + sum * inverse;
         }
+        if moments.products.len() == self.occasions {
+            for ((out, product), sum) in moments.products.iter_mut().zip(products).zip(sum) {
+                *out = product - sum * inverse * sum;
+            }
+            return;
+        }
         let mut place = 0;
-        for first in 0..self.occasions {
-            let scaled = sum[first] * inverse;
-            let until = place + first + 1;
-            for ((out, product), second) in moments.products[place..until].iter_mut().zip(&products[place..until]).zip(sum) {
-                *out = product - scaled * second;
+        for (high, scaled) in sum.iter().map(|sum| sum * inverse).enumerate() {
+            let until = place + high + 1;
+            for ((out, product), low) in moments.products[place..until].iter_mut().zip(&products[place..until]).zip(sum) {
+                *out = product - scaled * low;
             }
             place = until;
         }

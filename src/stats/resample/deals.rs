@@ -221,6 +221,7 @@ fn shuffle_front(order: &mut [u32], taken: usize, stream: &mut Stream) {
         // So many that the product of the bounds stays well below 2^64, which makes a rejection rare.
         place += match size {
             ..=128 if left >= 8 => step::<8>(order, place, stream),
+            ..=2_048 if left >= 5 => step::<5>(order, place, stream),
             ..=16_384 if left >= 4 => step::<4>(order, place, stream),
             ..=0x1000_0000 if left >= 2 => step::<2>(order, place, stream),
             _ => step::<1>(order, place, stream),

@@ -16,7 +16,7 @@ mod statistic;
 mod sums;
 
 pub use bca::{BcaInterval, Replicates};
-pub use bootstrap::{ArmMoments, OfMoments, OfRows, Resamples, bca_of_moments, bca_of_rows};
+pub use bootstrap::{ArmMoments, ArmRows, OfMoments, OfRows, Resamples, Spread, bca_of_moments, bca_of_rows};
 pub use deals::{Listing, Scheme, Shuffle};
 pub use joint::{JointTest, Scale, WestfallYoung, westfall_young};
 pub use random::Stream;
