@@ -5,7 +5,7 @@ use super::groups::{Groups, Scores};
 use crate::canon::hash::Hasher;
 use crate::execute::deals::threads;
 use crate::results::Entry;
-use crate::stats::resample::{ArmMoments, BcaInterval, Resamples, bca_of_moments, bca_of_rows};
+use crate::stats::resample::{ArmMoments, ArmRows, BcaInterval, Resamples, Spread, bca_of_moments, bca_of_rows};
 use crate::stats::sizes::Refusal;
 
 /// What an interval asks for.
@@ -55,7 +55,7 @@ pub(in crate::execute::steps) fn of_pair(
 ) -> Result<(f64, f64), String> {
     let arm = vec![0; pairs.len() / 2];
     let of_moments = |arms: &[ArmMoments], out: &mut [f64]| out[0] = statistic(&arms[0]);
-    let found = bca_of_moments(pairs, 2, &arm, 1, None, 1, &of_moments, &asked.options()?).map_err(|refusal| refusal.to_string())?;
+    let found = bca_of_moments(&ArmRows { values: pairs, occasions: 2, arm: &arm, arms: 1, kept: None }, Spread::Covariances, 1, &of_moments, &asked.options()?).map_err(|refusal| refusal.to_string())?;
     only(found, entry)
 }
 
