@@ -6,7 +6,7 @@ use crate::execute::steps::lowered;
 use crate::execute::words;
 use crate::plan::resolved::{Action, Sides};
 use crate::results::Entry;
-use crate::results::numbers::significant;
+use crate::results::numbers::{degrees_of_freedom, significant};
 use crate::stats::dist::multivariate_t::MultivariateT;
 use crate::stats::hypothesis::{Hypothesis, OccasionErrors, contrast_correlations};
 
@@ -70,7 +70,7 @@ pub(crate) fn judge(machine: &Machine<'_, '_>, family: usize) -> Result<Judged, 
     let critical = if one_sided { joint.critical_value_one_sided(plan.alpha) } else { joint.critical_value_two_sided(plan.alpha) };
     let critical = critical.map_err(refuse)?;
     judged.critical = Some(critical.value);
-    judged.notes.push(format!("multivariate t with {} df, critical value {}", significant(df, 6), significant(critical.value, 6)));
+    judged.notes.push(format!("multivariate t with {} df, critical value {}", degrees_of_freedom(df), significant(critical.value, 6)));
     judged.notes.push(if exact {
         "probabilities by quadrature".to_owned()
     } else {
