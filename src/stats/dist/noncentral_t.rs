@@ -7,7 +7,7 @@
 
 use libm::{exp, expm1};
 
-use super::scale::{TooManyPoints, density_at_one, log_density, sum_around};
+use super::scale::{TooManyPoints, density_at_one, log_density, sum_around, sum_until};
 use super::{DistributionError, Domain, normal};
 
 const DOMAIN: Domain = Domain("noncentral t");
@@ -135,66 +135,102 @@ pub fn noncentrality_limits(t: f64, df: f64, level: f64) -> Result<(f64, f64), D
     let rule = ScaleRule::new(t, df)?;
     // T is about normal with mean delta and variance 1 + t^2 / (2 df).
     let spread = z * (1.0 + 0.5 * t * t / df).sqrt();
-    let lower = rule.solve(each, z, -1.0, t - spread)?;
-    let upper = rule.solve(each, z, 1.0, t + spread)?;
+    let lower = rule.solve(z, -1.0, t - spread)?;
+    let upper = rule.solve(z, 1.0, t + spread)?;
     Ok((lower, upper))
 }
 
-/// The points t S and weights of the rule, which all values of delta share.
+/// The points t S and weights of a rule that all values of delta share, the coarse rule's points first.
 struct ScaleRule {
     points: Vec<(f64, f64)>,
+    coarse: usize,
+}
+
+/// Weights of the limits' rule are left out below this: the tails looked for are not small.
+const NO_WEIGHT: f64 = 1e-13;
+
+/// How much wider than for tails the steps of the limits' rule are: the error stays at some 1e-11.
+const WIDER: f64 = 1.2;
+
+/// What a tail at some delta is, with its first two derivatives.
+struct TailHere {
+    tail: f64,
+    /// E phi(x) with x = t S - delta.
+    density: f64,
+    /// E x phi(x).
+    moment: f64,
 }
 
 impl ScaleRule {
     fn new(t: f64, df: f64) -> Result<Self, DistributionError> {
-        let mut points = Vec::with_capacity(96);
-        let mut mass = 0.0;
-        sum_around(0.0, step(t, df, 1.0), |w| {
-            let density = exp(log_density(w, df));
-            mass += density;
-            points.push((t * exp(w), density));
-            density
-        })
-        .map_err(too_sharp)?;
-        for (_, weight) in &mut points {
-            *weight /= mass;
+        let step = WIDER * step(t, df, 1.0);
+        let mut points = Vec::with_capacity(64);
+        let mut coarse = 0;
+        for centre in [0.0, step] {
+            coarse = points.len();
+            sum_until(NO_WEIGHT, centre, 2.0 * step, |w| {
+                let density = exp(log_density(w, df));
+                points.push((t * exp(w), density));
+                density
+            })
+            .map_err(too_sharp)?;
         }
-        Ok(Self { points })
+        Ok(Self { points, coarse })
     }
 
-    /// E Phi(sign (t S - delta)) and E phi(t S - delta).
-    fn tail_and_density(&self, delta: f64, sign: f64) -> (f64, f64) {
-        self.points.iter().fold((0.0, 0.0), |(tail, density), &(shifted, weight)| {
+    fn at(&self, points: &[(f64, f64)], delta: f64, sign: f64) -> TailHere {
+        let mut sum = TailHere { tail: 0.0, density: 0.0, moment: 0.0 };
+        let mut mass = 0.0;
+        for &(shifted, weight) in points {
             let x = shifted - delta;
-            (tail + weight * normal::tail(-sign * x), density + weight * normal::density(x))
-        })
+            let density = weight * normal::density(x);
+            mass += weight;
+            sum.tail += weight * normal::tail(-sign * x);
+            sum.density += density;
+            sum.moment += x * density;
+        }
+        TailHere { tail: sum.tail / mass, density: sum.density / mass, moment: sum.moment / mass }
     }
 
-    /// The delta whose tail on the side of `sign` is `target`, with z its normal quantile.
-    fn solve(&self, target: f64, z: f64, sign: f64, start: f64) -> Result<f64, DistributionError> {
-        let unsettled = DOMAIN.out_of_reach("the search for the noncentrality did not settle");
+    /// The delta whose tail on the side of `sign` is `target`, with z its normal quantile: by the coarse rule, which is
+    /// good to some 1e-3, and from there by the full one.
+    fn solve(&self, z: f64, sign: f64, start: f64) -> Result<f64, DistributionError> {
+        let near = self.search(&self.points[..self.coarse], z, sign, start, 0.1)?;
+        self.search(&self.points, z, sign, near, 5e-4)
+    }
+
+    /// Halley's method on the probit scale, on which the tail is almost linear in delta, inside a bracket. Its steps
+    /// converge cubically: after one not above `last_step` it is done.
+    fn search(&self, points: &[(f64, f64)], z: f64, sign: f64, start: f64, last_step: f64) -> Result<f64, DistributionError> {
         let (mut near, mut far) = (f64::NEG_INFINITY, f64::INFINITY);
-        // Along `along` = sign * delta the tail falls; on the probit scale almost linearly.
+        // Along `along` = sign * delta the tail falls.
         let mut along = sign * start;
         for _ in 0..200 {
-            let (tail, density) = self.tail_and_density(sign * along, sign);
-            if tail > target {
+            let TailHere { tail, density, moment } = self.at(points, sign * along, sign);
+            let mut next = f64::NAN;
+            if tail > 0.0 && tail < 1.0 && density > 0.0 {
+                let probit = normal::quick_quantile_upper(tail);
+                let at_probit = normal::density(probit);
+                let slope = density / at_probit;
+                let bend = sign * moment / at_probit + probit * slope * slope;
+                let newton = (z - probit) / slope;
+                let halley = newton / (1.0 + 0.5 * newton * bend / slope).max(0.5);
+                if halley.abs() <= last_step {
+                    return Ok(sign * (along + halley));
+                }
+                if probit < z {
+                    near = near.max(along);
+                } else {
+                    far = far.min(along);
+                }
+                next = along + halley;
+            } else if tail >= 1.0 {
                 near = near.max(along);
             } else {
                 far = far.min(along);
             }
-            let newton = if tail > 0.0 && tail < 1.0 && density > 0.0 {
-                let probit = normal::quantile_upper(tail)?;
-                along + (z - probit) * normal::density(probit) / density
-            } else {
-                f64::NAN
-            };
-            // The steps converge quadratically: after one this small nothing is left to gain.
-            if (newton - along).abs() <= 1e-8 * along.abs().max(1.0) {
-                return Ok(sign * newton);
-            }
-            along = if newton > near && newton < far {
-                newton
+            along = if next > near && next < far {
+                next
             } else if near.is_finite() && far.is_finite() {
                 0.5 * (near + far)
             } else if near.is_finite() {
@@ -203,6 +239,6 @@ impl ScaleRule {
                 along - z.abs().max(1.0)
             };
         }
-        Err(unsettled)
+        Err(DOMAIN.out_of_reach("the search for the noncentrality did not settle"))
     }
 }

@@ -55,11 +55,12 @@ pub fn shapiro_wilk(values: &[f64]) -> Result<ShapiroWilk, Refusal> {
     }
     let mut ordered = values.to_vec();
     ordered.sort_unstable_by(f64::total_cmp);
+    let unit = convenient_unit(ordered[0].abs().max(ordered[n - 1].abs()));
+    ordered.iter_mut().for_each(|x| *x *= unit);
     let (smallest, largest) = (ordered[0], ordered[n - 1]);
     if largest - smallest <= rounding_unit(smallest.abs().max(largest.abs())) {
         return Err(Refusal::ConstantValues);
     }
-    // W does not depend on the unit; with the range as unit no square can overflow.
     let range = DoubleDouble::from(largest) - DoubleDouble::from(smallest);
     let scaled: Vec<DoubleDouble> = ordered.iter().map(|&x| (DoubleDouble::from(x) - DoubleDouble::from(smallest)) / range).collect();
     let weights = coefficients(n)?;
@@ -70,6 +71,16 @@ pub fn shapiro_wilk(values: &[f64]) -> Result<ShapiroWilk, Refusal> {
     let w = (along.square() / lengths).value();
     let one_less_w = ((lengths - along.square()) / lengths).value();
     Ok(ShapiroWilk { w, p: tail(n, w, one_less_w)? })
+}
+
+/// A power of two that brings values of this size to where their squares can be held; W does not depend on it.
+fn convenient_unit(largest: f64) -> f64 {
+    const FAR: f64 = 1.606_938_044_258_990_3e60; // 2^200
+    match largest {
+        x if x > 1e250 => 1.0 / FAR,
+        x if x < 1e-200 => FAR,
+        _ => 1.0,
+    }
 }
 
 /// The coefficients of the upper half of the order statistics, the largest first.
