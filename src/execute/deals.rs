@@ -10,7 +10,7 @@ use crate::execute::words;
 use crate::plan::resolved::{Action, Design, ErrorTerm};
 use crate::stats::hypothesis::Hypothesis;
 use crate::stats::model;
-use crate::stats::resample::{DealtData, Deals, Question, Refusal, Scale, Side, westfall_young};
+use crate::stats::resample::{AdjustedData, DealtData, Deals, Question, Refusal, Scale, Side, westfall_young};
 use std::num::NonZero;
 
 /// Who was dealt what.
@@ -73,6 +73,20 @@ impl<'a> Dealing<'a> {
             cell_of: &self.cell_of,
             strata: self.strata,
             eligible: Some(&self.eligible),
+        }
+    }
+
+    /// For the test with covariates.
+    pub fn adjusted(&'a self, trial: &'a Trial, sample: &'a Sample<'_>) -> AdjustedData<'a> {
+        AdjustedData {
+            values: self.values,
+            occasions: self.occasions,
+            covariates: &sample.covariate_values,
+            cell: &trial.cell,
+            cells: trial.cells,
+            kept: self.kept,
+            strata: self.strata,
+            eligible: &self.eligible,
         }
     }
 
@@ -146,9 +160,6 @@ pub(crate) fn judge(machine: &Machine<'_, '_>, family: usize) -> Result<Judged, 
         sample = Some(own);
     }
     let sample = sample.ok_or("the family has no test")?;
-    if !sample.covariates.is_empty() {
-        return Err("its tests have covariates, which these deals do not take".to_owned());
-    }
     let kept: Vec<&[bool]> = hypotheses.iter().map(Hypothesis::kept).collect();
     let dealing = Dealing::new(design, machine.samples.trial, &sample, &kept)?;
     let questions: Vec<Question<'_>> = hypotheses

@@ -264,6 +264,19 @@ pub struct Matrices {
     pub m: Vec<Vec<Finite>>,
     /// Cells whose covariances supply the error.
     pub error_cells: Vec<usize>,
+    /// For a pooled error, the strata that it pools over; empty where the error is that of M itself.
+    #[serde(skip_serializing_if = "Vec::is_empty", default)]
+    pub error_strata: Vec<ErrorStratum>,
+}
+
+/// A stratum of a pooled error: the mean square is the sum of the strata's mean squares in their shares.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct ErrorStratum {
+    /// Its share.
+    pub share: Finite,
+    /// Its contrasts between occasions: b rows, orthonormal columns.
+    #[serde(rename = "M")]
+    pub m: Vec<Vec<Finite>>,
 }
 
 /// A test statistic.

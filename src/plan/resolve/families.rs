@@ -205,6 +205,9 @@ fn fits(reader: &Reader<'_>, node: &Node, control: Control, design: &Design, mem
             if members.iter().any(|(_, test, _)| test.covariates != members[0].1.covariates) {
                 return refuse(format!("`{word}` needs tests with the same covariates"), "give all its tests the same covariates");
             }
+            if control == Control::WestfallYoung && !members[0].1.covariates.is_empty() {
+                return refuse("`westfall-young` deals arms, and takes no covariates".to_owned(), "leave `covariates` out of its tests, or use `max-t` or `holm`");
+            }
             if control == Control::MaxT { Some(()) } else { dealt(design, members, &refuse) }
         }
         _ => Some(()),

@@ -4,6 +4,6 @@ mod accumulate;
 mod moments;
 mod refusal;
 
-pub(crate) use moments::{Adjustment, rounding_unit};
+pub(crate) use moments::rounding_unit;
 pub use moments::{CellMoments, ErrorMatrix, Moments};
 pub use refusal::Refusal;

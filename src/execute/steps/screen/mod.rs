@@ -131,14 +131,15 @@ fn sphericity(machine: &Machine<'_, '_>, of: &[String], reference: &str, sample:
             Weighting::Equal,
         )?;
         let everyone = vec![true; design.cells()];
-        Ok((mauchly(moments, hypothesis.within(), &everyone)?, moments.subjects()))
+        Ok((mauchly(moments, hypothesis.within(), &everyone)?, moments.subjects(), hypothesis))
     });
-    let (found, n) = match found {
+    let (found, n, hypothesis) = match found {
         Ok(found) => found,
         Err(refusal) => return refuse(machine, entry, &refusal),
     };
     let mut entry = with_statistic(entry, "W", found.w, &[]);
     entry.n = Some(n);
+    entry.hypothesis = Some(super::test::matrices(&hypothesis, &sample.occasions, (0..design.cells()).collect(), false));
     put(&mut entry.details, "chi_squared", found.chi_squared);
     put(&mut entry.details, "df", found.df);
     match found.p() {

@@ -15,8 +15,9 @@ use crate::execute::machine::{Machine, Raw, setting};
 use crate::execute::verdict::Direction;
 use crate::execute::words;
 use crate::plan::resolved::{self, CorrectionRule, Criterion, Design, ErrorTerm, Factor, Hypothesis, Method, Sides, Test, TestKind, Weights};
-use crate::results::{Entry, Matrices};
+use crate::results::{Entry, ErrorStratum, Matrices};
 use crate::stats::hypothesis::{self as engine, FactorPart, Part, Weighting};
+use crate::stats::linear::Matrix;
 use crate::stats::model::{Moments, Refusal};
 
 pub(crate) use comparison::{one_side, rounded};
@@ -159,7 +160,8 @@ fn one(
     let own = chosen.error == ErrorTerm::Own || chosen.method == Method::WelchJames;
     let error_cells: Vec<usize> = (0..design.cells()).filter(|cell| !own || lowered.kept()[*cell]).collect();
     entry.n = Some(error_cells.iter().map(|cell| moments.cells()[*cell].subjects).sum());
-    entry.hypothesis = Some(matrices(&lowered, &sample.occasions, error_cells));
+    let pooled = chosen.error == ErrorTerm::Pooled && chosen.method != Method::WelchJames;
+    entry.hypothesis = Some(matrices(&lowered, &sample.occasions, error_cells, pooled));
     let case = Case { chosen, hypothesis, moments, lowered: &lowered, in_words: &in_words };
     match (chosen.test.kind, chosen.method) {
         (TestKind::LargestContrast, _) => largest::test(machine, number, &case, entry),
@@ -189,21 +191,23 @@ pub(crate) fn term(error: ErrorTerm) -> engine::ErrorTerm {
 }
 
 /// L and M as written for one contrast, else the orthonormal rows and columns that were used.
-fn matrices(lowered: &engine::Hypothesis, occasions: &[usize], error_cells: Vec<usize>) -> Matrices {
+pub(super) fn matrices(lowered: &engine::Hypothesis, occasions: &[usize], error_cells: Vec<usize>, pooled: bool) -> Matrices {
     let finite = |row: Vec<f64>| row.into_iter().filter_map(Finite::new).collect::<Vec<_>>();
-    match lowered.single() {
-        Some((between, within)) => Matrices {
-            l: vec![finite(between.iter().map(|weight| weight.value()).collect())],
-            m: occasions.iter().map(|occasion| finite(vec![within[*occasion].value()])).collect(),
-            error_cells,
-        },
-        None => {
-            let within = lowered.within().to_rows();
-            Matrices {
-                l: lowered.between().to_rows().into_iter().map(finite).collect(),
-                m: occasions.iter().map(|occasion| finite(within[*occasion].clone())).collect(),
-                error_cells,
-            }
-        }
-    }
+    let of_occasions = |matrix: &Matrix| {
+        let rows = matrix.to_rows();
+        occasions.iter().map(|occasion| finite(rows[*occasion].clone())).collect::<Vec<_>>()
+    };
+    let (l, m) = match lowered.single() {
+        Some((between, within)) => (
+            vec![finite(between.iter().map(|weight| weight.value()).collect())],
+            occasions.iter().map(|occasion| finite(vec![within[*occasion].value()])).collect(),
+        ),
+        None => (lowered.between().to_rows().into_iter().map(finite).collect(), of_occasions(lowered.within())),
+    };
+    let strata = if pooled { engine::pooled_strata(lowered) } else { Vec::new() };
+    let error_strata = strata
+        .iter()
+        .filter_map(|(basis, share)| Some(ErrorStratum { share: Finite::new(share.value())?, m: of_occasions(basis) }))
+        .collect();
+    Matrices { l, m, error_cells, error_strata }
 }

@@ -11,7 +11,7 @@ use crate::execute::verdict::Direction;
 use crate::results::{Detail, Entry, Statistic};
 use crate::stats::dist::Tail;
 use crate::stats::hypothesis::test_univariate;
-use crate::stats::resample::{Deals, Question, Side, Statistic as Dealt, randomisation};
+use crate::stats::resample::{Deals, Question, Side, Statistic as Dealt, freedman_lane, randomisation};
 
 pub(super) fn test(machine: &Machine<'_, '_>, case: &Case<'_>, sample: &Sample<'_>, entry: &mut Entry) -> Result<Tested, String> {
     let Some(asked) = case.chosen.test.deals else { return Err("the plan does not say how often arms are dealt again".to_owned()) };
@@ -25,8 +25,13 @@ pub(super) fn test(machine: &Machine<'_, '_>, case: &Case<'_>, sample: &Sample<'
     let error = term(case.chosen.error);
     let question = Question { hypothesis: case.lowered, error, side };
     let deals = Deals { asked, key: key("randomisation", asked, &[case.lowered], &[case.chosen.error]), threads: crate::execute::deals::threads() };
-    let mut found = randomisation(&dealing.data(), &[question], &deals).map_err(|refusal| dealing.in_words(&refusal, case.in_words))?;
-    let tested = found.swap_remove(0).map_err(|refusal| dealing.in_words(&refusal, case.in_words))?;
+    let tested = if sample.covariates.is_empty() {
+        let found = randomisation(&dealing.data(), &[question], &deals);
+        found.and_then(|mut found| found.swap_remove(0))
+    } else {
+        freedman_lane(&dealing.adjusted(machine.samples.trial, sample), case.lowered, error, side, &deals)
+    };
+    let tested = tested.map_err(|refusal| dealing.in_words(&refusal, case.in_words))?;
     let (name, value) = match tested.statistic {
         Dealt::T(value) => ("t", value),
         Dealt::F(value) => ("F", value),
