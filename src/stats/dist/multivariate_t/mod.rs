@@ -66,15 +66,6 @@ pub struct Probability {
     pub method: Method,
 }
 
-/// Relative error of the quadratures, with room: measured errors are below 1e-12.
-const QUADRATURE_ERROR: f64 = 1e-10;
-
-impl Probability {
-    fn by_quadrature(p: f64, method: Method) -> Self {
-        Self { p, error_bound: QUADRATURE_ERROR * p, exact: true, reached: true, method }
-    }
-}
-
 /// A joint distribution of t (or normal) statistics that share their estimate of error.
 ///
 /// ```
