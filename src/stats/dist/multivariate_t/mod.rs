@@ -39,9 +39,9 @@ pub struct Accuracy {
 }
 
 impl Default for Accuracy {
-    /// 1e-5, a thousandth of the probability, and three million points.
+    /// 1e-5, a thousandth of the probability, and eight million points.
     fn default() -> Self {
-        Self { absolute: 1e-5, relative: 1e-3, most_points: 3_000_000 }
+        Self { absolute: 1e-5, relative: 1e-3, most_points: 8_000_000 }
     }
 }
 
