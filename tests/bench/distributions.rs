@@ -28,7 +28,7 @@ fn matrix(entry: impl Fn(usize, usize) -> f64) -> Vec<Vec<f64>> {
 
 /// All pairwise differences of five means of unequal sizes: ten variables, rank four.
 fn all_pairs() -> Vec<Vec<f64>> {
-    let sizes = [5.0, 9.0, 14.0, 20.0, 8.0];
+    let sizes = [5.0_f64, 9.0, 14.0, 20.0, 8.0];
     let pairs: Vec<(usize, usize)> = (0..5).flat_map(|a| (a + 1..5).map(move |b| (a, b))).collect();
     let shared = |a: usize, b: usize| if a == b { 1.0 / sizes[a] } else { 0.0 };
     let covariance = |(a, b): (usize, usize), (c, d): (usize, usize)| shared(a, c) + shared(b, d) - shared(a, d) - shared(b, c);

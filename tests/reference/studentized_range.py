@@ -59,7 +59,7 @@ def upper_tail(q, k, df, refine=1):
     lo = min(centre - 11 * sd, centre - 50 / df) if df < 50 else min(centre, 0) - 11 * sd
     hi = max(centre, mpf(0)) + 11 * sd if df > 4 else max(centre, mpf(0)) + 3
     total = mpf(0)
-    for w, weight in panels(lo, hi, min(max(sd * 3, mpf(1) / 10), mpf(1) / 2) / refine):
+    for w, weight in panels(lo, hi, min(sd * 3, mpf(1) / 2) / refine):
         density = constant + df * w - df * M.exp(2 * w) / 2
         if density < -200 or q * M.exp(w) > 75:
             continue
@@ -75,7 +75,7 @@ if __name__ == "__main__":
     for q, k, df in CASES:
         x, nu = mpf(float(q)), (M.inf if df == "inf" else mpf(float(df)))
         value = upper_tail(x, k, nu)
-        if len(rows) % 5 == 0:
+        if len(rows) % 5 == 0 or nu > 100000:
             assert abs(upper_tail(x, k, nu, 2) / value - 1) < mpf(10) ** -16, (q, k, df)
         if k == 2:
             t = x / M.sqrt(2)

@@ -65,6 +65,12 @@ impl fmt::Display for Method {
 /// The first lattice.
 const FIRST_SIZE: usize = 1;
 
+/// Relative error of the quadratures, with room: measured errors are below 1e-12.
+const QUADRATURE_ERROR: f64 = 1e-10;
+
+/// What a probability inside may be off by where it is a difference of others.
+const INSIDE_ERROR: f64 = 1e-12;
+
 const SCALE_TOO_WIDE: &str = "with so few degrees of freedom the quadrature would need too many points";
 
 fn univariate_upper(x: f64, df: f64) -> Result<f64, DistributionError> {
@@ -130,26 +136,19 @@ impl Route {
     }
 
     pub fn probability(&self, df: f64, wanted: Wanted, accuracy: &Accuracy) -> Result<Probability, DistributionError> {
-        if matches!(self.kind, Kind::Lattice) {
-            return self.by_lattice(df, wanted, accuracy);
-        }
-        Ok(Probability::by_quadrature(self.exactly(df, wanted)?, self.method()))
-    }
-
-    /// The probability by any route but the lattice rule.
-    fn exactly(&self, df: f64, wanted: Wanted) -> Result<f64, DistributionError> {
         let outside_only = |outside: f64| if wanted == Wanted::Outside { outside } else { 1.0 - outside };
-        match &self.kind {
-            Kind::Certain => Ok(outside_only(if self.region.empty() { 1.0 } else { 0.0 })),
+        let p = match &self.kind {
+            Kind::Certain => outside_only(if self.region.empty() { 1.0 } else { 0.0 }),
             Kind::OneVariable => match wanted {
-                Wanted::Outside => univariate_outside(self.region.bounds[0], df),
-                Wanted::Inside => univariate_inside(self.region.bounds[0], df),
+                Wanted::Outside => univariate_outside(self.region.bounds[0], df)?,
+                Wanted::Inside => univariate_inside(self.region.bounds[0], df)?,
             },
-            Kind::Product(product) => product.probability(df, wanted).map_err(|_| DOMAIN.out_of_reach(SCALE_TOO_WIDE)),
-            // Inside is the lower tail: as good as the upper one unless it is small, when few would ask for it.
-            Kind::Range { means, c } => Ok(outside_only(studentized_range::upper_tail(SQRT_2 * c, *means, df)?)),
-            Kind::Lattice => unreachable!("the lattice rule has its own way"),
-        }
+            Kind::Product(product) => product.probability(df, wanted).map_err(|_| DOMAIN.out_of_reach(SCALE_TOO_WIDE))?,
+            Kind::Range { means, c } => outside_only(studentized_range::upper_tail(SQRT_2 * c, *means, df)?),
+            Kind::Lattice => return self.by_lattice(df, wanted, accuracy),
+        };
+        let error_bound = QUADRATURE_ERROR * p + if wanted == Wanted::Inside { INSIDE_ERROR } else { 0.0 };
+        Ok(Probability { p, error_bound, exact: true, reached: true, method: self.method() })
     }
 
     fn by_lattice(&self, df: f64, wanted: Wanted, accuracy: &Accuracy) -> Result<Probability, DistributionError> {
@@ -178,8 +177,10 @@ impl Route {
 /// P(A_1) + P(A_2 and not A_1) + ... Drawing that variable from its own tail keeps the relative accuracy of small
 /// probabilities, and the integrands are far smoother than that of the rectangle, large probabilities included.
 pub(super) struct LatticePlan {
+    /// The variables in the order of the sum.
+    sequence: Vec<usize>,
     terms: Vec<Term>,
-    /// The variable whose tails are added as they are.
+    /// The variable of that order whose tails are added as they are.
     alone: Option<usize>,
 }
 
@@ -230,11 +231,14 @@ impl Event {
 impl LatticePlan {
     /// For the probability inside `region`.
     pub fn inside(region: &Region) -> Result<Self, DistributionError> {
-        Ok(Self { terms: vec![Event::Inside.term(region, 1.0)?], alone: None })
+        let sequence = (0..region.variables()).collect();
+        Ok(Self { sequence, terms: vec![Event::Inside.term(region, 1.0)?], alone: None })
     }
 
     /// For the probability outside `region`.
     pub fn outside(region: &Region) -> Result<Self, DistributionError> {
+        let sequence = apart(&region.correlation);
+        let region = &region.arranged(&sequence);
         let mut terms = Vec::new();
         for (i, interval) in region.bounds.iter().enumerate().skip(1) {
             if region.bounds[..=i].iter().all(|b| b.symmetric()) {
@@ -248,11 +252,12 @@ impl LatticePlan {
                 terms.push(Event::FirstBelow(i).term(region, 1.0)?);
             }
         }
-        Ok(Self { terms, alone: Some(0) })
+        Ok(Self { sequence, terms, alone: Some(0) })
     }
 
     /// The integrals with the bounds of `region`.
     pub fn bind(&self, region: &Region, df: f64) -> Result<Parts, DistributionError> {
+        let region = &region.arranged(&self.sequence);
         let alone = self.alone.map_or(Ok(0.0), |i| univariate_outside(region.bounds[i], df))?;
         let integrands = self
             .terms
@@ -265,6 +270,22 @@ impl LatticePlan {
             .collect::<Result<Vec<_>, DistributionError>>()?;
         Ok(Parts { alone, integrands })
     }
+}
+
+/// The variables in an order where each is as little correlated as can be with those before it, which makes the
+/// integrands smoother: bounds up to twelve times smaller were measured, and none much larger.
+fn apart(correlation: &[Vec<f64>]) -> Vec<usize> {
+    let mut closest: Vec<f64> = vec![0.0; correlation.len()];
+    let mut waiting: Vec<usize> = (0..correlation.len()).collect();
+    let mut sequence = Vec::with_capacity(correlation.len());
+    while let Some(&next) = waiting.iter().min_by(|&&a, &&b| closest[a].total_cmp(&closest[b])) {
+        sequence.push(next);
+        waiting.retain(|&i| i != next);
+        for &i in &waiting {
+            closest[i] = closest[i].max(correlation[i][next].abs());
+        }
+    }
+    sequence
 }
 
 fn not_a_correlation(NotACorrelation(variance): NotACorrelation) -> DistributionError {

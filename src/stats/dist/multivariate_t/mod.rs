@@ -39,9 +39,9 @@ pub struct Accuracy {
 }
 
 impl Default for Accuracy {
-    /// 1e-5, a thousandth of the probability, and three million points.
+    /// 1e-5, a thousandth of the probability, and eight million points.
     fn default() -> Self {
-        Self { absolute: 1e-5, relative: 1e-3, most_points: 3_000_000 }
+        Self { absolute: 1e-5, relative: 1e-3, most_points: 8_000_000 }
     }
 }
 
@@ -64,15 +64,6 @@ pub struct Probability {
     pub reached: bool,
     /// How it was computed.
     pub method: Method,
-}
-
-/// Relative error of the quadratures, with room: measured errors are below 1e-12.
-const QUADRATURE_ERROR: f64 = 1e-10;
-
-impl Probability {
-    fn by_quadrature(p: f64, method: Method) -> Self {
-        Self { p, error_bound: QUADRATURE_ERROR * p, exact: true, reached: true, method }
-    }
 }
 
 /// A joint distribution of t (or normal) statistics that share their estimate of error.

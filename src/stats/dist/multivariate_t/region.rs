@@ -95,6 +95,12 @@ impl Region {
         Self { bounds: kept.into_iter().map(|(_, interval)| interval).collect(), correlation }
     }
 
+    /// The same region with its variables in another order.
+    pub fn arranged(&self, sequence: &[usize]) -> Self {
+        let correlation = sequence.iter().map(|&i| sequence.iter().map(|&j| self.correlation[i][j]).collect()).collect();
+        Self { bounds: sequence.iter().map(|&i| self.bounds[i]).collect(), correlation }
+    }
+
     pub fn variables(&self) -> usize {
         self.bounds.len()
     }

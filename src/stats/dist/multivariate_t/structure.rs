@@ -65,14 +65,16 @@ pub(super) fn means_compared(correlation: &[Vec<f64>]) -> Option<usize> {
     if star.len() != means - 1 {
         return None;
     }
-    for e in 0..pairs {
-        if ends[e].is_none() {
-            let touched: Vec<usize> = (0..star.len()).filter(|&i| meet(star[i], e)).collect();
-            let &[a, b] = touched.as_slice() else { return None };
-            ends[e] = Some((a + 1, b + 1));
+    // Every other difference touches just the two that lead from mean 0 to its own means.
+    let named = ends.into_iter().enumerate().map(|(e, known)| {
+        let touched: Vec<usize> = (0..star.len()).filter(|&i| meet(star[i], e)).collect();
+        match (known, touched.as_slice()) {
+            (Some(known), _) => Some(known),
+            (None, &[a, b]) => Some((a + 1, b + 1)),
+            _ => None,
         }
-    }
-    let ends: Vec<(usize, usize)> = ends.into_iter().collect::<Option<_>>()?;
+    });
+    let ends: Vec<(usize, usize)> = named.collect::<Option<_>>()?;
     let mut sorted = ends.clone();
     sorted.sort_unstable();
     sorted.dedup();
