@@ -111,19 +111,23 @@ const SPOILT: &[(&str, &str, &str)] = &[
     ("wrong-type", "steps:", "acknowledged: [small-cells]\nsteps:"),
     ("contrast-twice", PIECES, "test: contrasts\n    contrast: {drill: {quiet: -1, paired: 1}}\n    contrasts: []"),
     ("control-does-not-fit", "control: holm", "control: shaffer"),
-    (
-        "covariate-in-contrast",
-        "correction: greenhouse-geisser",
-        "correction: greenhouse-geisser\n    covariates: [{occasion: june}]",
-    ),
+    ("covariate-in-contrast", "correction: greenhouse-geisser", "correction: greenhouse-geisser\n    covariates: [{occasion: june}]"),
     ("graph-hands-to-itself", "tests: [pieces], control: holm", GRAPH_TO_ITSELF),
     (
         "largest-contrast-not-confirmatory",
         "  - id: means",
         "  - {id: most, test: largest contrast, effect: drill by month, correction: none}\n  - id: means",
     ),
-    ("method-does-not-fit", PIECES, "test: equivalence\n    contrast: {drill: {quiet: -1, paired: 1}}\n    margin: {lower: -5, upper: 5}\n    level: 0.05\n    method: multivariate\n    criterion: wilks"),
-    ("no-direction", "correction: greenhouse-geisser", "correction: greenhouse-geisser\n    sides: one\n    favours: paired\n    level: 0.025"),
+    (
+        "method-does-not-fit",
+        PIECES,
+        "test: equivalence\n    contrast: {drill: {quiet: -1, paired: 1}}\n    margin: {lower: -5, upper: 5}\n    level: 0.05\n    method: multivariate\n    criterion: wilks",
+    ),
+    (
+        "no-direction",
+        "correction: greenhouse-geisser",
+        "correction: greenhouse-geisser\n    sides: one\n    favours: paired\n    level: 0.025",
+    ),
     ("not-a-contrast", PIECES, "test: contrasts\n    contrast: {month: {june: 1}}"),
     ("not-randomised", "correction: greenhouse-geisser", "method: randomisation\n    deals: 9999"),
     (

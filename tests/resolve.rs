@@ -279,10 +279,7 @@ fn all_errors_come_in_one_go_and_none_twice() {
 
 #[test]
 fn words_of_later_releases_are_known_and_refused_as_such() {
-    for step in [
-        "{id: o, test: omnibus, effect: arm, method: mixed model}",
-        "{id: o, test: omnibus, effect: arm, among: everyone}",
-    ] {
+    for step in ["{id: o, test: omnibus, effect: arm, method: mixed model}", "{id: o, test: omnibus, effect: arm, among: everyone}"] {
         one_finding(&two_arms(&format!("- {step}"), "conclusions: [{otherwise: x}]"), "not-in-this-release", "README.md");
     }
     let clustered =

@@ -174,14 +174,13 @@ impl<'p> Reading<'p> {
                     let value = at.value(of, problems);
                     self.values.extend(value.map(|value| (outcome, occasion, value)));
                 }
-                Role::Number { further, number, kind } => match at.check(kind, problems) {
-                    Some(there) => {
+                Role::Number { further, number, kind } => {
+                    if let Some(there) = at.check(kind, problems) {
                         let (values, missing) = &mut self.checked[number];
                         *if there { values } else { missing } += 1;
                         self.further.extend(at.covariate(problems).map(|value| (further, value.to_bits(), needed.field)));
                     }
-                    None => {}
-                },
+                }
                 Role::Text { further } => {
                     if let Some(text) = at.stratum(problems) {
                         let id = further::id_of(&mut self.texts[further], text);
@@ -233,10 +232,13 @@ impl<'p> Reading<'p> {
             if !self.gathered.set_further(subject, column, bits) {
                 let first = self.gathered.lines[subject] as usize;
                 self.problems.add("column-changes", |problems| {
-                    Diagnostic::error("column-changes", format!("subject {} has another value here than on line {first}", quoted(text_of(identifier))))
-                        .at(problems.cell(row, field, "another value"))
-                        .at(problems.line(first, "first here"))
-                        .hint("a covariate or stratum is a trait of the subject, the same in all its rows; mend the data")
+                    Diagnostic::error(
+                        "column-changes",
+                        format!("subject {} has another value here than on line {first}", quoted(text_of(identifier))),
+                    )
+                    .at(problems.cell(row, field, "another value"))
+                    .at(problems.line(first, "first here"))
+                    .hint("a covariate or stratum is a trait of the subject, the same in all its rows; mend the data")
                 });
             }
         }

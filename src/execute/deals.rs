@@ -10,7 +10,7 @@ use crate::execute::words;
 use crate::plan::resolved::{Action, Design, ErrorTerm};
 use crate::stats::hypothesis::Hypothesis;
 use crate::stats::model;
-use crate::stats::resample::{AdjustedData, DealtData, Deals, Question, Refusal, Scale, Side, westfall_young};
+use crate::stats::resample::{AdjustedData, Deals, DealtData, Question, Refusal, Scale, Side, westfall_young};
 use std::num::NonZero;
 
 /// Who was dealt what.

@@ -123,7 +123,11 @@ fn finite_level(level: f64) -> Finite {
 fn verdict_of(raw: Raw, level: f64, claim: bool) -> Verdict {
     match raw {
         Raw::Tested { p, .. } if claim => {
-            if p <= level { Verdict::Shown } else { Verdict::NotShown }
+            if p <= level {
+                Verdict::Shown
+            } else {
+                Verdict::NotShown
+            }
         }
         Raw::Waiting | Raw::NotTested => Verdict::NotTested,
         Raw::Refused => Verdict::Refused,

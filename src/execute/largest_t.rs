@@ -28,7 +28,8 @@ pub(crate) fn judge(machine: &Machine<'_, '_>, family: usize) -> Result<Judged, 
         }
         let moments = own.moments.as_ref().map_err(|refusal| words::refusal(refusal, design))?;
         hypotheses.push(
-            lowered(design, &test.hypotheses[place.hypothesis], test.weights, moments).map_err(|refusal| words::refusal(&refusal, design))?,
+            lowered(design, &test.hypotheses[place.hypothesis], test.weights, moments)
+                .map_err(|refusal| words::refusal(&refusal, design))?,
         );
         one_sided |= matches!(test.sides, Sides::One { .. });
         entries.push(machine.entry(*slot).ok_or("a member has no result")?);
@@ -36,7 +37,8 @@ pub(crate) fn judge(machine: &Machine<'_, '_>, family: usize) -> Result<Judged, 
     }
     let sample = sample.ok_or("the family has no test")?;
     let moments = sample.moments.as_ref().map_err(|refusal| words::refusal(refusal, design))?;
-    let number = |entry: &Entry, name: &str| entry.detail(name).map(|value| value.get()).ok_or_else(|| format!("{} has no t", entry.reference));
+    let number =
+        |entry: &Entry, name: &str| entry.detail(name).map(|value| value.get()).ok_or_else(|| format!("{} has no t", entry.reference));
     let mut df = f64::INFINITY;
     let mut common = true;
     let first = (number(entries[0], "error_mean_square")?, number(entries[0], "df_of_t")?);

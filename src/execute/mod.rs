@@ -7,8 +7,8 @@
 mod conclude;
 pub mod condition;
 mod deals;
-mod largest_t;
 mod family;
+mod largest_t;
 pub mod lower;
 pub mod machine;
 mod multiplicity;

@@ -26,15 +26,10 @@ pub(crate) fn verdict(verdict: Verdict, favours: Option<&Favours>) -> String {
 /// The verdict of a step of several tests: the strongest word that is true of it.
 pub(crate) fn step_verdict(verdicts: &[Verdict], claims: bool) -> &'static str {
     let words = if claims { ["all shown", "any shown", "none shown"] } else { ["all significant", "any significant", "none significant"] };
-    [
-        (Word::AllSignificant, words[0]),
-        (Word::AnySignificant, words[1]),
-        (Word::NoneSignificant, words[2]),
-        (Word::NotTested, "not tested"),
-    ]
-    .into_iter()
-    .find(|(word, _)| holds_of_several(*word, verdicts) == Truth::True)
-    .map_or("refused", |(_, text)| text)
+    [(Word::AllSignificant, words[0]), (Word::AnySignificant, words[1]), (Word::NoneSignificant, words[2]), (Word::NotTested, "not tested")]
+        .into_iter()
+        .find(|(word, _)| holds_of_several(*word, verdicts) == Truth::True)
+        .map_or("refused", |(_, text)| text)
 }
 
 /// A correction rule as a plan would write it.

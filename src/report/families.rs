@@ -47,10 +47,11 @@ fn entry<'r>(input: &'r ReportInput<'_>, reference: &str) -> Option<&'r Entry> {
 }
 
 fn members(input: &ReportInput<'_>, family: &FamilyResult) -> Table {
-    let mut table = Table::new(&["Test", "#p", "#adjusted p", "Verdict"]);
-    for member in family.members.iter().take(MOST_ROWS) {
+    let mut table = Table::new(&["#No.", "Test", "#p", "#adjusted p", "Verdict"]);
+    for (number, member) in family.members.iter().take(MOST_ROWS).enumerate() {
         let found = entry(input, member);
         table.row([
+            (number + 1).to_string(),
             markdown(member),
             found.map(|entry| tables::p(entry.p, entry.p_bound)).unwrap_or_default(),
             found.map(|entry| tables::p(entry.p_adjusted, false)).unwrap_or_default(),
@@ -68,7 +69,7 @@ fn members(input: &ReportInput<'_>, family: &FamilyResult) -> Table {
 }
 
 fn updates(family: &FamilyResult, start: Option<&[f64]>) -> Table {
-    let weights: Vec<String> = family.members.iter().map(|member| format!("#weight of {}", markdown(member))).collect();
+    let weights: Vec<String> = (1..=family.members.len()).map(|number| format!("#weight {number}")).collect();
     let mut heads = vec!["Taken out", "#adjusted p", "Significant"];
     heads.extend(weights.iter().map(String::as_str));
     let mut table = Table::new(&heads);
@@ -78,8 +79,9 @@ fn updates(family: &FamilyResult, start: Option<&[f64]>) -> Table {
         table.row(row);
     }
     for update in &family.updates {
+        let number = family.members.iter().position(|member| *member == update.member).map_or(0, |place| place + 1);
         let mut row = vec![
-            markdown(&update.member),
+            format!("No. {number}"),
             tables::p(Some(update.p_adjusted), false),
             if update.significant { "yes" } else { "no" }.to_owned(),
         ];

@@ -52,7 +52,8 @@ fn one(design: &Design, request: &Request<'_>, hypothesis: &Hypothesis, sample: 
     match student::quantile_upper((1.0 - request.level) / 2.0, df) {
         Ok(width) => {
             let half = width * estimate.standard_error;
-            entry.interval = Finite::new(estimate.value - half).zip(Finite::new(estimate.value + half)).map(|(lower, upper)| [lower, upper]);
+            entry.interval =
+                Finite::new(estimate.value - half).zip(Finite::new(estimate.value + half)).map(|(lower, upper)| [lower, upper]);
         }
         Err(error) => entry.because = Some(format!("no interval: {error}")),
     }

@@ -64,9 +64,8 @@ impl<'a> Samples<'a> {
     /// The sample of a step, where it has been asked for before.
     pub fn known_of(&self, step: &Step) -> Option<Rc<Sample<'a>>> {
         let (outcome, occasions) = (self.outcome(step), self.occasions(step));
-        let is_it = |sample: &&Rc<Sample<'a>>| {
-            sample.outcome == outcome && sample.occasions == occasions && sample.covariates == covariates(step)
-        };
+        let is_it =
+            |sample: &&Rc<Sample<'a>>| sample.outcome == outcome && sample.occasions == occasions && sample.covariates == covariates(step);
         self.known.iter().find(is_it).map(Rc::clone)
     }
 
@@ -76,9 +75,8 @@ impl<'a> Samples<'a> {
     }
 
     fn over(&mut self, outcome: usize, occasions: Vec<usize>, covariates: &[Covariate]) -> Rc<Sample<'a>> {
-        let is_it = |sample: &&Rc<Sample<'a>>| {
-            sample.outcome == outcome && sample.occasions == occasions && sample.covariates == covariates
-        };
+        let is_it =
+            |sample: &&Rc<Sample<'a>>| sample.outcome == outcome && sample.occasions == occasions && sample.covariates == covariates;
         if let Some(known) = self.known.iter().find(is_it) {
             return Rc::clone(known);
         }
@@ -121,9 +119,9 @@ impl<'a> Samples<'a> {
             Covariate::Occasion { outcome, levels } => {
                 let outcome = self.plan.outcomes.iter().position(|other| other.name == *outcome);
                 let occasion = (0..design.occasions()).find(|occasion| design.occasion_levels(*occasion) == *levels);
-                outcome.zip(occasion).map_or(f64::NAN, |(outcome, occasion)| {
-                    self.trial.values[outcome][subject * self.trial.occasions + occasion]
-                })
+                outcome
+                    .zip(occasion)
+                    .map_or(f64::NAN, |(outcome, occasion)| self.trial.values[outcome][subject * self.trial.occasions + occasion])
             }
         };
         let values: Vec<f64> = (0..subjects).flat_map(|subject| covariates.iter().map(move |covariate| of(covariate, subject))).collect();

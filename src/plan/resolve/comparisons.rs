@@ -19,9 +19,9 @@ use crate::plan::syntax::tree::Node;
 pub(super) fn keys(measure: Measure) -> &'static [&'static str] {
     match measure {
         Measure::StandardizedDifference => &["split", "within each", "standardizer", "small-sample correction", "interval"],
-        Measure::DifferenceInStandardizedChange
-        | Measure::ProbabilityOfSuperiority
-        | Measure::RobustStandardizedDifference => &["split", "within each", "interval"],
+        Measure::DifferenceInStandardizedChange | Measure::ProbabilityOfSuperiority | Measure::RobustStandardizedDifference => {
+            &["split", "within each", "interval"]
+        }
         Measure::Responders => &["split", "within each", "interval", "reaching"],
         Measure::ReliableChange => &["split", "within each", "reliability"],
     }
@@ -261,7 +261,13 @@ fn items(
     let count: usize = options.iter().map(Vec::len).product();
     if count > 5000 {
         let span = node.map_or(fields.span, |node: &Node| node.span);
-        reader.error("too-many-tests", span, format!("this step makes {count} results; at most 5000 can be reported"), "here", "split fewer factors");
+        reader.error(
+            "too-many-tests",
+            span,
+            format!("this step makes {count} results; at most 5000 can be reported"),
+            "here",
+            "split fewer factors",
+        );
         return None;
     }
     let better = outcome.and_then(|place| context.outcomes[place].better);
@@ -288,11 +294,16 @@ fn fits(reader: &Reader<'_>, fields: &Fields<'_>, context: &Context<'_>, measure
         let averaged = design.between.iter().zip(&item.between).find(|(_, part)| **part == FactorPart::Average).map(|(factor, _)| factor);
         let found = pairs(&design.between, &item.between).zip(pairs(&design.within, &item.within));
         let hint = match (averaged, found) {
-            (Some(factor), _) => format!(
-                "standard deviations and shares are taken within cells: name `{}` in `split` or in `within each`",
-                factor.name
-            ),
-            (None, Some((arms, visits))) if (cells[0]..=cells[1]).contains(&(arms + 1)) && (occasions[0]..=occasions[1]).contains(&(visits + 1)) && arms + visits > 0 => continue,
+            (Some(factor), _) => {
+                format!("standard deviations and shares are taken within cells: name `{}` in `split` or in `within each`", factor.name)
+            }
+            (None, Some((arms, visits)))
+                if (cells[0]..=cells[1]).contains(&(arms + 1))
+                    && (occasions[0]..=occasions[1]).contains(&(visits + 1))
+                    && arms + visits > 0 =>
+            {
+                continue;
+            }
             _ => format!(
                 "{}; split into pairs (`all pairs`, `adjacent pairs`, `against LEVEL`) and hold the rest by `within each`",
                 match measure {

@@ -180,7 +180,11 @@ pub(super) fn in_the_outcomes_unit(reader: &Reader<'_>, span: Span, hypotheses: 
                 reader.error(
                     "weights-not-in-unit",
                     span,
-                    format!("the positive weights of `{}` sum to {}, so that it is not in the outcome's unit", hypothesis.label, (positive * 1e12).round() / 1e12),
+                    format!(
+                        "the positive weights of `{}` sum to {}, so that it is not in the outcome's unit",
+                        hypothesis.label,
+                        (positive * 1e12).round() / 1e12
+                    ),
                     "here",
                     "let the positive weights of each factor sum to 1, and the negative ones to -1; a margin is in the outcome's unit",
                 );

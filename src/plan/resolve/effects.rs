@@ -46,7 +46,9 @@ pub(super) fn options(
                 return None;
             }
             match fields.get("split") {
-                Some(node) => splits(reader, node, &factors, chosen, spacing)?.into_iter().for_each(|(place, found)| options[place] = found),
+                Some(node) => {
+                    splits(reader, node, &factors, chosen, spacing)?.into_iter().for_each(|(place, found)| options[place] = found)
+                }
                 None => {
                     missing_split(reader, fields.span);
                     return None;
@@ -102,7 +104,6 @@ pub(super) fn options(
     debug_assert!(options.iter().flatten().all(|option| !matches!(&option.part, FactorPart::Hold(level) if level.is_empty())));
     Some(options)
 }
-
 
 fn not_an_interaction(reader: &Reader<'_>, span: Span, otherwise: &str) {
     reader.error(

@@ -11,8 +11,7 @@ use super::spacing::Spacing;
 use super::steps::{Context, probability};
 use crate::plan::resolved::{
     CellMean, Change, ChangeInterval, ChangeIntervalMethod, Choice, Comparison, Estimate, FactorPart, LevelWeight, Measure, SmallSample,
-    Standardizer,
-    VarianceExplainedKind,
+    Standardizer, VarianceExplainedKind,
 };
 use crate::plan::syntax::tree::Node;
 
@@ -176,9 +175,7 @@ fn standardized_change(
             ("bca", ChangeIntervalMethod::Bca),
             ("none", ChangeIntervalMethod::None),
         ];
-        choice(reader, node, references, "`method` of the interval", &mut |node| {
-            reader.word(node, "`method` of the interval", &words, &[])
-        })
+        choice(reader, node, references, "`method` of the interval", &mut |node| reader.word(node, "`method` of the interval", &words, &[]))
     });
     let items = changes(reader, fields, id, context);
     let standardizer = standardizer?;
@@ -229,7 +226,13 @@ pub(super) fn resamples(reader: &Reader<'_>, fields: &Fields<'_>, bootstraps: bo
         }
         (false, Some((interval, node))) => {
             let place = interval.entry("resamples").map_or(node.span, |entry| entry.key_span);
-            reader.error("misplaced-key", place, "`resamples` has no use here", "here", "only `method: bca` draws subjects again; remove it");
+            reader.error(
+                "misplaced-key",
+                place,
+                "`resamples` has no use here",
+                "here",
+                "only `method: bca` draws subjects again; remove it",
+            );
             None
         }
         (false, None) => Some(None),
@@ -387,8 +390,12 @@ fn variance_explained(
 }
 
 fn kinds(reader: &Reader<'_>, fields: &Fields<'_>) -> Option<Vec<VarianceExplainedKind>> {
-    let node: &Node =
-        reader.required(fields, "kind", "the estimate", "write `kind: [partial eta squared]`, or `generalized eta squared`, or `omega squared`, or several of them")?;
+    let node: &Node = reader.required(
+        fields,
+        "kind",
+        "the estimate",
+        "write `kind: [partial eta squared]`, or `generalized eta squared`, or `omega squared`, or several of them",
+    )?;
     let words = [
         ("partial eta squared", VarianceExplainedKind::PartialEtaSquared),
         ("generalized eta squared", VarianceExplainedKind::GeneralizedEtaSquared),

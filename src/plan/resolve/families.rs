@@ -192,11 +192,15 @@ fn fits(reader: &Reader<'_>, node: &Node, control: Control, design: &Design, mem
                 !one.comparison || step.outcome != members[0].0.outcome || test.margin.is_some() || test.sides != members[0].1.sides
             }) {
                 return refuse(
-                    format!("`{word}` compares statistics of single contrasts of one outcome, all one-sided or all two-sided, and `{}` is not of that kind", other.reference),
+                    format!(
+                        "`{word}` compares statistics of single contrasts of one outcome, all one-sided or all two-sided, and `{}` is not of that kind",
+                        other.reference
+                    ),
                     "split effects into single comparisons, or use `holm`",
                 );
             }
-            if let Some((_, test, _)) = members.iter().find(|(_, test, _)| values(&test.method).any(|method| *method != Method::Univariate)) {
+            if let Some((_, test, _)) = members.iter().find(|(_, test, _)| values(&test.method).any(|method| *method != Method::Univariate))
+            {
                 return refuse(
                     format!("`{word}` needs the t of univariate tests; the test of `{}` uses another method", test.effect.join(" by ")),
                     "leave `method` out of these tests",
@@ -206,7 +210,10 @@ fn fits(reader: &Reader<'_>, node: &Node, control: Control, design: &Design, mem
                 return refuse(format!("`{word}` needs tests with the same covariates"), "give all its tests the same covariates");
             }
             if control == Control::WestfallYoung && !members[0].1.covariates.is_empty() {
-                return refuse("`westfall-young` deals arms, and takes no covariates".to_owned(), "leave `covariates` out of its tests, or use `max-t` or `holm`");
+                return refuse(
+                    "`westfall-young` deals arms, and takes no covariates".to_owned(),
+                    "leave `covariates` out of its tests, or use `max-t` or `holm`",
+                );
             }
             if control == Control::MaxT { Some(()) } else { dealt(design, members, &refuse) }
         }
@@ -214,11 +221,7 @@ fn fits(reader: &Reader<'_>, node: &Node, control: Control, design: &Design, mem
     }
 }
 
-fn dealt(
-    design: &Design,
-    members: &[(&Step, &Test, &Hypothesis)],
-    refuse: &dyn Fn(String, &str) -> Option<()>,
-) -> Option<()> {
+fn dealt(design: &Design, members: &[(&Step, &Test, &Hypothesis)], refuse: &dyn Fn(String, &str) -> Option<()>) -> Option<()> {
     let Some(randomised) = &design.randomised else {
         return refuse(
             "nothing says what was randomised, so that nothing can be dealt again".to_owned(),
@@ -227,7 +230,8 @@ fn dealt(
     };
     let named = |factor: &Factor| randomised.factors.contains(&factor.name);
     for (_, _, hypothesis) in members {
-        let moves = design.between.iter().zip(&hypothesis.between).any(|(factor, part)| super::hypotheses::df(factor, part) > 0 && named(factor));
+        let moves =
+            design.between.iter().zip(&hypothesis.between).any(|(factor, part)| super::hypotheses::df(factor, part) > 0 && named(factor));
         if !moves {
             return refuse(
                 format!("`{}` compares no arms that were randomised: dealing them again cannot move it", hypothesis.reference),
@@ -241,7 +245,10 @@ fn dealt(
     }
     if let Some((step, _, _)) = members.iter().find(|(step, _, _)| step.role == Role::Confirmatory) {
         return refuse(
-            format!("with {arms} arms `westfall-young` controls the error only where no arm differs from another, so that `{}` cannot be confirmatory", step.id),
+            format!(
+                "with {arms} arms `westfall-young` controls the error only where no arm differs from another, so that `{}` cannot be confirmatory",
+                step.id
+            ),
             "use `holm` or `max-t`, or give its tests `role: supportive`",
         );
     }

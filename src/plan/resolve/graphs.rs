@@ -78,7 +78,13 @@ fn row(reader: &Reader<'_>, node: &Node, members: &[String], what: &str, too_muc
         let place = reader.name(&entry.key, entry.key_span, "member of the family", &names);
         match place.zip(reader.number(&entry.node, "a share")) {
             Some((_, share)) if !(0.0..=1.0).contains(&share) => {
-                reader.error("wrong-range", entry.node.span, format!("a share of {share} is not between 0 and 1"), "here", "write a share of one");
+                reader.error(
+                    "wrong-range",
+                    entry.node.span,
+                    format!("a share of {share} is not between 0 and 1"),
+                    "here",
+                    "write a share of one",
+                );
                 sound = false;
             }
             Some((place, share)) => found[place] = share,

@@ -5,9 +5,7 @@ use super::hypotheses::df;
 use super::reader::{Fields, Reader};
 use super::references::References;
 use super::steps::{Context, misplaced};
-use crate::plan::resolved::{
-    Choice, ColumnKind, Covariate, Criterion, Hypothesis, Method, Outcome, TestKind,
-};
+use crate::plan::resolved::{Choice, ColumnKind, Covariate, Criterion, Hypothesis, Method, Outcome, TestKind};
 use crate::plan::syntax::tree::{Node, Value};
 use crate::text::source::Span;
 
@@ -73,12 +71,7 @@ pub(super) fn read(
     });
     let deals = fields.get("deals").map(|node| count(reader, node, "`deals`"));
     let covariates = covariates(reader, fields, context);
-    let methods = Methods {
-        method: method?,
-        criterion: criterion.unwrap_or(None),
-        deals: deals.unwrap_or(None),
-        covariates: covariates?,
-    };
+    let methods = Methods { method: method?, criterion: criterion.unwrap_or(None), deals: deals.unwrap_or(None), covariates: covariates? };
     if methods.may_be(Method::Multivariate) {
         reader.required(
             fields,
@@ -176,13 +169,19 @@ fn covariate(reader: &Reader<'_>, node: &Node, context: &Context<'_>) -> Option<
             Some(node) => reader.name(reader.text(node, "`outcome`")?, node.span, "outcome", &names)?,
             None if names.len() == 1 => 0,
             None => {
-                reader.required(&fields, "outcome", "the covariate", &format!("the plan has several outcomes; say which: {}", names.join(", ")));
+                reader.required(
+                    &fields,
+                    "outcome",
+                    "the covariate",
+                    &format!("the plan has several outcomes; say which: {}", names.join(", ")),
+                );
                 return None;
             }
         };
         let node = reader.required(&fields, "occasion", "the covariate", "say at which occasion, such as `{occasion: baseline}`")?;
         let text = reader.text(node, "`occasion`")?;
-        let all: Vec<String> = (0..context.design.occasions()).map(|occasion| context.design.occasion_levels(occasion).join("; ")).collect();
+        let all: Vec<String> =
+            (0..context.design.occasions()).map(|occasion| context.design.occasion_levels(occasion).join("; ")).collect();
         let all: Vec<&str> = all.iter().map(String::as_str).collect();
         let place = reader.name(text, node.span, "occasion", &all)?;
         let levels = context.design.occasion_levels(place).into_iter().map(str::to_owned).collect();
@@ -206,7 +205,9 @@ fn covariate(reader: &Reader<'_>, node: &Node, context: &Context<'_>) -> Option<
             let numbers: Vec<&str> = context.columns.iter().map(|check| check.column.as_str()).collect();
             let hint = match crate::text::suggest::nearest(column, numbers.iter().copied()) {
                 Some(near) => format!("did you mean `{near}`?"),
-                None => format!("declare it under `data`, as in `columns: {{{column}: {{type: number}}}}`; an occasion is written `{{occasion: LEVEL}}`"),
+                None => format!(
+                    "declare it under `data`, as in `columns: {{{column}: {{type: number}}}}`; an occasion is written `{{occasion: LEVEL}}`"
+                ),
             };
             reader.error("unknown-name", node.span, format!("`data` checks no column `{column}`"), "unknown", hint);
             None
@@ -294,7 +295,8 @@ impl Methods {
         for covariate in &self.covariates {
             let Covariate::Occasion { outcome: of, levels } = covariate else { continue };
             let within = &context.design.within;
-            let uses = |one: &Hypothesis| within.iter().zip(&one.within).zip(levels).all(|((factor, part), level)| part.weighs(factor, level));
+            let uses =
+                |one: &Hypothesis| within.iter().zip(&one.within).zip(levels).all(|((factor, part), level)| part.weighs(factor, level));
             let used = hypotheses.iter().find(|one| *of == outcome.name && uses(one));
             if let Some(used) = used {
                 reader.error(

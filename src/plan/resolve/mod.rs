@@ -137,8 +137,7 @@ fn plan(reader: &Reader<'_>, root: &Node, places: &mut Places) -> Option<Resolve
             })
             .collect();
         references.current = None;
-        families =
-            fields.get("families").map_or(Some(Vec::new()), |node| families::families(reader, node, &found, &references, &context));
+        families = fields.get("families").map_or(Some(Vec::new()), |node| families::families(reader, node, &found, &references, &context));
         families::families_judged_in_time(reader, families.as_deref().unwrap_or(&[]), &references);
         conclusions = reader
             .required(&fields, "conclusions", what, "say what will be concluded from each way the tests can turn out")

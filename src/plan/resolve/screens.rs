@@ -17,19 +17,21 @@ pub(super) fn screen(
 ) -> Option<Screen> {
     let node = fields.get("screen")?;
     let words = [
-        ("sphericity", Looks::AtSphericity),
-        ("equal covariance matrices", Looks::AtCovariances),
-        ("equal variances", Looks::AtVariances),
-        ("normal residuals", Looks::AtNormality),
-        ("outlying values", Looks::AtOutliers),
-        ("missingness", Looks::AtMissingness),
+        ("sphericity", LooksAt::Sphericity),
+        ("equal covariance matrices", LooksAt::Covariances),
+        ("equal variances", LooksAt::Variances),
+        ("normal residuals", LooksAt::Normality),
+        ("outlying values", LooksAt::Outliers),
+        ("missingness", LooksAt::Missingness),
     ];
     let what = reader.word(node, "`screen`", &words, &[]);
     let why = match what {
-        Some(Looks::AtOutliers) => {
+        Some(LooksAt::Outliers) => {
             "say where a value counts as outlying: the size of a studentized residual, such as 3.5, or the probability of a Mahalanobis distance, such as 0.001; there is no default"
         }
-        Some(Looks::AtMissingness) => "say which share of missing values counts as a departure, such as `threshold: 0.1`; there is no default",
+        Some(LooksAt::Missingness) => {
+            "say which share of missing values counts as a departure, such as `threshold: 0.1`; there is no default"
+        }
         _ => "say at which p it shows a departure, for instance `threshold: 0.05`; there is no default",
     };
     let method = fields.get("method");
@@ -49,17 +51,17 @@ pub(super) fn screen(
         }
     };
     let (kind, names): (ScreenKind, Vec<String>) = match what? {
-        Looks::AtSphericity => {
+        LooksAt::Sphericity => {
             misplaced(reader, fields, "method", "sphericity is looked at by Mauchly's test");
             (ScreenKind::Sphericity { of: sphericity_of(reader, fields, context)? }, vec![id.to_owned()])
         }
-        Looks::AtCovariances => {
+        LooksAt::Covariances => {
             misplaced(reader, fields, "method", "covariance matrices are compared by Box's M");
             misplaced(reader, fields, "of", "covariance matrices are compared over all occasions");
             needs_arms(reader, node, design, "compares arms")?;
             (ScreenKind::EqualCovarianceMatrices, vec![id.to_owned()])
         }
-        Looks::AtVariances => {
+        LooksAt::Variances => {
             misplaced(reader, fields, "of", "variances are compared at every occasion");
             needs_arms(reader, node, design, "compares arms")?;
             let method = reader.required(
@@ -73,14 +75,14 @@ pub(super) fn screen(
                 choice(reader, method, references, "`method`", &mut |node| reader.word(node, "`method` of equal variances", &words, &[]))?;
             (ScreenKind::EqualVariances { method }, each_occasion())
         }
-        Looks::AtNormality => {
+        LooksAt::Normality => {
             misplaced(reader, fields, "method", "normality is looked at by Shapiro and Wilk's W");
             misplaced(reader, fields, "of", "residuals are looked at on every occasion and on adjacent differences");
             let mut names = each_occasion();
             names.extend((1..design.occasions()).map(|later| format!("{id} / {} vs {}", of_occasion(later - 1), of_occasion(later))));
             (ScreenKind::NormalResiduals, names)
         }
-        Looks::AtOutliers => {
+        LooksAt::Outliers => {
             misplaced(reader, fields, "of", "values are looked at on every occasion");
             let method = reader.required(
                 fields,
@@ -97,7 +99,7 @@ pub(super) fn screen(
             let names = if method == OutlyingMethod::StudentizedResiduals { each_occasion() } else { vec![id.to_owned()] };
             (ScreenKind::OutlyingValues { method: Choice::Fixed(method) }, names)
         }
-        Looks::AtMissingness => {
+        LooksAt::Missingness => {
             misplaced(reader, fields, "method", "missing values are counted");
             misplaced(reader, fields, "of", "missing values are counted at every occasion");
             let names = (0..design.cells())
@@ -117,13 +119,13 @@ pub(super) fn screen(
 }
 
 #[derive(Clone, Copy)]
-enum Looks {
-    AtSphericity,
-    AtCovariances,
-    AtVariances,
-    AtNormality,
-    AtOutliers,
-    AtMissingness,
+enum LooksAt {
+    Sphericity,
+    Covariances,
+    Variances,
+    Normality,
+    Outliers,
+    Missingness,
 }
 
 /// The size of a studentized residual.
@@ -189,4 +191,3 @@ fn sphericity_of(reader: &Reader<'_>, fields: &Fields<'_>, context: &Context<'_>
     }
     Some(chosen.into_iter().map(|place| within[place].name.clone()).collect())
 }
-

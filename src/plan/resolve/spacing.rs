@@ -53,7 +53,13 @@ impl<'n> Spacing<'n> {
     /// Says where `spacing` is given and no trend uses it.
     pub fn has_a_use(&self, reader: &Reader<'_>) {
         if let Some(entry) = self.entry.filter(|_| !self.used.get()) {
-            reader.error("misplaced-key", entry.key_span, "`spacing` has no use here", "here", "only the split `trends` needs it; remove it");
+            reader.error(
+                "misplaced-key",
+                entry.key_span,
+                "`spacing` has no use here",
+                "here",
+                "only the split `trends` needs it; remove it",
+            );
         }
     }
 }

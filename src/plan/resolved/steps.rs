@@ -394,9 +394,7 @@ impl FactorPart {
             FactorPart::Average | FactorPart::Whole | FactorPart::Trend { .. } => true,
             FactorPart::Hold(held) => held == level,
             FactorPart::AgainstLater(first) => place(level) >= place(first),
-            FactorPart::Weights(weights) | FactorPart::Mean(weights) => {
-                weights.iter().any(|one| one.level == level && one.weight != 0.0)
-            }
+            FactorPart::Weights(weights) | FactorPart::Mean(weights) => weights.iter().any(|one| one.level == level && one.weight != 0.0),
         }
     }
 }
@@ -418,7 +416,6 @@ pub struct Favours {
     /// Level favoured by an estimate below zero.
     pub below: String,
 }
-
 
 /// A choice whose fixed value stands as such, as it did before choices of this key could have cases.
 mod plain_where_fixed {

@@ -47,13 +47,19 @@ fn paint(svg: &mut String, result: &FamilyResult, states: &[(String, Vec<f64>)])
     let x = |column: usize| (left + COLUMN * column as u32 + COLUMN / 2) as i32;
     let y = |row: usize| (top + ROW * row as u32 + ROW / 2) as i32;
     for (row, member) in result.members.iter().enumerate() {
-        area.draw(&PathElement::new(vec![(12, y(row) + ROW as i32 / 2), (size.0 as i32 - 12, y(row) + ROW as i32 / 2)], GRID.stroke_width(1))).ok()?;
+        area.draw(&PathElement::new(
+            vec![(12, y(row) + ROW as i32 / 2), (size.0 as i32 - 12, y(row) + ROW as i32 / 2)],
+            GRID.stroke_width(1),
+        ))
+        .ok()?;
         area.draw(&Text::new(shorten(member, 40), (left as i32 - 12, y(row)), style(HPos::Right))).ok()?;
     }
     for (column, (name, weights)) in states.iter().enumerate() {
         area.draw(&Text::new(name.clone(), (x(column), top as i32 / 2), style(HPos::Center))).ok()?;
         for (row, weight) in weights.iter().enumerate() {
-            let done = result.updates[..column.min(result.updates.len())].iter().any(|update| update.significant && update.member == result.members[row]);
+            let done = result.updates[..column.min(result.updates.len())]
+                .iter()
+                .any(|update| update.significant && update.member == result.members[row]);
             let centre = (x(column), y(row));
             if done {
                 area.draw(&Circle::new(centre, 12, colour(2).stroke_width(2))).ok()?;
@@ -64,7 +70,12 @@ fn paint(svg: &mut String, result: &FamilyResult, states: &[(String, Vec<f64>)])
             }
             let text = if done { "done".to_owned() } else { significant(*weight, 3) };
             let below = if done { (centre.0 + 34, centre.1) } else { (centre.0 + 38, centre.1) };
-            area.draw(&Text::new(text, below, ("sans-serif", 12).into_text_style(&area).color(&INK).pos(Pos::new(HPos::Center, VPos::Center)))).ok()?;
+            area.draw(&Text::new(
+                text,
+                below,
+                ("sans-serif", 12).into_text_style(&area).color(&INK).pos(Pos::new(HPos::Center, VPos::Center)),
+            ))
+            .ok()?;
         }
     }
     area.present().ok()?;

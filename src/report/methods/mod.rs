@@ -104,9 +104,10 @@ pub(super) fn methods(input: &ReportInput<'_>) -> Vec<Method> {
                     _ => {}
                 }
             }
-            Action::Estimate(Estimate::VarianceExplained { .. }) => {
-                add("Variance explained: partial and generalized eta squared, omega squared", "Olejnik & Algina 2003; Steiger 2004; Hays 1963")
-            }
+            Action::Estimate(Estimate::VarianceExplained { .. }) => add(
+                "Variance explained: partial and generalized eta squared, omega squared",
+                "Olejnik & Algina 2003; Steiger 2004; Hays 1963",
+            ),
             Action::Estimate(Estimate::Differences { .. }) => {
                 add("Differences of means in the outcome's unit: interval of Student's t", "common practice")
             }

@@ -8,9 +8,10 @@ pub(super) fn methods(measure: Measure, interval: &str, add: &mut dyn FnMut(&str
         Measure::StandardizedDifference => {
             add("Standardized difference: second minus first arm over the standardizer", "Hedges 1981; Glass 1976; Bonett 2008")
         }
-        Measure::DifferenceInStandardizedChange => {
-            add("Difference in standardized change: d of pretest, posttest and control, with the pooled standard deviation before", "Morris 2008")
-        }
+        Measure::DifferenceInStandardizedChange => add(
+            "Difference in standardized change: d of pretest, posttest and control, with the pooled standard deviation before",
+            "Morris 2008",
+        ),
         Measure::ProbabilityOfSuperiority => {
             add("Probability of superiority, ties counted half", "Mann & Whitney 1947; DeLong, DeLong & Clarke-Pearson 1988")
         }

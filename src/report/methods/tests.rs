@@ -27,15 +27,19 @@ pub(super) fn methods(test: &Test, method: &str, add: &mut dyn FnMut(&str, &str)
         "Maxwell & Delaney 2004",
     );
     if !test.covariates.is_empty() {
-        add("Covariates centred at the mean of the subjects analysed; one slope per occasion, common to the arms", "Maxwell & Delaney 2004");
+        add(
+            "Covariates centred at the mean of the subjects analysed; one slope per occasion, common to the arms",
+            "Maxwell & Delaney 2004",
+        );
     }
     if matches!(test.sides, Sides::One { .. }) {
         add("One-sided tests: the tail that the plan names; interval at 1 - 2 times the level", "common practice");
     }
     match test.kind {
-        TestKind::Equivalence => {
-            add("Equivalence: two one-sided tests, each at the level; the larger p counts; interval at 1 - 2 times the level", "Schuirmann 1987")
-        }
+        TestKind::Equivalence => add(
+            "Equivalence: two one-sided tests, each at the level; the larger p counts; interval at 1 - 2 times the level",
+            "Schuirmann 1987",
+        ),
         TestKind::NonInferiority => {
             add("Non-inferiority: one one-sided test against the margin; interval at 1 - 2 times the level", "common practice")
         }

@@ -57,7 +57,6 @@ pub(super) fn explained(step: &StepResult) -> Table {
     table
 }
 
-
 /// Differences in the outcome's unit.
 pub(super) fn differences(step: &StepResult, unit: &str) -> Table {
     let head = if unit.is_empty() { "#difference".to_owned() } else { format!("#difference ({})", markdown(unit)) };
@@ -137,12 +136,17 @@ pub(super) fn comparisons(step: &StepResult, unit: &str) -> Table {
 
 /// What a bootstrap rests on.
 fn bootstrap_note(step: &StepResult, table: &mut Table) {
-    let of = |key: &str| step.results.iter().filter_map(|entry| entry.detail(key)).map(|value| value.get()).fold(None, |most: Option<f64>, value| {
-        Some(most.map_or(value, |most| most.max(value)))
-    });
+    let of = |key: &str| {
+        step.results
+            .iter()
+            .filter_map(|entry| entry.detail(key))
+            .map(|value| value.get())
+            .fold(None, |most: Option<f64>, value| Some(most.map_or(value, |most| most.max(value))))
+    };
     if let Some(resamples) = of("resamples") {
         let degenerate = of("degenerate_resamples").unwrap_or(0.0);
-        let left_out = if degenerate > 0.0 { format!(", at most {degenerate:.0} of them without a value and left out") } else { String::new() };
+        let left_out =
+            if degenerate > 0.0 { format!(", at most {degenerate:.0} of them without a value and left out") } else { String::new() };
         table.notes.push(format!("{resamples:.0} resamples{left_out}."));
     }
 }

@@ -36,9 +36,8 @@ fn possible_numbers(levels: usize) -> Vec<usize> {
     // numbers[n] holds what is possible with n means.
     let mut numbers: Vec<Vec<usize>> = vec![vec![0]];
     for means in 1..=levels {
-        let mut found: Vec<usize> = (1..=means)
-            .flat_map(|group| numbers[means - group].iter().map(move |rest| rest + group * (group - 1) / 2))
-            .collect();
+        let mut found: Vec<usize> =
+            (1..=means).flat_map(|group| numbers[means - group].iter().map(move |rest| rest + group * (group - 1) / 2)).collect();
         found.sort_unstable();
         found.dedup();
         numbers.push(found);
@@ -57,7 +56,8 @@ mod tests {
         for (levels, divisors) in wanted {
             let pairs = levels * (levels - 1) / 2;
             let possible = possible_numbers(levels);
-            let found: Vec<usize> = (0..pairs).map(|rank| *possible.iter().rev().find(|number| **number <= pairs - rank).unwrap()).collect();
+            let found: Vec<usize> =
+                (0..pairs).map(|rank| *possible.iter().rev().find(|number| **number <= pairs - rank).unwrap()).collect();
             assert_eq!(found, divisors, "{levels} levels");
         }
     }

@@ -1,6 +1,6 @@
 use super::contrast::Hypothesis;
-use super::univariate::{ErrorTerm, UnivariateTest, fitted_cells, hypothesis_root, probability, test_univariate};
 use super::sphericity::Correction;
+use super::univariate::{ErrorTerm, UnivariateTest, fitted_cells, hypothesis_root, probability, test_univariate};
 use crate::stats::dist::fisher;
 use crate::stats::linear::{DoubleDouble, Matrix, symmetric_eigen};
 use crate::stats::model::{Moments, Refusal};
@@ -78,8 +78,5 @@ fn scaled(weights: &[DoubleDouble]) -> Vec<DoubleDouble> {
     let first = weights.iter().find(|weight| size(weight) >= largest * (1.0 - 1e-12));
     let sign = if first.is_some_and(|weight| weight.value() < 0.0) { -DoubleDouble::ONE } else { DoubleDouble::ONE };
     let positive: DoubleDouble = weights.iter().map(|&weight| weight * sign).filter(|weight| weight.value() > 0.0).sum();
-    weights
-        .iter()
-        .map(|weight| if size(weight) <= NEGLIGIBLE * largest { DoubleDouble::ZERO } else { *weight * sign / positive })
-        .collect()
+    weights.iter().map(|weight| if size(weight) <= NEGLIGIBLE * largest { DoubleDouble::ZERO } else { *weight * sign / positive }).collect()
 }

@@ -82,11 +82,8 @@ pub fn test_multivariate(
     let root = hypothesis_root(moments, hypothesis, &basis, &fitted)?.root;
     let nothing = root.multiply(&Matrix::identity(root.columns())).sum_of_squares().value() <= residue(moments, hypothesis);
     let scaled = scale.solve_lower(&root.transpose());
-    let product = if scaled.rows() <= scaled.columns() {
-        scaled.multiply(&scaled.transpose())
-    } else {
-        scaled.transpose().multiply(&scaled)
-    };
+    let product =
+        if scaled.rows() <= scaled.columns() { scaled.multiply(&scaled.transpose()) } else { scaled.transpose().multiply(&scaled) };
     let zero = DoubleDouble::ZERO;
     let roots: Vec<DoubleDouble> =
         symmetric_eigen(&product).values.into_iter().map(|root| if nothing || root.value() < 0.0 { zero } else { root }).collect();

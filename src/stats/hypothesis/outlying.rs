@@ -53,7 +53,8 @@ pub fn studentized_residuals(sample: &Sample<'_>, moments: &Moments, occasion: u
         .map(|(subject, cell)| {
             let count = DoubleDouble::from(moments.cells()[cell].subjects);
             let leverage = DoubleDouble::ONE - DoubleDouble::ONE / count;
-            let residual = DoubleDouble::from(sample.values[subject * moments.occasions() + occasion]) - moments.cells()[cell].mean[occasion];
+            let residual =
+                DoubleDouble::from(sample.values[subject * moments.occasions() + occasion]) - moments.cells()[cell].mean[occasion];
             let own = residual.square() / leverage;
             let rest = (ss - own) / DoubleDouble::from(error.df - 1);
             if rest.value() <= 1e-24 * ss.value() {

@@ -168,7 +168,12 @@ pub(super) struct HypothesisRoot {
 }
 
 /// For any combinations W of occasions (occasions by columns), M itself or another basis of its space.
-pub(super) fn hypothesis_root(moments: &Moments, hypothesis: &Hypothesis, within: &Matrix, fitted: &[bool]) -> Result<HypothesisRoot, Refusal> {
+pub(super) fn hypothesis_root(
+    moments: &Moments,
+    hypothesis: &Hypothesis,
+    within: &Matrix,
+    fitted: &[bool],
+) -> Result<HypothesisRoot, Refusal> {
     let between = hypothesis.between();
     assert_eq!(between.columns(), moments.cells().len(), "the hypothesis and the data have the same cells");
     let mut covariance = Matrix::zeros(between.rows(), between.rows());

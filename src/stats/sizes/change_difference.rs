@@ -57,7 +57,9 @@ pub fn change_difference_interval(groups: &TwoChanges, level: f64) -> Result<(f6
     }
     let r = groups.correlation.filter(|r| *r < 1.0);
     let r = r.ok_or_else(|| {
-        Refusal::new("Morris's variance needs the correlation of the two occasions, below 1; here there is none, or they correlate perfectly")
+        Refusal::new(
+            "Morris's variance needs the correlation of the two occasions, below 1; here there is none, or they correlate perfectly",
+        )
     })?;
     let [n1, n2] = groups.n.map(|n| n as f64);
     let h = (n1 + n2) / (n1 * n2);

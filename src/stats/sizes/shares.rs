@@ -87,7 +87,13 @@ pub struct ReliableChange {
 /// assert!((found.standard_error_of_difference - 4.743).abs() < 5e-4);
 /// assert_eq!((found.improved, found.unchanged, found.deteriorated), (1, 0, 0));
 /// ```
-pub fn reliable_change(changes: &[(f64, f64)], s: f64, reliability: f64, level: f64, higher_is_better: bool) -> Result<ReliableChange, Refusal> {
+pub fn reliable_change(
+    changes: &[(f64, f64)],
+    s: f64,
+    reliability: f64,
+    level: f64,
+    higher_is_better: bool,
+) -> Result<ReliableChange, Refusal> {
     if !(reliability > 0.0 && reliability < 1.0) {
         return Err(Refusal::new(format!("a reliability lies between 0 and 1; it is {reliability}")));
     }

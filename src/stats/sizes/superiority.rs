@@ -33,8 +33,8 @@ pub fn superiority(first: &[f64], second: &[f64]) -> Result<Superiority, Refusal
     let above = placements(&second, &first);
     let below = placements(&first, &second);
     let p = mean(&above);
-    let variance = (first.len() > 1 && second.len() > 1)
-        .then(|| variance_of(&above) / second.len() as f64 + variance_of(&below) / first.len() as f64);
+    let variance =
+        (first.len() > 1 && second.len() > 1).then(|| variance_of(&above) / second.len() as f64 + variance_of(&below) / first.len() as f64);
     Ok(Superiority { p, variance })
 }
 
@@ -47,7 +47,18 @@ pub fn superiority_of_change(changes: &[f64]) -> Result<Superiority, Refusal> {
         return Err(Refusal::new("a probability of superiority needs subjects"));
     }
     let changes = sorted(changes)?;
-    let scores: Vec<f64> = changes.iter().map(|&change| if change > 0.0 { 1.0 } else if change == 0.0 { 0.5 } else { 0.0 }).collect();
+    let scores: Vec<f64> = changes
+        .iter()
+        .map(|&change| {
+            if change > 0.0 {
+                1.0
+            } else if change == 0.0 {
+                0.5
+            } else {
+                0.0
+            }
+        })
+        .collect();
     let variance = (scores.len() > 1).then(|| variance_of(&scores) / scores.len() as f64);
     Ok(Superiority { p: mean(&scores), variance })
 }

@@ -8,6 +8,9 @@ use crate::results::Entry;
 use crate::stats::resample::{ArmMoments, ArmRows, BcaInterval, Resamples, Spread, bca_of_moments, bca_of_rows};
 use crate::stats::sizes::Refusal;
 
+/// A statistic of the scores of each cell.
+pub(super) type OfScores<'s> = dyn Fn(&[Vec<Scores>]) -> Result<f64, Refusal> + Sync + 's;
+
 /// What an interval asks for.
 #[derive(Clone, Copy)]
 pub(in crate::execute::steps) struct Bootstrap<'b> {
@@ -30,12 +33,7 @@ impl Bootstrap<'_> {
 }
 
 /// The interval of a statistic of whole rows.
-pub(super) fn of_rows(
-    asked: &Bootstrap<'_>,
-    groups: &Groups,
-    statistic: &(dyn Fn(&[Vec<Scores>]) -> Result<f64, Refusal> + Sync),
-    entry: &mut Entry,
-) -> Result<(f64, f64), String> {
+pub(super) fn of_rows(asked: &Bootstrap<'_>, groups: &Groups, statistic: &OfScores<'_>, entry: &mut Entry) -> Result<(f64, f64), String> {
     let sizes: Vec<usize> = groups.rows.iter().map(Vec::len).collect();
     let of_picks = |picks: &[Vec<u32>], out: &mut [f64]| {
         let drawn: Vec<Vec<Scores>> =
@@ -55,7 +53,14 @@ pub(in crate::execute::steps) fn of_pair(
 ) -> Result<(f64, f64), String> {
     let arm = vec![0; pairs.len() / 2];
     let of_moments = |arms: &[ArmMoments], out: &mut [f64]| out[0] = statistic(&arms[0]);
-    let found = bca_of_moments(&ArmRows { values: pairs, occasions: 2, arm: &arm, arms: 1, kept: None }, Spread::Covariances, 1, &of_moments, &asked.options()?).map_err(|refusal| refusal.to_string())?;
+    let found = bca_of_moments(
+        &ArmRows { values: pairs, occasions: 2, arm: &arm, arms: 1, kept: None },
+        Spread::Covariances,
+        1,
+        &of_moments,
+        &asked.options()?,
+    )
+    .map_err(|refusal| refusal.to_string())?;
     only(found, entry)
 }
 

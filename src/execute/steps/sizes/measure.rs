@@ -2,7 +2,7 @@
 
 use super::super::put as put_number;
 use super::super::sample::Sample;
-use super::bootstrap::{Bootstrap, of_rows};
+use super::bootstrap::{Bootstrap, OfScores, of_rows};
 use super::groups::{Groups, Scores};
 use super::{Chosen, count};
 use crate::canon::number::Finite;
@@ -11,9 +11,9 @@ use crate::plan::resolved::{DifferenceStandardizer, Hypothesis, IntervalMethod, 
 use crate::results::{Detail, Entry};
 use crate::stats::linear::DoubleDouble;
 use crate::stats::sizes::{
-    GroupInterval, GroupStandardizer, GroupSummary, Refusal, Share, Superiority, TwoChanges, change_difference,
-    change_difference_interval, difference_of_shares, hedges_j_approximate, hedges_j_exact, reaches, reliable_change, robust_change,
-    robust_difference, standardized_difference, standardized_difference_interval, superiority, superiority_of_change,
+    GroupInterval, GroupStandardizer, GroupSummary, Refusal, Share, Superiority, TwoChanges, change_difference, change_difference_interval,
+    difference_of_shares, hedges_j_approximate, hedges_j_exact, reaches, reliable_change, robust_change, robust_difference,
+    standardized_difference, standardized_difference_interval, superiority, superiority_of_change,
 };
 
 /// Puts the measure of an item into its entry.
@@ -53,12 +53,7 @@ fn put_limits(entry: &mut Entry, found: Option<Result<Limits, String>>) {
     }
 }
 
-fn bootstrapped(
-    chosen: &Chosen<'_>,
-    groups: &Groups,
-    entry: &mut Entry,
-    statistic: &(dyn Fn(&[Vec<Scores>]) -> Result<f64, Refusal> + Sync),
-) -> Result<Limits, String> {
+fn bootstrapped(chosen: &Chosen<'_>, groups: &Groups, entry: &mut Entry, statistic: &OfScores<'_>) -> Result<Limits, String> {
     let asked = Bootstrap { resamples: chosen.comparison.resamples, level: chosen.comparison.level, identity: &groups.identity };
     of_rows(&asked, groups, statistic, entry).map(|(lower, upper)| (lower, upper, None))
 }
@@ -173,9 +168,7 @@ fn in_change(chosen: &Chosen<'_>, groups: &Groups, entry: &mut Entry) -> Result<
                 .map(|(lower, upper, error)| (lower, upper, Some(error)))
                 .map_err(|refusal| refusal.reason),
         ),
-        IntervalMethod::Bca => {
-            Some(bootstrapped(chosen, groups, entry, &|rows| change_difference(&changes(rows)).map(|found| found.d)))
-        }
+        IntervalMethod::Bca => Some(bootstrapped(chosen, groups, entry, &|rows| change_difference(&changes(rows)).map(|found| found.d))),
         _ => None,
     };
     put_limits(entry, limits);
@@ -194,9 +187,9 @@ fn of_superiority(chosen: &Chosen<'_>, groups: &Groups, entry: &mut Entry) -> Re
     let found = superior(&groups.rows).map_err(|refusal| refusal.reason)?;
     entry.estimate = Finite::new(found.p);
     let limits = match chosen.method {
-        IntervalMethod::Logit => Some(
-            found.logit_interval(chosen.comparison.level).map(|(lower, upper)| (lower, upper, None)).map_err(|refusal| refusal.reason),
-        ),
+        IntervalMethod::Logit => {
+            Some(found.logit_interval(chosen.comparison.level).map(|(lower, upper)| (lower, upper, None)).map_err(|refusal| refusal.reason))
+        }
         IntervalMethod::Bca => Some(bootstrapped(chosen, groups, entry, &|rows| superior(rows).map(|found| found.p))),
         _ => None,
     };
@@ -221,8 +214,7 @@ fn robust(chosen: &Chosen<'_>, groups: &Groups, entry: &mut Entry) -> Result<(),
 fn responders(chosen: &Chosen<'_>, groups: &Groups, entry: &mut Entry) -> Result<(), String> {
     let amount = chosen.comparison.reaching.unwrap_or(0.0);
     let responds = |row: &&Scores| reaches(row.earlier, row.later, amount, chosen.higher_is_better);
-    let shares: Vec<Share> =
-        groups.rows.iter().map(|rows| Share { count: rows.iter().filter(responds).count(), n: rows.len() }).collect();
+    let shares: Vec<Share> = groups.rows.iter().map(|rows| Share { count: rows.iter().filter(responds).count(), n: rows.len() }).collect();
     let level = chosen.comparison.level;
     let wanted = chosen.method == IntervalMethod::Newcombe;
     entry.details.insert("responders".to_owned(), Detail::Numbers(shares.iter().map(|share| count(share.count)).collect()));
@@ -258,7 +250,12 @@ fn reliable(
     let (mut squares, mut df) = (0.0, 0.0);
     for cell in 0..design.cells() {
         let mut alone = item.clone();
-        alone.between = design.between.iter().zip(design.cell_levels(cell)).map(|(_, level)| crate::plan::resolved::FactorPart::Hold(level.to_owned())).collect();
+        alone.between = design
+            .between
+            .iter()
+            .zip(design.cell_levels(cell))
+            .map(|(_, level)| crate::plan::resolved::FactorPart::Hold(level.to_owned()))
+            .collect();
         let found = Groups::of(design, trial, sample, &alone).map_err(|refusal| crate::execute::words::refusal(&refusal, design))?;
         let earlier: Vec<f64> = found.rows[0].iter().map(|row| row.earlier).collect();
         if earlier.len() > 1 {

@@ -14,7 +14,9 @@ use crate::canon::number::Finite;
 use crate::execute::machine::{Machine, Raw, setting};
 use crate::execute::verdict::Direction;
 use crate::execute::words;
-use crate::plan::resolved::{self, CorrectionRule, Criterion, Design, ErrorTerm, Factor, Hypothesis, Method, Sides, Test, TestKind, Weights};
+use crate::plan::resolved::{
+    self, CorrectionRule, Criterion, Design, ErrorTerm, Factor, Hypothesis, Method, Sides, Test, TestKind, Weights,
+};
 use crate::results::{Entry, ErrorStratum, Matrices};
 use crate::stats::hypothesis::{self as engine, FactorPart, Part, Weighting};
 use crate::stats::linear::Matrix;
@@ -51,7 +53,12 @@ pub(crate) fn parts(factors: &[Factor], parts: &[resolved::FactorPart]) -> Vec<F
 }
 
 /// A hypothesis in matrices.
-pub(crate) fn lowered(design: &Design, hypothesis: &Hypothesis, weights: Weights, moments: &Moments) -> Result<engine::Hypothesis, Refusal> {
+pub(crate) fn lowered(
+    design: &Design,
+    hypothesis: &Hypothesis,
+    weights: Weights,
+    moments: &Moments,
+) -> Result<engine::Hypothesis, Refusal> {
     let sizes = moments.cell_sizes();
     let weighting = match weights {
         Weights::Equal => Weighting::Equal,

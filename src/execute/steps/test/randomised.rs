@@ -24,7 +24,8 @@ pub(super) fn test(machine: &Machine<'_, '_>, case: &Case<'_>, sample: &Sample<'
     };
     let error = term(case.chosen.error);
     let question = Question { hypothesis: case.lowered, error, side };
-    let deals = Deals { asked, key: key("randomisation", asked, &[case.lowered], &[case.chosen.error]), threads: crate::execute::deals::threads() };
+    let deals =
+        Deals { asked, key: key("randomisation", asked, &[case.lowered], &[case.chosen.error]), threads: crate::execute::deals::threads() };
     let tested = if sample.covariates.is_empty() {
         let found = randomisation(&dealing.data(), &[question], &deals);
         found.and_then(|mut found| found.swap_remove(0))
@@ -61,7 +62,9 @@ pub(super) fn test(machine: &Machine<'_, '_>, case: &Case<'_>, sample: &Sample<'
     let (value, standard_error) = (estimate.value, estimate.standard_error);
     let compared = Compared { estimate: value, standard_error, df: single.df2, two_sided: tested.p };
     compared.put_estimate(case, entry);
-    entry.details.insert("interval_note".to_owned(), Detail::Text("its interval is that of the t distribution, not of the deals".to_owned()));
+    entry
+        .details
+        .insert("interval_note".to_owned(), Detail::Text("its interval is that of the t distribution, not of the deals".to_owned()));
     let direction = one_side(&case.chosen.test.sides, case.hypothesis);
     match direction {
         None => compared.put_interval(entry, case.chosen.level / 2.0, 1.0 - case.chosen.level),

@@ -116,4 +116,3 @@ fn put_epsilons(details: &mut BTreeMap<String, Detail>, epsilons: &Epsilons) {
         details.insert("epsilon_refused".to_owned(), Detail::Text(why.join("; ")));
     }
 }
-
