@@ -11,6 +11,9 @@ use crate::stats::hypothesis::{Distance, Sample as Residuals, mahalanobis_distan
 use crate::stats::linear::DoubleDouble;
 use crate::stats::model::Refusal;
 
+/// Of values this close, relatively, the first subject's counts as the largest.
+const TIE: f64 = 1e-9;
+
 /// Normality of the residuals at an occasion, or, after the last one, of those of adjacent differences.
 pub(super) fn normality(machine: &Machine<'_, '_>, reference: &str, place: usize, sample: &Sample<'_>) -> Entry {
     let (design, trial) = (&machine.program.plan.design, machine.samples.trial);
@@ -77,7 +80,7 @@ pub(super) fn outlying(
                 let furthest = distances
                     .iter()
                     .copied()
-                    .reduce(|far, other| if other.value.abs() > far.value.abs() { other } else { far })
+                    .reduce(|far, other| if other.value.abs() > far.value.abs() * (1.0 + TIE) { other } else { far })
                     .ok_or(Refusal::NoErrorDf)?;
                 Ok((distances, furthest, count))
             });
