@@ -97,8 +97,12 @@ fn the_order_of_rows_moves_nothing() {
     let mut shuffled = rows();
     shuffled.reverse();
     shuffled.swap(3, 20);
-    let (one, other) = (ran(&rows()).0, ran(&shuffled).0);
-    assert_eq!(one["steps"], other["steps"]);
+    let (mut one, mut other) = (ran(&rows()).0, ran(&shuffled).0);
+    for results in [&mut one, &mut other] {
+        // The chain of decisions starts from the hash of the file.
+        results["steps"].as_array_mut().unwrap().iter_mut().for_each(|step| drop(step["decision"].take()));
+    }
+    assert!(one["steps"] == other["steps"], "the steps differ");
     assert_eq!(one["data"]["content"], other["data"]["content"]);
     assert_ne!(one["data"]["sha256"], other["data"]["sha256"]);
 }

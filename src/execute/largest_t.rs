@@ -55,6 +55,7 @@ pub(crate) fn judge(machine: &Machine<'_, '_>, family: usize) -> Result<Judged, 
     let mut judged = Judged::default();
     let mut bound = 0.0_f64;
     let mut exact = true;
+    let mut reached = true;
     for (slot, entry) in program.families[family].iter().zip(&entries) {
         let t = number(entry, "t")?;
         let found = if one_sided {
@@ -65,6 +66,7 @@ pub(crate) fn judge(machine: &Machine<'_, '_>, family: usize) -> Result<Judged, 
         };
         bound = bound.max(found.error_bound);
         exact &= found.exact;
+        reached &= found.reached;
         // The joint tail is never below the member's own.
         let own = entry.p.map_or(0.0, |p| p.get());
         judged.adjusted.push(Some(found.p.max(own).min(1.0)));
@@ -78,6 +80,9 @@ pub(crate) fn judge(machine: &Machine<'_, '_>, family: usize) -> Result<Judged, 
     } else {
         format!("probabilities by quasi-Monte Carlo, error bound {}", significant(bound, 2))
     });
+    if !reached || !critical.reached {
+        judged.notes.push("the points ran out before the accuracy aimed at was reached; the bound is the one reached".to_owned());
+    }
     if !common {
         judged.notes.push(
             "approximate: the members have no common error, so that their correlations are estimated and the smallest df counts".to_owned(),
