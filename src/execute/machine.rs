@@ -103,6 +103,7 @@ impl<'a, 'w> Machine<'a, 'w> {
 
     fn step(&mut self, number: usize) {
         let plan_step = &self.program.plan.steps[number];
+        self.witness.begins(&plan_step.id);
         let mut result = steps::blank(plan_step);
         if let Some(reason) = self.closed_gate(number, &mut result) {
             result.state = State::NotRun;
