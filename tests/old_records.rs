@@ -16,7 +16,11 @@ fn copied(from: &Path, to: &Path) {
     for entry in std::fs::read_dir(from).unwrap() {
         let entry = entry.unwrap();
         let target = to.join(entry.file_name());
-        if entry.file_type().unwrap().is_dir() { copied(&entry.path(), &target) } else { drop(std::fs::copy(entry.path(), target).unwrap()) }
+        if entry.file_type().unwrap().is_dir() {
+            copied(&entry.path(), &target)
+        } else {
+            drop(std::fs::copy(entry.path(), target).unwrap())
+        }
     }
 }
 

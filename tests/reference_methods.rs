@@ -284,9 +284,7 @@ fn model_holds(reference: &Reference, name: &str, moments: &Moments, hypothesis:
     reference.holds(&format!("{name}/univariate/F"), test.f);
     reference.holds(&format!("{name}/univariate/df1"), test.df1);
     reference.holds(&format!("{name}/univariate/df2"), test.df2);
-    for (what, correction) in
-        [("p", Correction::None), ("p_GG", Correction::GreenhouseGeisser), ("p_HF", Correction::HuynhFeldt)]
-    {
+    for (what, correction) in [("p", Correction::None), ("p_GG", Correction::GreenhouseGeisser), ("p_HF", Correction::HuynhFeldt)] {
         reference.holds(&format!("{name}/univariate/{what}"), test.p(correction).expect("p"));
     }
     let everyone = vec![true; moments.cells().len()];
@@ -382,10 +380,8 @@ fn an_occasion_as_covariate_of_later_ones() {
 #[test]
 fn covariates_in_other_units_and_places_change_nothing() {
     let study = Study::invented(&["z1", "z2"]);
-    let shifted = Study {
-        covariates: study.covariates.chunks(2).flat_map(|row| [row[1] * 1e-9, row[0] * 1e6 + 2e9]).collect(),
-        ..study.clone()
-    };
+    let shifted =
+        Study { covariates: study.covariates.chunks(2).flat_map(|row| [row[1] * 1e-9, row[0] * 1e6 + 2e9]).collect(), ..study.clone() };
     let [one, other] = [&study, &shifted].map(|study| study.moments().expect("moments"));
     let interaction = hypothesis(&[(3, Part::Whole)], &[(4, Part::Whole)]);
     let mean = hypothesis(&[(3, Part::Hold(1))], &[(4, Part::Hold(3))]);
@@ -393,9 +389,8 @@ fn covariates_in_other_units_and_places_change_nothing() {
         let f = [&one, &other].map(|moments| test_univariate(moments, &interaction, error_term).expect("a test").f);
         assert_close("F", f[1], f[0], 1e-12);
     }
-    let means = [&one, &other].map(|moments| {
-        test_univariate(moments, &mean, ErrorTerm::OwnOccasions).expect("a test").estimate.expect("one contrast")
-    });
+    let means = [&one, &other]
+        .map(|moments| test_univariate(moments, &mean, ErrorTerm::OwnOccasions).expect("a test").estimate.expect("one contrast"));
     assert_close("adjusted mean", means[1].value, means[0].value, 1e-12);
     assert_close("its standard error", means[1].standard_error, means[0].standard_error, 1e-12);
 }

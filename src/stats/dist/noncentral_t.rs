@@ -146,16 +146,13 @@ struct ScaleRule {
 }
 
 /// Weights of the limits' rule are left out below this: the tails looked for are not small.
-const NO_WEIGHT: f64 = 1e-13;
-
-/// How much wider than for tails the steps of the limits' rule are: the error stays at some 1e-11.
-const WIDER: f64 = 1.2;
+const NO_WEIGHT: f64 = 1e-16;
 
 /// The coarse search ends after a step of this size,
 const COARSE_STEP: f64 = 0.3;
 
 /// and the fine one after one of this size: its fourth power, times a small factor, is what is left.
-const LAST_STEP: f64 = 4e-3;
+const LAST_STEP: f64 = 1e-3;
 
 /// What a tail at some delta is, with what its derivatives need.
 struct TailHere {
@@ -188,7 +185,7 @@ impl TailHere {
 
 impl ScaleRule {
     fn new(t: f64, df: f64) -> Result<Self, DistributionError> {
-        let step = WIDER * step(t, df, 1.0);
+        let step = step(t, df, 1.0);
         let mut points = Vec::with_capacity(64);
         let mut coarse = 0;
         for centre in [0.0, step] {

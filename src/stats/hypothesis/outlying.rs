@@ -36,11 +36,12 @@ impl Sample<'_> {
 }
 
 /// Externally studentized residuals from the cell means at one occasion: e / (s_(i) sqrt(1 - 1/n)), s_(i) pooled over cells
-/// without the subject itself; Student's t with nu - 1 df (Belsley, Kuh & Welsch 1980). A subject alone in its cell has none.
+/// without the subject itself; Student's t with nu - 1 df (Belsley, Kuh & Welsch 1980). A subject alone in its cell has none. Covariates play no part.
 ///
 /// # Errors
 /// Fewer than two error df, no variance, or a residual that is all the variance there is.
 pub fn studentized_residuals(sample: &Sample<'_>, moments: &Moments, occasion: usize) -> Result<Vec<Distance>, Refusal> {
+    let moments = &moments.without_covariates();
     let column = one_occasion(moments.occasions(), occasion);
     let error = moments.error(&column, &vec![true; moments.cells().len()])?;
     let ss = error.trace()?;
@@ -68,11 +69,12 @@ pub fn studentized_residuals(sample: &Sample<'_>, moments: &Moments, occasion: u
 
 /// Squared Mahalanobis distances from the cell means over all occasions, with the covariance matrix S pooled over cells:
 /// D^2 / ((1 - 1/n) nu) has the beta distribution with b / 2 and (nu - b) / 2 (Gnanadesikan & Kettenring 1972 for one
-/// group). A subject alone in its cell has none.
+/// group). A subject alone in its cell has none. Covariates play no part.
 ///
 /// # Errors
 /// A singular pooled covariance matrix, or as many occasions as error df.
 pub fn mahalanobis_distances(sample: &Sample<'_>, moments: &Moments) -> Result<Vec<Distance>, Refusal> {
+    let moments = &moments.without_covariates();
     let occasions = moments.occasions();
     let error = moments.error(&Matrix::identity(occasions), &vec![true; moments.cells().len()])?;
     let singular = |rank| Refusal::SingularError { rank, contrasts: occasions, error_df: error.df };
