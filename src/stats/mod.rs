@@ -5,4 +5,5 @@ pub mod dist;
 pub mod hypothesis;
 pub mod linear;
 pub mod model;
+pub mod resample;
 pub mod sizes;
