@@ -65,13 +65,18 @@ impl fmt::Display for ConductError {
 impl std::error::Error for ConductError {}
 
 /// Chains decisions as they are taken.
-struct Recorder {
+struct Recorder<'w> {
+    watch: &'w mut dyn FnMut(&str),
     log: DecisionLog,
     taken: Vec<ChainedDecision>,
     failed: Option<CanonError>,
 }
 
-impl Witness for Recorder {
+impl Witness for Recorder<'_> {
+    fn begins(&mut self, step: &str) {
+        (self.watch)(step);
+    }
+
     fn take_down(&mut self, decision: Decision) -> Option<String> {
         let mut rule = decision.rule.clone();
         if let Some(rule) = rule.as_object_mut() {
@@ -92,7 +97,7 @@ impl Witness for Recorder {
 }
 
 /// Executes a sealed plan and puts what it finds into the files of a record. `unblinded` is the hash of the event after
-/// which the arms were opened; `status` is what the report says of the circumstances.
+/// which the arms were opened; `status` is what the report says of the circumstances; `watch` hears of each step as it begins.
 ///
 /// # Errors
 /// A plan that contradicts itself, a number without canonical form, or a template that does not render.
@@ -102,9 +107,10 @@ pub fn conduct(
     hashes: &DataHashes,
     unblinded: &Digest,
     status: &Status,
+    watch: &mut dyn FnMut(&str),
 ) -> Result<Conducted, ConductError> {
     let root = Chain::decisions(&plan.meaning_hash(), &hashes.data, hashes.allocation.as_ref(), unblinded);
-    let mut recorder = Recorder { log: DecisionLog::new(root), taken: Vec::new(), failed: None };
+    let mut recorder = Recorder { watch, log: DecisionLog::new(root), taken: Vec::new(), failed: None };
     let execution = Bound::new(plan, trial).map_err(ConductError::Plan)?.run(&mut recorder);
     if let Some(error) = recorder.failed {
         return Err(ConductError::Canon(error));

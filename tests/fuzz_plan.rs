@@ -2,7 +2,7 @@
 
 use aforesaid::plan::checked::compile;
 
-const PLAN: &str = include_str!("../plans/wrist-study.yaml");
+const PLANS: [&str; 2] = [include_str!("../plans/wrist-study.yaml"), include_str!("../plans/ward-noise-study.yaml")];
 
 /// A small generator with a fixed seed (SplitMix64; Steele, Lea & Flood 2014).
 struct Random(u64);
@@ -58,8 +58,8 @@ fn spoil(random: &mut Random, text: &str) -> String {
 fn spoilt_plans_get_findings_with_places() {
     let mut random = Random(20_261_201);
     let (mut sound, mut refused) = (0, 0);
-    for _ in 0..3000 {
-        let text = spoil(&mut random, PLAN);
+    for round in 0..6000 {
+        let text = spoil(&mut random, PLANS[round % 2]);
         let compilation = compile("plan.yaml", text.as_bytes());
         let lines = text.lines().count().max(1) + 1;
         for finding in &compilation.findings {
@@ -87,8 +87,8 @@ fn spoilt_plans_get_findings_with_places() {
 #[test]
 fn bytes_flipped_at_random_never_panic() {
     let mut random = Random(7);
-    for _ in 0..2000 {
-        let mut bytes = PLAN.as_bytes().to_vec();
+    for round in 0..4000 {
+        let mut bytes = PLANS[round % 2].as_bytes().to_vec();
         for _ in 0..1 + random.below(6) {
             let at = random.below(bytes.len());
             bytes[at] = random.below(256) as u8;

@@ -232,3 +232,86 @@ conclusions:
     let count = rebuilt(&record(plan, &data));
     assert_eq!(count, 2 + 4 + 12 + 3 + 1 + 4 + 3);
 }
+
+/// Invented whole numbers by a fixed rule.
+fn score(subject: usize, occasion: usize) -> usize {
+    (subject * 37 + occasion * 23 + subject * subject * (occasion + 3) * 11 + occasion * occasion * subject) % 89
+}
+
+#[test]
+fn three_factors_between_and_three_within() {
+    let levels = ["l", "h"];
+    let names: Vec<String> = (0..8).map(|at| format!("{}; {}; {}", levels[at >> 2], levels[at >> 1 & 1], levels[at & 1])).collect();
+    let columns: Vec<String> = (0..8).map(|at| format!("\"{}\": y{at}", names[at])).collect();
+    let mut data = String::from("who,a,b,c,y0,y1,y2,y3,y4,y5,y6,y7\n");
+    for subject in 0..45_usize {
+        // Cells of unequal size.
+        let cell = [0, 1, 2, 3, 4, 5, 6, 7, 0, 3, 6, 3][subject % 12];
+        let scores: Vec<String> = (0..8).map(|occasion| score(subject, occasion).to_string()).collect();
+        data.push_str(&format!("s{subject},{},{},{},{}\n", levels[cell >> 2], levels[cell >> 1 & 1], levels[cell & 1], scores.join(",")));
+    }
+    let plan = format!(
+        "plan: 1
+title: Invented
+alpha: 0.05
+missing data: complete cases
+data: {{layout: wide, subject: who, values: {{y: {{{}}}}}, allocation: in the data, arms: {{a: a, b: b, c: c}}}}
+design: {{between: {{a: [l, h], b: [l, h], c: [l, h]}}, within: {{p: [l, h], q: [l, h], r: [l, h]}}}}
+outcomes: {{y: {{}}}}
+steps:
+  - {{id: all, test: omnibus, effect: a by b by c by p by q by r}}
+  - {{id: some, test: omnibus, effect: a by c by q}}
+  - {{id: between, test: omnibus, effect: a by b by c}}
+  - {{id: within, test: omnibus, effect: p by r, role: supportive}}
+  - {{id: weighted, test: omnibus, effect: a by q, weights: observed, role: supportive}}
+  - {{id: pieces, test: partial interactions, effect: a by p, split: {{a: all pairs, p: all pairs}}, error: own occasions, role: supportive}}
+  - {{id: simple, test: simple effects, effect: a, at: p by q, error: own, role: supportive}}
+conclusions:
+  - otherwise: Described.
+",
+        columns.join(", ")
+    );
+    assert_eq!(rebuilt(&record(&plan, &data)), 5 + 1 + 4);
+}
+
+#[test]
+fn thirty_occasions_and_few_subjects() {
+    let mut data = String::from("who,arm");
+    (0..30).for_each(|occasion| data.push_str(&format!(",d{occasion}")));
+    for subject in 0..12_usize {
+        let scores: Vec<String> = (0..30).map(|occasion| score(subject, occasion).to_string()).collect();
+        data.push_str(&format!("\ns{subject},{},{}", ["usual", "extra"][subject % 2], scores.join(",")));
+    }
+    let days: Vec<String> = (0..30).map(|day| format!("d{day}")).collect();
+    let columns: Vec<String> = days.iter().map(|day| format!("{day}: {day}")).collect();
+    let plan = format!(
+        "plan: 1
+title: Invented
+alpha: 0.05
+missing data: complete cases
+data: {{layout: wide, subject: who, values: {{y: {{{}}}}}, allocation: in the data, arms: {{arm: arm}}}}
+design: {{between: {{arm: [usual, extra]}}, within: {{day: [{}]}}}}
+outcomes: {{y: {{}}}}
+steps:
+  - {{id: course, test: omnibus, effect: arm by day, correction: greenhouse-geisser}}
+  - {{id: many, test: omnibus, effect: arm by day, method: multivariate, criterion: pillai, role: supportive}}
+  - {{id: own, test: omnibus, effect: arm by day, method: welch-james, role: supportive}}
+  - {{id: trends, test: contrasts, effect: arm by day, split: {{day: trends}}, spacing: even, error: own occasions, role: supportive}}
+conclusions:
+  - otherwise: Described.
+",
+        columns.join(", "),
+        days.join(", ")
+    );
+    let results = record(&plan, &data);
+    assert_eq!(rebuilt(&results), 1);
+    let steps = results["steps"].as_array().unwrap();
+    // Univariate goes on; with 29 contrasts and 10 error df there is no multivariate test.
+    for step in &steps[1..3] {
+        assert_eq!(step["state"], "refused", "{step}");
+        assert!(step["because"].as_str().unwrap().contains("29"), "{}", step["because"]);
+    }
+    let trends = steps[3]["results"].as_array().unwrap();
+    assert_eq!(trends.len(), 29);
+    assert!(trends.iter().all(|trend| trend["state"] == "done"), "{:?}", trends.iter().find(|trend| trend["state"] != "done"));
+}

@@ -168,7 +168,7 @@ fn conduct_again(
         let (trial, _) = bind(plan.resolved(), table, allocation).map_err(|findings| messages(&findings))?;
         let seal = &state.plans.get(&ran.plan).ok_or("the plan is not as it was sealed")?.seal;
         let status = status_of(seal, &state.ledger.events, &ran.unblinded, ran.record, first.as_deref());
-        conduct(plan, &trial, &ran.hashes, &ran.unblinded, &status).map_err(|error| error.to_string())
+        conduct(plan, &trial, &ran.hashes, &ran.unblinded, &status, &mut |_| {}).map_err(|error| error.to_string())
     };
     Ok(conducted())
 }

@@ -20,6 +20,8 @@ use crate::world::{Kind, Links};
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
 use std::io::{self, Read};
 use std::path::Path;
+use std::sync::mpsc;
+use std::time::Duration;
 
 /// Work shorter than this many seconds shows no progress.
 const QUIET_SECONDS: i64 = 1;
@@ -76,7 +78,7 @@ pub(super) fn run(terminal: &Terminal<'_>, arguments: &RunArguments) -> Result<u
         _ => Some(state.record_file(terminal.world, &arguments.study, 1, "results.json")?),
     };
     let status = status_of(&seal, &state.ledger.events, &event, opened.unblinded.record_number(), first.as_deref());
-    let conducted = match conduct(&plan, &trial, &hashes, &event, &status) {
+    let conducted = match watched(terminal, |watch| conduct(&plan, &trial, &hashes, &event, &status, watch)) {
         Ok(conducted) => conducted,
         Err(error) => {
             opened.unblinded.abandon(&error.to_string())?;
@@ -227,6 +229,31 @@ pub(super) fn progress<'t>(terminal: &Terminal<'t>, path: &Path, source: Box<dyn
     }
     bar.set_message(path.display().to_string());
     Box::new(Watched { source, bar, world: terminal.world, started: terminal.world.now(), shown: false })
+}
+
+/// Shows which step is being carried out, once that takes more than a second and someone is looking.
+fn watched<T>(terminal: &Terminal<'_>, work: impl FnOnce(&mut dyn FnMut(&str)) -> T) -> T {
+    if !terminal.world.stderr_is_terminal() {
+        return work(&mut |_| {});
+    }
+    let bar = ProgressBar::with_draw_target(None, ProgressDrawTarget::hidden());
+    let (finished, waiting) = mpsc::channel::<()>();
+    std::thread::scope(|scope| {
+        let shown = bar.clone();
+        scope.spawn(move || {
+            let second = Duration::from_secs(QUIET_SECONDS.unsigned_abs());
+            if waiting.recv_timeout(second) == Err(mpsc::RecvTimeoutError::Timeout) {
+                shown.set_draw_target(ProgressDrawTarget::stderr());
+                while waiting.recv_timeout(Duration::from_millis(200)) == Err(mpsc::RecvTimeoutError::Timeout) {
+                    shown.tick();
+                }
+                shown.finish_and_clear();
+            }
+        });
+        let found = work(&mut |step| bar.set_message(format!("carrying out {step}")));
+        drop(finished);
+        found
+    })
 }
 
 struct Watched<'w> {

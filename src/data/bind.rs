@@ -62,7 +62,15 @@ pub fn bind(plan: &ResolvedPlan, table: Table, allocation: Option<Allocation>) -
             )
         })
     }));
-    let trial = Trial { subjects: table.subjects, cell, values: table.values, cells: design.cells(), occasions: design.occasions() };
+    let trial = Trial {
+        subjects: table.subjects,
+        cell,
+        values: table.values,
+        covariates: table.covariates,
+        strata: table.strata,
+        cells: design.cells(),
+        occasions: design.occasions(),
+    };
     Ok((trial, notes))
 }
 

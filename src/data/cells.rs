@@ -98,6 +98,18 @@ impl<'r> Cell<'_, '_, 'r> {
     pub fn value(&self, outcome: &Outcome, problems: &mut Problems) -> Option<f64> {
         let value = self.number(problems)?;
         let Some(value) = value else { return Some(f64::NAN) };
+        let value = self.in_bounds(value, problems)?;
+        if let Some([least, greatest]) = outcome.range
+            && !(least..=greatest).contains(&value)
+        {
+            self.outside(least, greatest, &format!("the range of `{}`", outcome.name), problems);
+            return None;
+        }
+        Some(value)
+    }
+
+    /// A number whose square can be held.
+    fn in_bounds(&self, value: f64, problems: &mut Problems) -> Option<f64> {
         if value.abs() > LARGEST || (value != 0.0 && value.abs() < SMALLEST) {
             self.finding(problems, "number-out-of-bounds", "cannot be computed with", || {
                 let large = value.abs() > LARGEST;
@@ -111,14 +123,29 @@ impl<'r> Cell<'_, '_, 'r> {
             });
             return None;
         }
-        if let Some([least, greatest]) = outcome.range
-            && !(least..=greatest).contains(&value)
-        {
-            self.outside(least, greatest, &format!("the range of `{}`", outcome.name), problems);
-            return None;
-        }
         // Zero has one form, so that equal data have equal hashes.
         Some(value + 0.0)
+    }
+
+    /// A covariate that has passed its check; NaN where it is missing.
+    pub fn covariate(&self, problems: &mut Problems) -> Option<f64> {
+        let Some(value) = self.number(problems)? else { return Some(f64::NAN) };
+        self.in_bounds(value, problems)
+    }
+
+    /// A text that says which stratum the subject belongs to.
+    pub fn stratum(&self, problems: &mut Problems) -> Option<&'r [u8]> {
+        let text = self.text();
+        if text.trim().is_empty() || self.schema.is_missing(text.trim()) {
+            self.finding(problems, "missing-stratum", "no stratum", || {
+                (
+                    format!("this row does not say which stratum its subject was randomised in: its `{}` is missing", self.column),
+                    "the plan deals arms again within it; look it up in the records of the randomisation".to_owned(),
+                )
+            });
+            return None;
+        }
+        Some(self.bytes())
     }
 
     /// Holds a cell to a check of the plan; whether there is a value.

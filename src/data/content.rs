@@ -2,7 +2,7 @@
 
 use super::table::Sorted;
 use crate::canon::hash::{Digest, Hasher};
-use crate::plan::resolved::{Design, Outcome};
+use crate::plan::resolved::ResolvedPlan;
 
 /// Stands for a missing value: the quiet NaN without payload.
 const MISSING: u64 = 0x7FF8_0000_0000_0000;
@@ -24,7 +24,11 @@ const PIECE: usize = 1 << 16;
 /// 5. for each subject, in the order of the bytes of their identifiers: the identifier; where arms were read the `u32`
 ///    number of its between cell; and for each outcome and each occasion in design order the value as the `u64` of its IEEE
 ///    754 bits, zero without a sign, a missing value as `7FF8000000000000`.
-pub(super) fn hash(design: &Design, outcomes: &[Outcome], arms: bool, table: &Sorted) -> Digest {
+///
+/// Where the plan keeps further columns (covariates, strata of the randomisation), there follow the `u32` number of them
+/// and, for each, its name and the value of every subject: a covariate as the bits of its number, a stratum as its text.
+pub(super) fn hash(plan: &ResolvedPlan, arms: bool, table: &Sorted, texts: &[Vec<Vec<u8>>]) -> Digest {
+    let (design, outcomes) = (&plan.design, &plan.outcomes);
     let mut bytes = Pieces { hasher: Hasher::new(), buffer: Vec::with_capacity(PIECE + 4096) };
     bytes.raw(b"aforesaid content 1\n");
     for factors in [if arms { design.between.as_slice() } else { &[] }, design.within.as_slice()] {
@@ -51,6 +55,20 @@ pub(super) fn hash(design: &Design, outcomes: &[Outcome], arms: bool, table: &So
             }
         }
         bytes.flush();
+    }
+    if !table.further.is_empty() {
+        let names: Vec<&str> = plan.covariate_columns().into_iter().chain(plan.strata_columns()).collect();
+        bytes.count(names.len());
+        for ((name, column), texts) in names.iter().zip(&table.further).zip(texts) {
+            bytes.text(name.as_bytes());
+            for value in column {
+                match texts.get(*value as usize) {
+                    Some(text) if !texts.is_empty() => bytes.text(text),
+                    _ => bytes.raw(&(if f64::from_bits(*value).is_nan() { MISSING } else { *value }).to_be_bytes()),
+                }
+                bytes.flush();
+            }
+        }
     }
     bytes.hasher.update(&bytes.buffer);
     bytes.hasher.finish()

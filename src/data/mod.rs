@@ -10,6 +10,7 @@ pub mod blind;
 mod blocks;
 mod cells;
 mod content;
+mod further;
 pub mod number;
 mod problems;
 mod quick;

@@ -93,6 +93,8 @@ impl<'p> Quick<'p> {
                     Field::Value { outcome, occasion, range: of.range.unwrap_or([f64::NEG_INFINITY, f64::INFINITY]) }
                 }
                 Role::Check { number, kind } => Field::Check { number, kind },
+                // Values that must agree over a subject's rows are left to the reader that can say where they do not.
+                Role::Number { .. } | Role::Text { .. } => return None,
             };
             if !matches!(fields[needed.field], Field::Skipped) {
                 return None;

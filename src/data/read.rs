@@ -3,6 +3,7 @@
 use super::blocks::{Flaw, LONGEST_LINE};
 use super::cells::{Cell, wrong_number_of_fields};
 use super::content;
+use super::further::{self, Texts};
 use super::problems::{Problems, quoted};
 use super::quick::Quick;
 use super::rows::{Broken, Row, Rows, TakeRows, each_row};
@@ -32,9 +33,11 @@ pub enum ReadArms {
 pub fn read_data(plan: &ResolvedPlan, name: &str, reader: impl Read + Send, arms: ReadArms) -> Result<Table, Vec<Diagnostic>> {
     let schema = Schema::of_data(plan, arms == ReadArms::Yes);
     let read_arms = schema.arms;
-    let read = read(schema, name, reader)?;
-    let content = content::hash(&plan.design, &plan.outcomes, read_arms, &read.sorted);
-    let Sorted { subjects, lines, values, cell } = read.sorted;
+    let mut read = read(schema, name, reader)?;
+    let texts = further::number_texts(&mut read.sorted, read.texts);
+    let content = content::hash(plan, read_arms, &read.sorted, &texts);
+    let (covariates, strata) = further::split(plan, &read.sorted);
+    let Sorted { subjects, lines, values, cell, .. } = read.sorted;
     let checked = plan
         .data
         .columns
@@ -52,6 +55,8 @@ pub fn read_data(plan: &ResolvedPlan, name: &str, reader: impl Read + Send, arms
         lines,
         values,
         cell: read_arms.then_some(cell),
+        covariates,
+        strata,
         content,
         rows: read.rows,
         checked,
@@ -67,6 +72,8 @@ pub(super) struct Contents<'p> {
     pub checked: Vec<(usize, usize)>,
     /// Columns that were not looked at.
     pub unseen: Vec<&'p str>,
+    /// For each further column the texts that it holds; none where it holds numbers.
+    pub texts: Vec<Texts>,
 }
 
 /// Reads a file of which `schema` says what it must be.
@@ -89,6 +96,9 @@ struct Reading<'p> {
     checked: Vec<(usize, usize)>,
     /// Values of the row at hand: outcome, occasion where the column says it, value.
     values: Vec<(usize, Option<usize>, f64)>,
+    /// What further columns of the row at hand say: number of the column, bits, field.
+    further: Vec<(usize, u64, usize)>,
+    texts: Vec<Texts>,
     /// Subjects of whom it was said that their arm changes.
     changed: HashSet<usize>,
 }
@@ -97,12 +107,14 @@ impl<'p> Reading<'p> {
     fn new(schema: Schema<'p>, name: &str) -> Self {
         Reading {
             problems: Problems::new(name, schema.separator),
-            gathered: Gathered::new(schema.outcomes, schema.occasions, schema.one_row, schema.arms),
+            gathered: Gathered::new(schema.outcomes, schema.occasions, schema.further, schema.one_row, schema.arms),
             header: Vec::new(),
             quick: None,
             rows: 0,
             checked: vec![(0, 0); schema.checks],
             values: Vec::new(),
+            further: Vec::new(),
+            texts: vec![Texts::new(); schema.further],
             changed: HashSet::new(),
             schema,
         }
@@ -148,6 +160,7 @@ impl<'p> Reading<'p> {
         }
         self.rows += 1;
         self.values.clear();
+        self.further.clear();
         let (mut subject, mut occasion, mut cell) = (None, Some(0), Some(0));
         for needed in &self.schema.needed {
             let at = Cell { schema: &self.schema, row, column: needed.column, field: needed.field };
@@ -160,6 +173,19 @@ impl<'p> Reading<'p> {
                 Role::Value { outcome, of, occasion } => {
                     let value = at.value(of, problems);
                     self.values.extend(value.map(|value| (outcome, occasion, value)));
+                }
+                Role::Number { further, number, kind } => {
+                    if let Some(there) = at.check(kind, problems) {
+                        let (values, missing) = &mut self.checked[number];
+                        *if there { values } else { missing } += 1;
+                        self.further.extend(at.covariate(problems).map(|value| (further, value.to_bits(), needed.field)));
+                    }
+                }
+                Role::Text { further } => {
+                    if let Some(text) = at.stratum(problems) {
+                        let id = further::id_of(&mut self.texts[further], text);
+                        self.further.push((further, id, needed.field));
+                    }
                 }
                 Role::Check { number, kind } => match at.check(kind, problems) {
                     Some(true) => self.checked[number].0 += 1,
@@ -201,6 +227,20 @@ impl<'p> Reading<'p> {
                 return;
             }
             *seen = line;
+        }
+        for (column, bits, field) in std::mem::take(&mut self.further) {
+            if !self.gathered.set_further(subject, column, bits) {
+                let first = self.gathered.lines[subject] as usize;
+                self.problems.add("column-changes", |problems| {
+                    Diagnostic::error(
+                        "column-changes",
+                        format!("subject {} has another value here than on line {first}", quoted(text_of(identifier))),
+                    )
+                    .at(problems.cell(row, field, "another value"))
+                    .at(problems.line(first, "first here"))
+                    .hint("a covariate or stratum is a trait of the subject, the same in all its rows; mend the data")
+                });
+            }
         }
         for (outcome, fixed, value) in &self.values {
             if let Some(occasion) = fixed.or(occasion) {
@@ -270,7 +310,7 @@ impl<'p> Reading<'p> {
         }
         let unseen =
             self.schema.needed.iter().filter(|needed| matches!(needed.role, Role::Unseen { .. })).map(|needed| needed.column).collect();
-        Ok(Contents { sorted: self.gathered.sorted(), rows: self.rows, checked: self.checked, unseen })
+        Ok(Contents { sorted: self.gathered.sorted(), rows: self.rows, checked: self.checked, unseen, texts: self.texts })
     }
 
     fn broken(&mut self, broken: &Broken) {

@@ -22,6 +22,10 @@ pub(super) enum Role<'p> {
     Unseen { factor: Option<&'p Factor> },
     /// Value of an outcome; at one occasion, or at that which the row names.
     Value { outcome: usize, of: &'p Outcome, occasion: Option<usize> },
+    /// A number of the subject, checked and kept as a further column.
+    Number { further: usize, number: usize, kind: &'p ColumnKind },
+    /// A text of the subject, kept as a further column.
+    Text { further: usize },
     /// Checked, and not kept.
     Check { number: usize, kind: &'p ColumnKind },
 }
@@ -48,6 +52,8 @@ pub(super) struct Schema<'p> {
     pub outcomes: usize,
     /// Number of checks in the plan.
     pub checks: usize,
+    /// Number of further columns that are kept, one value for each subject.
+    pub further: usize,
     /// Whether a subject may have only one row.
     pub one_row: bool,
     /// Whether arms are read.
@@ -91,9 +97,21 @@ impl<'p> Schema<'p> {
         if in_the_data {
             schema.needs_arms(plan);
         }
+        let covariates = plan.covariate_columns();
+        let strata = plan.strata_columns();
+        schema.further = covariates.len() + strata.len();
         for (number, check) in data.columns.iter().enumerate() {
             let unseen = in_the_data && !read_arms && data.arms.iter().any(|arm| arm.column == check.column);
-            schema.needs(&check.column, if unseen { Role::Unseen { factor: None } } else { Role::Check { number, kind: &check.kind } });
+            let covariate = covariates.iter().position(|column| *column == check.column);
+            let role = match covariate {
+                _ if unseen => Role::Unseen { factor: None },
+                Some(further) => Role::Number { further, number, kind: &check.kind },
+                None => Role::Check { number, kind: &check.kind },
+            };
+            schema.needs(&check.column, role);
+        }
+        for (place, column) in strata.into_iter().enumerate() {
+            schema.needs(column, Role::Text { further: covariates.len() + place });
         }
         schema
     }
@@ -113,6 +131,7 @@ impl<'p> Schema<'p> {
             occasions: 0,
             outcomes: 0,
             checks: 0,
+            further: 0,
             one_row: true,
             arms: false,
             missing: data.missing_values.iter().map(|text| text.trim()).collect(),

@@ -18,6 +18,10 @@ pub struct Table {
     pub values: Vec<Vec<f64>>,
     /// Between cell of each subject, where arms stand in the data and were asked for.
     pub cell: Option<Vec<u32>>,
+    /// Per column that serves as a covariate: a value for each subject, NaN where it is missing.
+    pub covariates: Vec<Vec<f64>>,
+    /// Stratum of each subject, where arms are dealt again within strata; numbered by the texts in order.
+    pub strata: Option<Vec<u32>>,
     /// Hash of the canonical table: equal where files differ only in form.
     pub content: Digest,
     /// Rows of data.
@@ -42,6 +46,9 @@ pub struct Checked {
 /// Cell of a subject whose arm is not known yet.
 pub(super) const NO_CELL: u32 = u32::MAX;
 
+/// Stands for a further column of a subject of which no row has been kept yet: a NaN that no number is.
+pub(super) const UNSAID: u64 = u64::MAX;
+
 /// What is known of the subjects so far, in the order in which they appear.
 #[derive(Default)]
 pub(super) struct Gathered {
@@ -51,6 +58,8 @@ pub(super) struct Gathered {
     pub lines: Vec<u32>,
     pub cell: Vec<u32>,
     pub values: Vec<Vec<f64>>,
+    /// Per further column: what it says of each subject, as bits, or [`UNSAID`].
+    pub further: Vec<Vec<u64>>,
     /// Line of each row by subject and occasion, zero where there is none; empty where a subject has one row.
     pub seen: Vec<u32>,
     occasions: usize,
@@ -69,9 +78,17 @@ fn is_after(one: &[u8], other: &[u8]) -> [bool; ORDERS] {
 }
 
 impl Gathered {
-    /// For so many outcomes and occasions; `one_row`: a subject has one row.
-    pub fn new(outcomes: usize, occasions: usize, one_row: bool, arms: bool) -> Self {
-        Gathered { values: vec![Vec::new(); outcomes], occasions, one_row, arms, ascending: [true; ORDERS], ..Gathered::default() }
+    /// For so many outcomes, occasions and further columns; `one_row`: a subject has one row.
+    pub fn new(outcomes: usize, occasions: usize, further: usize, one_row: bool, arms: bool) -> Self {
+        Gathered {
+            values: vec![Vec::new(); outcomes],
+            further: vec![Vec::new(); further],
+            occasions,
+            one_row,
+            arms,
+            ascending: [true; ORDERS],
+            ..Gathered::default()
+        }
     }
 
     /// How many subjects.
@@ -134,6 +151,7 @@ impl Gathered {
         if self.arms {
             self.cell.push(NO_CELL);
         }
+        self.further.iter_mut().for_each(|column| column.push(UNSAID));
         let occasions = self.occasions;
         self.values.iter_mut().for_each(|values| values.resize(values.len() + occasions, f64::NAN));
         if !self.one_row {
@@ -151,13 +169,22 @@ impl Gathered {
         *known == cell
     }
 
+    /// Sets what a further column says of a subject; whether it agrees with what was known.
+    pub fn set_further(&mut self, subject: usize, column: usize, bits: u64) -> bool {
+        let known = &mut self.further[column][subject];
+        if *known == UNSAID {
+            *known = bits;
+        }
+        *known == bits
+    }
+
     /// Everything in the order of the identifiers' bytes.
     pub fn sorted(mut self) -> Sorted {
         self.index = Index::default();
         self.seen = Vec::new();
         let Some(order) = self.order() else {
             let subjects = Subjects::from_parts(self.identifiers, self.ends);
-            return Sorted { subjects, lines: self.lines, values: self.values, cell: self.cell };
+            return Sorted { subjects, lines: self.lines, values: self.values, cell: self.cell, further: self.further };
         };
         let mut subjects = Subjects::with_capacity(self.len(), self.identifiers.len());
         order.iter().for_each(|subject| subjects.push(self.identifier(*subject as usize)));
@@ -170,7 +197,10 @@ impl Gathered {
         for values in &mut self.values {
             reorder(values, &order, self.occasions);
         }
-        Sorted { subjects, lines: self.lines, values: self.values, cell: self.cell }
+        for column in &mut self.further {
+            reorder(column, &order, 1);
+        }
+        Sorted { subjects, lines: self.lines, values: self.values, cell: self.cell, further: self.further }
     }
 
     /// Numbers of the subjects in order; `None` where they are in order already.
@@ -214,6 +244,7 @@ pub(super) struct Sorted {
     pub lines: Vec<u32>,
     pub values: Vec<Vec<f64>>,
     pub cell: Vec<u32>,
+    pub further: Vec<Vec<u64>>,
 }
 
 /// Puts rows of `width` items into an order. One copy at a time: by now the index is gone, and makes room for it.
@@ -317,7 +348,7 @@ mod tests {
     proptest! {
         #[test]
         fn sorts_by_bytes(identifiers in proptest::collection::vec("(AB-00)?[a-c]{0,3}(12345678)?[a-b\u{e9}]{1,3}", 1..60)) {
-            let mut gathered = Gathered::new(1, 2, false, true);
+            let mut gathered = Gathered::new(1, 2, 0, false, true);
             for (line, identifier) in identifiers.iter().enumerate() {
                 let known = gathered.len();
                 let subject = gathered.subject(identifier.as_bytes(), line as u32 + 2).unwrap();

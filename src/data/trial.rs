@@ -66,6 +66,12 @@ pub struct Trial {
     /// Per outcome in plan order: subjects x occasions, row by row, occasions as the design numbers them; a missing
     /// value is NaN, which never leaves the analysis of completeness.
     pub values: Vec<Vec<f64>>,
+    /// Per column that serves as a covariate, in the order of
+    /// [`covariate_columns`](crate::plan::resolved::ResolvedPlan::covariate_columns): a value for each subject, NaN where it
+    /// is missing.
+    pub covariates: Vec<Vec<f64>>,
+    /// Stratum of each subject, where arms are dealt again within strata.
+    pub strata: Option<Vec<u32>>,
     /// Number of between cells.
     pub cells: usize,
     /// Number of occasions.

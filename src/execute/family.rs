@@ -2,11 +2,11 @@
 
 use crate::canon::number::Finite;
 use crate::execute::machine::{Machine, Raw};
+use crate::execute::multiplicity;
 use crate::execute::steps::in_plan_words;
 use crate::execute::verdict::Verdict;
 use crate::plan::resolved::{Action, Control, DECISION_RULE};
 use crate::results::FamilyResult;
-use crate::stats::adjust::{Procedure, adjust};
 use serde_json::{Map, Value, json};
 
 /// Judges what the step number `step` completed.
@@ -31,8 +31,8 @@ fn judge_alone(machine: &mut Machine<'_, '_>, slot: usize) {
         return;
     };
     let level = test.level;
-    let verdict = verdict_of(machine.raw[slot], level);
-    give_verdict(machine, slot, verdict, None);
+    let verdict = verdict_of(machine.raw[slot], level, test.is_claim());
+    give_verdict(machine, slot, verdict, None, None);
     if verdict == Verdict::NotTested {
         return;
     }
@@ -43,37 +43,42 @@ fn judge_alone(machine: &mut Machine<'_, '_>, slot: usize) {
     remember(machine, place.step, hash);
 }
 
-/// Judges a family whose members are all computed; a fixed sequence is judged member by member as far as it goes.
+/// Judges a family whose members are all computed. One that judges in turn is judged as far as it goes: a member that no
+/// later p could change has its verdict at once.
 fn judge_family(machine: &mut Machine<'_, '_>, family: usize) {
     let program = machine.program;
     let members = &program.families[family];
     let plan = &program.plan.families[family];
-    let known = members.iter().take_while(|slot| machine.raw[**slot] != Raw::Waiting).count();
-    let complete = known == members.len();
-    let sequential = plan.control == Control::FixedSequence;
-    if !complete && !sequential {
+    let waiting = members.iter().filter(|slot| machine.raw[**slot] == Raw::Waiting).count();
+    let complete = waiting == 0;
+    if !complete && (!plan.control.judges_in_turn() || waiting == members.len()) {
         return;
     }
-    let p: Vec<Option<f64>> = members
-        .iter()
-        .map(|slot| match machine.raw[*slot] {
-            Raw::Tested { p, .. } => Some(p),
-            _ => None,
-        })
-        .collect();
-    let adjusted = adjust(procedure(plan.control), &p);
-    for (slot, adjusted) in members.iter().zip(&adjusted).take(known) {
-        if machine.verdicts[*slot] == Verdict::Pending {
-            let verdict = match (machine.raw[*slot], adjusted) {
-                (Raw::Tested { direction, .. }, Some(adjusted)) => verdict_of(Raw::Tested { p: *adjusted, direction }, plan.alpha),
-                (raw, _) => verdict_of(raw, plan.alpha),
-            };
-            give_verdict(machine, *slot, verdict, *adjusted);
+    let judged = multiplicity::judge(machine, family);
+    for (place, (slot, adjusted)) in members.iter().zip(&judged.adjusted).enumerate() {
+        if machine.raw[*slot] == Raw::Waiting {
+            continue;
         }
+        let settled = complete
+            || matches!(machine.raw[*slot], Raw::NotTested | Raw::Refused)
+            || adjusted.is_some_and(|adjusted| adjusted <= plan.alpha)
+            || (plan.control == Control::FixedSequence && members[..place].iter().all(|before| machine.raw[*before] != Raw::Waiting));
+        if !settled {
+            continue;
+        }
+        let verdict = match (machine.raw[*slot], adjusted, &judged.refused) {
+            (Raw::Tested { .. }, _, Some(_)) => Verdict::Refused,
+            (Raw::Tested { direction, .. }, Some(adjusted), None) => {
+                verdict_of(Raw::Tested { p: *adjusted, direction }, plan.alpha, is_claim(machine, *slot))
+            }
+            (raw, ..) => verdict_of(raw, plan.alpha, is_claim(machine, *slot)),
+        };
+        give_verdict(machine, *slot, verdict, *adjusted, judged.refused.as_deref());
     }
     if !complete {
         return;
     }
+    multiplicity::put_simultaneous_intervals(machine, family, &judged);
     let mut evidence = Map::new();
     let mut verdicts = Vec::new();
     for slot in members {
@@ -83,7 +88,12 @@ fn judge_family(machine: &mut Machine<'_, '_>, family: usize) {
         verdicts.push(format!("{}: {}", program.slots[*slot].reference, machine.verdict_text(*slot)));
     }
     let control = in_plan_words(&plan.control);
-    let rule = json!({ "family": plan.id, "control": control, "alpha": plan.alpha, "members": plan.members, "rule": DECISION_RULE });
+    let mut rule = json!({ "family": plan.id, "control": control, "alpha": plan.alpha, "members": plan.members, "rule": DECISION_RULE });
+    for (key, value) in [("weights", json!(plan.weights)), ("transfer", json!(plan.transfer)), ("deals", json!(plan.deals))] {
+        if !value.is_null() {
+            rule[key] = value;
+        }
+    }
     let hash = machine.take_down(&plan.id, "family", rule, evidence, &verdicts.join("; "));
     for slot in members {
         remember(machine, program.slots[*slot].step, hash.clone());
@@ -93,8 +103,16 @@ fn judge_family(machine: &mut Machine<'_, '_>, family: usize) {
         control,
         alpha: finite_level(plan.alpha),
         members: members.iter().map(|slot| program.slots[*slot].reference.clone()).collect(),
+        updates: judged.updates,
+        notes: judged.notes,
         decision: hash,
     });
+}
+
+/// Whether a slot tests a claim.
+fn is_claim(machine: &Machine<'_, '_>, slot: usize) -> bool {
+    let step = &machine.program.plan.steps[machine.program.slots[slot].step];
+    matches!(&step.action, Action::Test(test) if test.is_claim())
 }
 
 fn finite_level(level: f64) -> Finite {
@@ -102,8 +120,15 @@ fn finite_level(level: f64) -> Finite {
     Finite::new(level).unwrap_or_default()
 }
 
-fn verdict_of(raw: Raw, level: f64) -> Verdict {
+fn verdict_of(raw: Raw, level: f64, claim: bool) -> Verdict {
     match raw {
+        Raw::Tested { p, .. } if claim => {
+            if p <= level {
+                Verdict::Shown
+            } else {
+                Verdict::NotShown
+            }
+        }
         Raw::Waiting | Raw::NotTested => Verdict::NotTested,
         Raw::Refused => Verdict::Refused,
         Raw::Tested { p, direction } if p <= level => Verdict::Significant(direction),
@@ -111,13 +136,16 @@ fn verdict_of(raw: Raw, level: f64) -> Verdict {
     }
 }
 
-fn give_verdict(machine: &mut Machine<'_, '_>, slot: usize, verdict: Verdict, adjusted: Option<f64>) {
+fn give_verdict(machine: &mut Machine<'_, '_>, slot: usize, verdict: Verdict, adjusted: Option<f64>, refused: Option<&str>) {
     machine.verdicts[slot] = verdict;
     let text = machine.verdict_text(slot);
     let place = &machine.program.slots[slot];
     if let Some(entry) = machine.steps.get_mut(place.step).and_then(|step| step.results.get_mut(place.hypothesis)) {
         entry.verdict = Some(text);
         entry.p_adjusted = adjusted.and_then(Finite::new);
+        if let Some(why) = refused.filter(|_| verdict == Verdict::Refused && entry.because.is_none()) {
+            entry.because = Some(why.to_owned());
+        }
     }
 }
 
@@ -141,20 +169,5 @@ fn numbers(machine: &Machine<'_, '_>, slot: usize) -> Map<String, Value> {
 fn remember(machine: &mut Machine<'_, '_>, step: usize, hash: Option<String>) {
     if let (Some(hash), Some(step)) = (hash, machine.steps.get_mut(step)) {
         step.decision = Some(hash);
-    }
-}
-
-fn procedure(control: Control) -> Procedure {
-    match control {
-        Control::None => Procedure::None,
-        Control::Bonferroni => Procedure::Bonferroni,
-        Control::Sidak => Procedure::Sidak,
-        Control::Holm => Procedure::Holm,
-        Control::HolmSidak => Procedure::HolmSidak,
-        Control::Hochberg => Procedure::Hochberg,
-        Control::Hommel => Procedure::Hommel,
-        Control::BenjaminiHochberg => Procedure::BenjaminiHochberg,
-        Control::BenjaminiYekutieli => Procedure::BenjaminiYekutieli,
-        Control::FixedSequence => Procedure::FixedSequence,
     }
 }

@@ -167,17 +167,17 @@ impl<'p> Names<'p> {
 
     fn word(&self, word: &str, target: &Target) -> Option<Word> {
         Some(match word {
-            "significant" => Word::Significant,
-            "not significant" => Word::NotSignificant,
+            "significant" | "shown" => Word::Significant,
+            "not significant" | "not shown" => Word::NotSignificant,
             "not tested" => Word::NotTested,
             "refused" => Word::Refused,
             "above zero" => Word::Above,
             "below zero" => Word::Below,
             "departure shown" => Word::DepartureShown,
             "no departure shown" => Word::NoDepartureShown,
-            "any significant" => Word::AnySignificant,
-            "all significant" => Word::AllSignificant,
-            "none significant" => Word::NoneSignificant,
+            "any significant" | "any shown" => Word::AnySignificant,
+            "all significant" | "all shown" => Word::AllSignificant,
+            "none significant" | "none shown" => Word::NoneSignificant,
             other => {
                 let level = other.strip_prefix("favours ")?;
                 let favours = self.favours.get(&target.slots().start)?;

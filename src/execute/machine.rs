@@ -103,6 +103,7 @@ impl<'a, 'w> Machine<'a, 'w> {
 
     fn step(&mut self, number: usize) {
         let plan_step = &self.program.plan.steps[number];
+        self.witness.begins(&plan_step.id);
         let mut result = steps::blank(plan_step);
         if let Some(reason) = self.closed_gate(number, &mut result) {
             result.state = State::NotRun;
@@ -178,6 +179,13 @@ impl<'a, 'w> Machine<'a, 'w> {
         self.steps.get(place.step)?.results.get(place.hypothesis)
     }
 
+    /// Whether a slot's test is one-sided and counts estimates below zero.
+    pub fn counts_below(&self, slot: usize) -> bool {
+        let place = &self.program.slots[slot];
+        let Action::Test(test) = &self.program.plan.steps[place.step].action else { return false };
+        steps::one_side(&test.sides, &test.hypotheses[place.hypothesis]) == Some(crate::execute::verdict::Direction::Below)
+    }
+
     /// The verdict of a slot as the plan words it.
     pub fn verdict_text(&self, slot: usize) -> String {
         let place = &self.program.slots[slot];
@@ -188,13 +196,18 @@ impl<'a, 'w> Machine<'a, 'w> {
         words::verdict(self.verdicts[slot], favours)
     }
 
+    /// The verdict of a step of several tests.
+    fn step_verdict(&self, slots: std::ops::Range<usize>) -> &'static str {
+        let step = &self.program.plan.steps[self.program.slots[slots.start].step];
+        words::step_verdict(&self.verdicts[slots], claims(step))
+    }
+
     /// What was found about everything that a condition names, for sentences.
     fn in_words(&self, condition: &BoundCondition) -> String {
         let mut parts = Vec::new();
         condition.each_target(&mut |reference, target| {
             let slots = target.slots();
-            let verdict =
-                if slots.len() == 1 { self.verdict_text(slots.start) } else { words::step_verdict(&self.verdicts[slots]).to_owned() };
+            let verdict = if slots.len() == 1 { self.verdict_text(slots.start) } else { self.step_verdict(slots).to_owned() };
             parts.push(format!("{reference} is {verdict}"));
         });
         parts.join("; ")
@@ -251,7 +264,7 @@ impl<'a, 'w> Machine<'a, 'w> {
                     Action::Test(test) => words::verdict(self.verdicts[slots.start], test.hypotheses[0].favours.as_ref()),
                     _ => words::verdict(self.verdicts[slots.start], None),
                 },
-                _ => words::step_verdict(&self.verdicts[slots]).to_owned(),
+                _ => words::step_verdict(&self.verdicts[slots], claims(&self.program.plan.steps[number])).to_owned(),
             });
         }
     }
@@ -271,11 +284,18 @@ impl<'a, 'w> Machine<'a, 'w> {
     }
 }
 
+/// Whether a step tests claims.
+fn claims(step: &Step) -> bool {
+    matches!(&step.action, Action::Test(test) if test.is_claim())
+}
+
 fn moments(program: &Program<'_>, sample: &Sample<'_>) -> Vec<CellMoments> {
     let design = &program.plan.design;
     let Ok(moments) = &sample.moments else { return Vec::new() };
     let names: Vec<String> = sample.occasions.iter().map(|occasion| design.occasion_levels(*occasion).join("; ")).collect();
-    let used = || sample.occasions.iter().copied();
+    // Covariates stand after the occasions.
+    let further = design.occasions()..design.occasions() + sample.covariates.len();
+    let used = || sample.occasions.iter().copied().chain(further.clone());
     (0..design.cells())
         .map(|cell| {
             let n = moments.cells()[cell].subjects;
@@ -284,6 +304,7 @@ fn moments(program: &Program<'_>, sample: &Sample<'_>) -> Vec<CellMoments> {
                 levels: design.cell_levels(cell).into_iter().map(str::to_owned).collect(),
                 n,
                 occasions: names.clone(),
+                covariates: sample.covariates.iter().map(words::covariate).collect(),
                 means: if n == 0 { Vec::new() } else { used().filter_map(|occasion| Finite::new(moments.mean(cell, occasion))).collect() },
                 covariance: if n < 2 { Vec::new() } else { used().map(row).collect() },
             }

@@ -6,9 +6,12 @@
 
 mod conclude;
 pub mod condition;
+mod deals;
 mod family;
+mod largest_t;
 pub mod lower;
 pub mod machine;
+mod multiplicity;
 mod steps;
 pub mod verdict;
 mod words;

@@ -24,6 +24,10 @@ pub enum Verdict {
     NotSignificant,
     /// Tested and significant.
     Significant(Direction),
+    /// A claim of equivalence or non-inferiority was tested and shown.
+    Shown,
+    /// Such a claim was tested, and not shown.
+    NotShown,
     /// A screen saw a departure.
     DepartureShown,
     /// A screen saw none.
@@ -36,18 +40,18 @@ impl Verdict {
         !matches!(self, Verdict::Pending | Verdict::NotTested | Verdict::Refused)
     }
 
-    /// Whether it is significant in either direction.
+    /// Whether it is significant in either direction, or a claim that was shown.
     pub fn is_significant(self) -> bool {
-        matches!(self, Verdict::Significant(_))
+        matches!(self, Verdict::Significant(_) | Verdict::Shown)
     }
 }
 
 /// A word of a condition, with the level that `favours` names already turned into a direction.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum Word {
-    /// `significant`, in either direction.
+    /// `significant`, in either direction; of a claim, `shown`.
     Significant,
-    /// `not significant`.
+    /// `not significant`; of a claim, `not shown`.
     NotSignificant,
     /// `not tested`.
     NotTested,
@@ -61,11 +65,11 @@ pub enum Word {
     DepartureShown,
     /// `no departure shown`.
     NoDepartureShown,
-    /// `any significant`.
+    /// `any significant`, or `any shown`.
     AnySignificant,
-    /// `all significant`.
+    /// `all significant`, or `all shown`.
     AllSignificant,
-    /// `none significant`.
+    /// `none significant`, or `none shown`.
     NoneSignificant,
 }
 
@@ -112,7 +116,7 @@ pub fn holds_of_one(word: Word, verdict: Verdict) -> Truth {
         (Word::NotTested, _) => return Truth::of(matches!(verdict, Verdict::NotTested | Verdict::Pending)),
         (_, Verdict::Refused) => return Truth::Unknown,
         (Word::Significant | Word::AnySignificant | Word::AllSignificant, _) => verdict.is_significant(),
-        (Word::NotSignificant | Word::NoneSignificant, _) => verdict == Verdict::NotSignificant,
+        (Word::NotSignificant | Word::NoneSignificant, _) => matches!(verdict, Verdict::NotSignificant | Verdict::NotShown),
         (Word::Above, _) => verdict == Verdict::Significant(Direction::Above),
         (Word::Below, _) => verdict == Verdict::Significant(Direction::Below),
         (Word::DepartureShown, _) => verdict == Verdict::DepartureShown,

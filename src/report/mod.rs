@@ -5,6 +5,7 @@
 
 mod decisions;
 mod escape;
+mod families;
 mod figures;
 mod html;
 pub mod input;

@@ -51,6 +51,16 @@ impl Table {
         text
     }
 
+    /// Takes out the columns that say nothing, but for the first ones.
+    pub fn drop_empty_columns(&mut self, keep: usize) {
+        let says = |place: usize| place < keep || self.rows.iter().any(|row| row[place] != "-");
+        let kept: Vec<usize> = (0..self.columns.len()).filter(|place| says(*place)).collect();
+        self.columns = kept.iter().map(|place| self.columns[*place].clone()).collect();
+        for row in &mut self.rows {
+            *row = kept.iter().map(|place| std::mem::take(&mut row[*place])).collect();
+        }
+    }
+
     pub fn row(&mut self, cells: impl IntoIterator<Item = String>) {
         self.rows.push(cells.into_iter().map(|cell| if cell.is_empty() { "-".to_owned() } else { cell }).collect());
     }

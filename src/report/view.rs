@@ -2,7 +2,8 @@
 
 use super::decisions::{Line, path, short};
 use super::escape::markdown;
-use super::figures::Figure;
+use super::families::{Judged, families};
+use super::figures::{Figure, Shows};
 use super::input::ReportInput;
 use super::methods::{Method, methods};
 use super::steps::{Section, section, sentence, subjects};
@@ -32,7 +33,7 @@ pub(super) struct View {
     left_out_words: String,
     cells: Vec<Cells>,
     steps: Vec<Section>,
-    families: Option<Table>,
+    families: Vec<Judged>,
     forests: Vec<Picture>,
     plan: Vec<String>,
     plan_steps: Vec<String>,
@@ -109,8 +110,8 @@ pub(super) fn view(input: &ReportInput<'_>, figures: &[Figure]) -> View {
                 section(step, outcome(&step.outcome), reason, several)
             })
             .collect(),
-        families: families(input),
-        forests: figures.iter().filter(|figure| figure.of_sizes).map(picture).collect(),
+        families: families(input, figures),
+        forests: figures.iter().filter(|figure| figure.shows == Shows::Sizes).map(picture).collect(),
         plan: plan_in_brief(plan),
         plan_steps: plan.steps.iter().map(|step| planned_step(step, plan)).collect(),
         estimand: estimand(plan),
@@ -120,7 +121,7 @@ pub(super) fn view(input: &ReportInput<'_>, figures: &[Figure]) -> View {
     }
 }
 
-fn picture(figure: &Figure) -> Picture {
+pub(super) fn picture(figure: &Figure) -> Picture {
     Picture { file: figure.file.clone(), caption: markdown(&figure.title) }
 }
 
@@ -232,26 +233,8 @@ fn cells(description: &Description, plan: &ResolvedPlan, figures: &[Figure]) -> 
     Cells {
         heading: markdown(label),
         table,
-        picture: figures.iter().find(|figure| !figure.of_sizes && figure.about == description.outcome).map(picture),
+        picture: figures.iter().find(|figure| figure.shows == Shows::Means && figure.about == description.outcome).map(picture),
     }
-}
-
-fn families(input: &ReportInput<'_>) -> Option<Table> {
-    let mut table = Table::new(&["Family", "Control", "#alpha", "Members", "Decision"]);
-    for family in &input.results.families {
-        let members: Vec<String> = family.members.iter().map(|member| markdown(member)).collect();
-        let shown =
-            if members.len() > 12 { format!("{} and {} more", members[..12].join(", "), members.len() - 12) } else { members.join(", ") };
-        table.row([
-            markdown(&family.id),
-            family.control.clone(),
-            family.alpha.get().to_string(),
-            shown,
-            family.decision.as_deref().map(short).unwrap_or_default(),
-        ]);
-    }
-    table.notes.push("A member that was not tested or was refused counts in its family as if its p were 1.".to_owned());
-    (!input.results.families.is_empty()).then_some(table)
 }
 
 fn plan_in_brief(plan: &ResolvedPlan) -> Vec<String> {

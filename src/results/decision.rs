@@ -22,4 +22,7 @@ pub struct Decision {
 pub trait Witness {
     /// Takes down a decision; returns its hash in lower-case hex, where one is kept.
     fn take_down(&mut self, decision: Decision) -> Option<String>;
+
+    /// A step begins; for whoever shows how far a long run has come.
+    fn begins(&mut self, _step: &str) {}
 }

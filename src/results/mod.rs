@@ -166,9 +166,12 @@ pub struct CellMoments {
     pub n: usize,
     /// The occasions, in design order; the rows of M are in the same order.
     pub occasions: Vec<String>,
-    /// Means, one per occasion.
+    /// The covariates of the model, whose moments stand after those of the occasions.
+    #[serde(skip_serializing_if = "Vec::is_empty", default)]
+    pub covariates: Vec<String>,
+    /// Means, one per occasion, then one per covariate.
     pub means: Vec<Finite>,
-    /// Covariances, divisor n - 1; empty where n < 2.
+    /// Covariances, divisor n - 1, in the order of the means; empty where n < 2.
     pub covariance: Vec<Vec<Finite>>,
 }
 
@@ -261,6 +264,19 @@ pub struct Matrices {
     pub m: Vec<Vec<Finite>>,
     /// Cells whose covariances supply the error.
     pub error_cells: Vec<usize>,
+    /// For a pooled error, the strata that it pools over; empty where the error is that of M itself.
+    #[serde(skip_serializing_if = "Vec::is_empty", default)]
+    pub error_strata: Vec<ErrorStratum>,
+}
+
+/// A stratum of a pooled error: the mean square is the sum of the strata's mean squares in their shares.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct ErrorStratum {
+    /// Its share.
+    pub share: Finite,
+    /// Its contrasts between occasions: b rows, orthonormal columns.
+    #[serde(rename = "M")]
+    pub m: Vec<Vec<Finite>>,
 }
 
 /// A test statistic.
@@ -314,8 +330,27 @@ pub struct FamilyResult {
     pub alpha: Finite,
     /// References of its members.
     pub members: Vec<String>,
+    /// For a graph: each update, in order.
+    #[serde(skip_serializing_if = "Vec::is_empty", default)]
+    pub updates: Vec<GraphUpdate>,
+    /// What is to be said of how it was judged, such as an error bound.
+    #[serde(skip_serializing_if = "Vec::is_empty", default)]
+    pub notes: Vec<String>,
     /// Hash of the decision that judged it.
     pub decision: Option<String>,
+}
+
+/// One update of a graph: a member is taken out, and its share of alpha handed on.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct GraphUpdate {
+    /// Reference of the member that is taken out.
+    pub member: String,
+    /// Its adjusted p.
+    pub p_adjusted: Finite,
+    /// Whether that is at or below the family's alpha.
+    pub significant: bool,
+    /// Weight of each member after it, in the order of the members.
+    pub weights: Vec<Finite>,
 }
 
 /// The preregistered conclusion that applies.

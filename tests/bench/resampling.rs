@@ -7,7 +7,7 @@ use std::time::Instant;
 
 use aforesaid::stats::hypothesis::{ErrorTerm, FactorPart, Hypothesis, Part, Weighting};
 use aforesaid::stats::resample::{
-    ArmMoments, ArmRows, DealtData, Deals, Question, Resamples, Side, Spread, Stream, bca_of_moments, westfall_young,
+    ArmMoments, ArmRows, Deals, DealtData, Question, Resamples, Side, Spread, Stream, bca_of_moments, westfall_young,
 };
 
 const ARMS: usize = 3;

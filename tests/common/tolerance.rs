@@ -14,6 +14,12 @@ pub const TAIL: f64 = 1e-12;
 /// Tails with df up to a million: relative.
 pub const TAIL_LARGE_DF: f64 = 1e-10;
 
+/// Quantiles: relative.
+pub const QUANTILE: f64 = 1e-10;
+
+/// Tails of the studentized range: relative. 1e-8 is promised; this is what the method gives.
+pub const STUDENTIZED_RANGE: f64 = 1e-12;
+
 /// Noncentral tails: relative.
 pub const NONCENTRAL: f64 = 1e-9;
 

@@ -103,7 +103,8 @@ def main():
         label = [i for i, x in enumerate(arms) for _ in x]
         out[name]["joint"] = westfall_young(np.vstack(arms), label)
 
-    x, y = np.round(rng.gamma(2, 3, 15), 1), np.round(rng.gamma(3, 3, 11), 1)
+    # Whole numbers, so that sums do not depend on their order and ties are ties.
+    x, y = np.round(rng.gamma(2, 3, 15)), np.round(rng.gamma(3, 3, 11))
     mean = lambda u, axis: np.mean(u, axis=axis)
     log_ratio = lambda u, v, axis: np.log(np.var(u, axis=axis, ddof=1) / np.var(v, axis=axis, ddof=1))
     draw = lambda f, data, n: np.array([f(*[rng.choice(s, len(s)) for s in data], axis=-1) for _ in range(n)])
@@ -127,6 +128,24 @@ def main():
         whole[side] = dict(level=level, least=float(np.quantile(dist, level - 4 * error)), most=float(np.quantile(dist, level + 4 * error)),
                            scipy=float(getattr(r.confidence_interval, "low" if side == "lower" else "high")))
     out["whole"] = whole
+
+    # Freedman & Lane (1983): residuals of the model without arms, permuted; |t| of arms in the whole model.
+    n = 18
+    arm, z = np.arange(n) % 2, np.round(rng.normal(50, 10, n), 1)
+    y = np.round(0.4 * z + 3 * arm + rng.gamma(2, 2, n), 1)
+    full, less = np.column_stack([np.ones(n), arm, z]), np.column_stack([np.ones(n), z])
+    inverse = np.linalg.inv(full.T @ full)
+
+    def t_of(values):
+        coefficients = inverse @ full.T @ values
+        residuals = values - full @ coefficients
+        return np.abs(coefficients[1]) / np.sqrt((residuals ** 2).sum(0) / (n - 3) * inverse[1, 1])
+    fitted = less @ np.linalg.lstsq(less, y, rcond=None)[0]
+    count, asked = 0, 400_000
+    for _ in range(asked // 10_000):
+        dealt = np.array([fitted + rng.permutation(y - fitted) for _ in range(10_000)]).T
+        count += int((t_of(dealt) >= t_of(y) * (1 - 1e-9)).sum())
+    out["freedman_lane"] = dict(arm=arm.tolist(), covariate=z.tolist(), values=y.tolist(), t=float(t_of(y)), p=count / asked, permutations=asked)
     print(json.dumps(out, indent=1))
 
 

@@ -1,9 +1,11 @@
 //! Standardized change between two occasions within each cell.
 
 use super::sample::Sample;
+use super::sizes::{Bootstrap, of_pair};
 use super::test::parts;
 use super::{entry, in_plan_words, put, refused};
 use crate::canon::number::Finite;
+use crate::data::trial::Trial;
 use crate::execute::machine::{Machine, setting};
 use crate::execute::words;
 use crate::plan::resolved::{self, Change, ChangeIntervalMethod, Design, SmallSample, Standardizer};
@@ -11,6 +13,7 @@ use crate::results::{Detail, Entry};
 use crate::stats::hypothesis::{FactorPart, Hypothesis, Part, Weighting};
 use crate::stats::linear::{DoubleDouble, Matrix};
 use crate::stats::model::{Moments, Refusal};
+use crate::stats::resample::ArmMoments;
 use crate::stats::sizes::{self, IntervalMethod, PairedSummary, change_interval, hedges_j_approximate, hedges_j_exact, standardizer_value};
 
 /// What the plan chose for the step.
@@ -19,6 +22,7 @@ pub(super) struct Choices {
     pub small_sample: SmallSample,
     pub method: ChangeIntervalMethod,
     pub level: f64,
+    pub resamples: Option<u64>,
 }
 
 pub(super) fn run(machine: &mut Machine<'_, '_>, number: usize, choices: &Choices, items: &[Change], sample: &Sample<'_>) {
@@ -28,12 +32,12 @@ pub(super) fn run(machine: &mut Machine<'_, '_>, number: usize, choices: &Choice
     setting(settings, "interval method", in_plan_words(&choices.method));
     for item in items {
         let design = &machine.program.plan.design;
-        let found = one(design, choices, item, sample);
+        let found = one(design, machine.samples.trial, choices, item, sample);
         machine.steps[number].results.push(found);
     }
 }
 
-fn one(design: &Design, choices: &Choices, item: &Change, sample: &Sample<'_>) -> Entry {
+fn one(design: &Design, trial: &Trial, choices: &Choices, item: &Change, sample: &Sample<'_>) -> Entry {
     let mut entry = entry(&item.reference, &item.label);
     entry.level = Finite::new(choices.level);
     let pair = sample.moments.as_ref().map_err(Clone::clone).and_then(|moments| Pair::of(design, item, moments));
@@ -56,10 +60,57 @@ fn one(design: &Design, choices: &Choices, item: &Change, sample: &Sample<'_>) -
     if let Some(r) = summary.correlation() {
         put(&mut entry.details, "correlation", r);
     }
-    match size(&mut entry, &summary, choices, pair.n) {
-        Ok(()) => entry,
-        Err(refusal) => refused(entry, refusal.reason),
+    if let Err(refusal) = size(&mut entry, &summary, choices, pair.n) {
+        return refused(entry, refusal.reason);
     }
+    if choices.method == ChangeIntervalMethod::Bca {
+        match bootstrapped(design, trial, choices, item, sample, &mut entry) {
+            Ok((lower, upper)) => entry.interval = Finite::new(lower).zip(Finite::new(upper)).map(|(lower, upper)| [lower, upper]),
+            Err(because) => no_interval(&mut entry, &because),
+        }
+    }
+    entry
+}
+
+fn no_interval(entry: &mut Entry, because: &str) {
+    let earlier = entry.because.take().map(|earlier| format!("{earlier}; ")).unwrap_or_default();
+    entry.because = Some(format!("{earlier}no interval: {because}"));
+}
+
+/// The bootstrap interval of d, uncorrected.
+fn bootstrapped(
+    design: &Design,
+    trial: &Trial,
+    choices: &Choices,
+    item: &Change,
+    sample: &Sample<'_>,
+    entry: &mut Entry,
+) -> Result<(f64, f64), String> {
+    let in_words = |refusal| words::refusal(&refusal, design);
+    let (first, second) = (weights(design, &item.first).map_err(in_words)?, weights(design, &item.second).map_err(in_words)?);
+    let score = |subject: usize, weights: &[DoubleDouble]| -> f64 {
+        let row = &sample.values[subject * design.occasions()..(subject + 1) * design.occasions()];
+        row.iter().zip(weights).map(|(value, weight)| DoubleDouble::from(*value) * *weight).sum::<DoubleDouble>().value()
+    };
+    let pairs: Vec<f64> = (0..trial.cell.len())
+        .filter(|subject| trial.cell[*subject] as usize == item.cell && sample.kept.as_ref().is_none_or(|kept| kept[*subject]))
+        .flat_map(|subject| [score(subject, &first), score(subject, &second)])
+        .collect();
+    let mut identity = vec![item.cell as u64];
+    identity.extend(first.iter().chain(&second).map(|weight| (weight.value() + 0.0).to_bits()));
+    let asked = Bootstrap { resamples: choices.resamples, level: choices.level, identity: &identity };
+    let standardizer = in_stats(choices.standardizer);
+    let of = |arm: &ArmMoments| {
+        let sds = (arm.standard_deviation(0), arm.standard_deviation(1));
+        let of_change = (arm.covariance(0, 0) + arm.covariance(1, 1) - 2.0 * arm.covariance(0, 1)).max(0.0).sqrt();
+        PairedSummary::with_sd_of_change(arm.subjects as usize, (arm.mean[0], arm.mean[1]), sds, of_change)
+            .and_then(|summary| sizes::standardized_change(&summary, standardizer))
+            .unwrap_or(f64::NAN)
+    };
+    if entry.details.contains_key("J") {
+        entry.details.insert("interval_of".to_owned(), Detail::Text("d, uncorrected".to_owned()));
+    }
+    of_pair(&asked, &pairs, &of, entry)
 }
 
 fn size(entry: &mut Entry, summary: &PairedSummary, choices: &Choices, n: usize) -> Result<(), sizes::Refusal> {
@@ -94,6 +145,8 @@ fn size(entry: &mut Entry, summary: &PairedSummary, choices: &Choices, n: usize)
     let method = match choices.method {
         ChangeIntervalMethod::Bonett => IntervalMethod::Bonett,
         ChangeIntervalMethod::NoncentralT => IntervalMethod::NoncentralT,
+        // It needs the subjects, not their summary.
+        ChangeIntervalMethod::Bca => return Ok(()),
         ChangeIntervalMethod::None => {
             entry.level = None;
             return Ok(());
@@ -108,8 +161,7 @@ fn size(entry: &mut Entry, summary: &PairedSummary, choices: &Choices, n: usize)
             }
         }
         Err(refusal) => {
-            let earlier = entry.because.take().map(|earlier| format!("{earlier}; ")).unwrap_or_default();
-            entry.because = Some(format!("{earlier}no interval: {}", refusal.reason));
+            no_interval(entry, &refusal.reason);
         }
     }
     Ok(())

@@ -1,15 +1,14 @@
 //! Share of variance that tested effects explain.
 
-use super::test::parts;
 use super::{entry, in_plan_words, refused};
 use crate::canon::number::Finite;
 use crate::execute::machine::{Machine, setting};
 use crate::execute::words;
-use crate::plan::resolved::{Action, ErrorTerm, FactorPart, Hypothesis, TestKind, VarianceExplainedKind};
+use crate::plan::resolved::{Action, ErrorTerm, FactorPart, Hypothesis, TestKind, VarianceExplainedKind, Weights};
 use crate::results::{Entry, Size, State};
 use crate::stats::hypothesis::{self as engine, UnivariateTest, Weighting, crossed_effects, error_strata, test_univariate};
 use crate::stats::model::Refusal;
-use crate::stats::sizes::{EffectSum, generalized_eta_squared, partial_eta_squared as share, partial_eta_squared_interval};
+use crate::stats::sizes::{self, EffectSum, generalized_eta_squared, partial_eta_squared as share, partial_eta_squared_interval};
 
 /// What a step asks for.
 pub(super) struct Request<'a> {
@@ -38,9 +37,36 @@ pub(super) fn partial_eta_squared(tested: &UnivariateTest, level: f64) -> Size {
     Size { name, value: Finite::new(value), interval, level: Finite::new(level), because }
 }
 
+/// Omega squared of a test at uncorrected df, with its interval at confidence `level`.
+fn omega_squared(tested: &UnivariateTest, level: f64) -> Size {
+    let name = "omega squared".to_owned();
+    let value = match sizes::omega_squared(tested.f, tested.df1, tested.df2) {
+        Ok(value) => value,
+        Err(refusal) => return Size { name, value: None, interval: None, level: None, because: Some(refusal.reason) },
+    };
+    let level = super::test::rounded(level);
+    match sizes::omega_squared_interval(tested.f, tested.df1, tested.df2, level) {
+        Ok((lower, upper)) => {
+            let interval = Finite::new(lower).zip(Finite::new(upper)).map(|(lower, upper)| [lower, upper]);
+            let outside = (value < lower || value > upper).then(|| "the estimate lies outside its interval".to_owned());
+            Size { name, value: Finite::new(value), interval, level: Finite::new(level), because: outside }
+        }
+        Err(refusal) => Size {
+            name,
+            value: Finite::new(value),
+            interval: None,
+            level: Finite::new(level),
+            because: Some(format!("no interval: {}", refusal.reason)),
+        },
+    }
+}
+
 pub(super) fn run(machine: &mut Machine<'_, '_>, number: usize, request: &Request<'_>) {
     let settings = &mut machine.steps[number].settings;
     setting(settings, "kind", request.kinds.iter().map(in_plan_words).collect::<Vec<_>>().join(", "));
+    if request.kinds.contains(&VarianceExplainedKind::OmegaSquared) {
+        setting(settings, "omega squared", sizes::OMEGA_SQUARED_FORMULA);
+    }
     setting(
         settings,
         "measured factors",
@@ -77,7 +103,7 @@ fn one(machine: &mut Machine<'_, '_>, of: &str, reference: &str, request: &Reque
     let hypothesis = &test.hypotheses[slot.hypothesis];
     let kind = test.kind;
     let sample = machine.samples.of(&plan.steps[slot.step]);
-    let tested = tested(machine, hypothesis, error, &sample);
+    let tested = tested(machine, hypothesis, error, test.weights, &sample);
     for kind_of_size in request.kinds {
         let size = match (&tested, kind_of_size) {
             (Err(refusal), _) => Size {
@@ -88,9 +114,10 @@ fn one(machine: &mut Machine<'_, '_>, of: &str, reference: &str, request: &Reque
                 because: Some(words::refusal(refusal, &plan.design)),
             },
             (Ok(tested), VarianceExplainedKind::PartialEtaSquared) => partial_eta_squared(tested, request.level),
+            (Ok(tested), VarianceExplainedKind::OmegaSquared) => omega_squared(tested, request.level),
             (Ok(_), VarianceExplainedKind::GeneralizedEtaSquared) => {
                 let found = if kind == TestKind::Omnibus {
-                    generalized(machine, hypothesis, request.measured_factors, &sample)
+                    generalized(machine, hypothesis, test.weights, request.measured_factors, &sample)
                 } else {
                     Err("the generalized form is defined for the effects of a whole design, not for a piece of one; the partial form may be asked for".to_owned())
                 };
@@ -122,26 +149,34 @@ fn tested(
     machine: &Machine<'_, '_>,
     hypothesis: &Hypothesis,
     error: ErrorTerm,
+    weights: Weights,
     sample: &super::Sample<'_>,
 ) -> Result<UnivariateTest, Refusal> {
     let design = &machine.program.plan.design;
     let moments = sample.moments.as_ref().map_err(Clone::clone)?;
-    let lowered = engine::Hypothesis::new(
-        &parts(&design.between, &hypothesis.between),
-        &parts(&design.within, &hypothesis.within),
-        Weighting::Equal,
-    )?;
+    let lowered = super::test::lowered(design, hypothesis, weights, moments)?;
     test_univariate(moments, &lowered, super::test::term(error))
 }
 
 /// Olejnik and Algina's form for an effect of the whole design.
-fn generalized(machine: &Machine<'_, '_>, hypothesis: &Hypothesis, measured: &[String], sample: &super::Sample<'_>) -> Result<f64, String> {
+fn generalized(
+    machine: &Machine<'_, '_>,
+    hypothesis: &Hypothesis,
+    weights: Weights,
+    measured: &[String],
+    sample: &super::Sample<'_>,
+) -> Result<f64, String> {
     let design = &machine.program.plan.design;
     let in_words = |refusal: Refusal| words::refusal(&refusal, design);
     let moments = sample.moments.as_ref().map_err(|refusal| in_words(refusal.clone()))?;
     let levels = |factors: &[crate::plan::resolved::Factor]| factors.iter().map(|factor| factor.levels.len()).collect::<Vec<_>>();
     let (between, within) = (levels(&design.between), levels(&design.within));
-    let effects = crossed_effects(moments, &between, &within, Weighting::Equal).map_err(in_words)?;
+    let counts = moments.cell_sizes();
+    let weighting = match weights {
+        Weights::Equal => Weighting::Equal,
+        Weights::Observed => Weighting::Observed(&counts),
+    };
+    let effects = crossed_effects(moments, &between, &within, weighting).map_err(in_words)?;
     let strata = error_strata(moments, &within).map_err(in_words)?;
     let involved = |parts: &[FactorPart]| parts.iter().map(|part| *part == FactorPart::Whole).collect::<Vec<_>>();
     let (own_between, own_within) = (involved(&hypothesis.between), involved(&hypothesis.within));

@@ -2,17 +2,20 @@
 
 mod change;
 mod describe;
+mod differences;
 mod explained;
 mod sample;
 mod screen;
+mod sizes;
 mod test;
 
 pub(crate) use describe::describe;
 pub(crate) use sample::{Sample, Samples};
+pub(crate) use test::{lowered, one_side, rounded, term};
 
 use crate::canon::number::Finite;
 use crate::execute::machine::{Machine, setting};
-use crate::plan::resolved::{Action, Choice, Condition, Estimate, ScreenKind, Step, TestKind};
+use crate::plan::resolved::{Action, Choice, Comparison, Condition, Estimate, ScreenKind, Step, TestKind};
 use crate::results::{Detail, Entry, State, StepResult};
 use std::collections::BTreeMap;
 
@@ -27,43 +30,64 @@ pub(crate) fn cases(action: &Action) -> Vec<(&'static str, Vec<&Condition>)> {
     match action {
         Action::Screen(screen) => match &screen.kind {
             ScreenKind::EqualVariances { method } => vec![("threshold", of(&screen.threshold)), ("method", of(method))],
+            ScreenKind::OutlyingValues { method } => vec![("threshold", of(&screen.threshold)), ("method", of(method))],
             _ => vec![("threshold", of(&screen.threshold))],
         },
-        Action::Test(test) => vec![("error", of(&test.error)), ("correction", of(&test.correction))],
+        Action::Test(test) => vec![
+            ("method", of(&test.method)),
+            ("criterion", test.criterion.as_ref().map_or(Vec::new(), of)),
+            ("error", of(&test.error)),
+            ("correction", of(&test.correction)),
+        ],
         Action::Estimate(Estimate::StandardizedChange { standardizer, small_sample_correction, interval, .. }) => vec![
             ("standardizer", of(standardizer)),
             ("small-sample correction", of(small_sample_correction)),
             ("interval method", of(&interval.method)),
         ],
-        Action::Estimate(_) => Vec::new(),
+        Action::Estimate(Estimate::Differences { error, .. }) => vec![("error", of(error))],
+        Action::Estimate(Estimate::Comparison(comparison)) => vec![
+            ("standardizer", comparison.standardizer.as_ref().map_or(Vec::new(), of)),
+            ("small-sample correction", comparison.small_sample_correction.as_ref().map_or(Vec::new(), of)),
+            ("interval method", of(&comparison.method)),
+        ],
+        Action::Estimate(Estimate::CellMeans { .. } | Estimate::VarianceExplained { .. }) => Vec::new(),
     }
 }
 
 /// The result of a step before anything is known of it.
 pub(crate) fn blank(step: &Step) -> StepResult {
-    let (species, kind) = match &step.action {
+    let (species, kind): (&str, String) = match &step.action {
         Action::Screen(screen) => (
             "screen",
-            match screen.kind {
-                ScreenKind::Sphericity { .. } => "sphericity",
-                ScreenKind::EqualCovarianceMatrices => "equal covariance matrices",
-                ScreenKind::EqualVariances { .. } => "equal variances",
+            match &screen.kind {
+                ScreenKind::Sphericity { .. } => "sphericity".to_owned(),
+                ScreenKind::EqualCovarianceMatrices => "equal covariance matrices".to_owned(),
+                ScreenKind::EqualVariances { .. } => "equal variances".to_owned(),
+                ScreenKind::NormalResiduals => "normal residuals".to_owned(),
+                ScreenKind::OutlyingValues { .. } => "outlying values".to_owned(),
+                ScreenKind::Missingness => "missingness".to_owned(),
             },
         ),
         Action::Test(test) => (
             "test",
             match test.kind {
-                TestKind::Omnibus => "omnibus",
-                TestKind::PartialInteractions => "partial interactions",
-                TestKind::SimpleEffects => "simple effects",
+                TestKind::Omnibus => "omnibus".to_owned(),
+                TestKind::PartialInteractions => "partial interactions".to_owned(),
+                TestKind::SimpleEffects => "simple effects".to_owned(),
+                TestKind::Contrasts => "contrasts".to_owned(),
+                TestKind::Equivalence => "equivalence".to_owned(),
+                TestKind::NonInferiority => "non-inferiority".to_owned(),
+                TestKind::LargestContrast => "largest contrast".to_owned(),
             },
         ),
         Action::Estimate(estimate) => (
             "estimate",
             match estimate {
-                Estimate::CellMeans { .. } => "cell means",
-                Estimate::StandardizedChange { .. } => "standardized change",
-                Estimate::VarianceExplained { .. } => "variance explained",
+                Estimate::CellMeans { .. } => "cell means".to_owned(),
+                Estimate::StandardizedChange { .. } => "standardized change".to_owned(),
+                Estimate::VarianceExplained { .. } => "variance explained".to_owned(),
+                Estimate::Differences { .. } => "differences".to_owned(),
+                Estimate::Comparison(comparison) => in_plan_words(&comparison.measure),
             },
         ),
     };
@@ -72,7 +96,7 @@ pub(crate) fn blank(step: &Step) -> StepResult {
     StepResult {
         id: step.id.clone(),
         species: species.to_owned(),
-        kind: kind.to_owned(),
+        kind,
         outcome: step.outcome.clone(),
         role: in_plan_words(&step.role),
         state: State::Done,
@@ -139,6 +163,9 @@ pub(crate) fn not_run_entries(action: &Action, reason: &str) -> Vec<Entry> {
         Action::Estimate(Estimate::VarianceExplained { references, .. }) => {
             references.iter().map(|reference| (reference.as_str(), "")).collect()
         }
+        Action::Estimate(Estimate::Differences { hypotheses: items, .. } | Estimate::Comparison(Comparison { items, .. })) => {
+            items.iter().map(|item| (item.reference.as_str(), item.label.as_str())).collect()
+        }
     };
     let is_test = matches!(action, Action::Test(_));
     names
@@ -173,11 +200,17 @@ pub(crate) fn run(machine: &mut Machine<'_, '_>, number: usize, sample: &Sample<
                 small_sample: machine.choose(number, "small-sample correction", small_sample_correction),
                 method: machine.choose(number, "interval method", &interval.method),
                 level: interval.level,
+                resamples: interval.resamples,
             };
             change::run(machine, number, &choices, items, sample);
         }
         Action::Estimate(Estimate::VarianceExplained { of, kinds, measured_factors, level, references }) => {
             explained::run(machine, number, &explained::Request { of, kinds, measured_factors, level: *level, references });
         }
+        Action::Estimate(Estimate::Differences { error, weights, level, hypotheses }) => {
+            let error = machine.choose(number, "error", error);
+            differences::run(machine, number, &differences::Request { error, weights: *weights, level: *level, hypotheses }, sample);
+        }
+        Action::Estimate(Estimate::Comparison(comparison)) => sizes::run(machine, number, comparison, sample),
     }
 }

@@ -1,7 +1,7 @@
 //! Which subjects and occasions a step rests on, and their moments, computed once per set.
 
 use crate::data::trial::Trial;
-use crate::plan::resolved::{Action, Choice, CompleteOver, ErrorTerm, Estimate, FactorPart, Hypothesis, ResolvedPlan, Step};
+use crate::plan::resolved::{Action, Choice, CompleteOver, Covariate, ErrorTerm, Estimate, FactorPart, Hypothesis, ResolvedPlan, Step};
 use crate::results::{ArmFlow, LeftOut};
 use crate::stats::model::{Moments, Refusal};
 use std::borrow::Cow;
@@ -14,6 +14,12 @@ pub(crate) struct Sample<'a> {
     pub outcome: usize,
     /// Occasions used, in design order.
     pub occasions: Vec<usize>,
+    /// Covariates of the model.
+    pub covariates: Vec<Covariate>,
+    /// Their values, subjects x covariates.
+    pub covariate_values: Vec<f64>,
+    /// Subjects left out because a covariate is missing, although their outcome is complete.
+    pub without_covariate: usize,
     /// Values, subjects x all occasions; occasions that are not used are constant.
     pub values: Cow<'a, [f64]>,
     /// Subjects analysed; `None`: all.
@@ -47,24 +53,35 @@ impl<'a> Samples<'a> {
 
     /// Whether two steps rest on the same subjects and occasions.
     pub fn same(&self, one: &Step, other: &Step) -> bool {
-        one.outcome == other.outcome && self.occasions(one) == self.occasions(other)
+        one.outcome == other.outcome && self.occasions(one) == self.occasions(other) && covariates(one) == covariates(other)
     }
 
     /// The sample of a step.
     pub fn of(&mut self, step: &Step) -> Rc<Sample<'a>> {
-        self.over(self.outcome(step), self.occasions(step))
+        self.over(self.outcome(step), self.occasions(step), covariates(step))
+    }
+
+    /// The sample of a step, where it has been asked for before.
+    pub fn known_of(&self, step: &Step) -> Option<Rc<Sample<'a>>> {
+        let (outcome, occasions) = (self.outcome(step), self.occasions(step));
+        let is_it =
+            |sample: &&Rc<Sample<'a>>| sample.outcome == outcome && sample.occasions == occasions && sample.covariates == covariates(step);
+        self.known.iter().find(is_it).map(Rc::clone)
     }
 
     /// The sample of an outcome over all occasions.
     pub fn whole(&mut self, outcome: usize) -> Rc<Sample<'a>> {
-        self.over(outcome, (0..self.plan.design.occasions()).collect())
+        self.over(outcome, (0..self.plan.design.occasions()).collect(), &[])
     }
 
-    fn over(&mut self, outcome: usize, occasions: Vec<usize>) -> Rc<Sample<'a>> {
-        if let Some(known) = self.known.iter().find(|sample| sample.outcome == outcome && sample.occasions == occasions) {
+    fn over(&mut self, outcome: usize, occasions: Vec<usize>, covariates: &[Covariate]) -> Rc<Sample<'a>> {
+        let is_it =
+            |sample: &&Rc<Sample<'a>>| sample.outcome == outcome && sample.occasions == occasions && sample.covariates == covariates;
+        if let Some(known) = self.known.iter().find(is_it) {
             return Rc::clone(known);
         }
-        let kept = self.trial.complete(outcome, &occasions);
+        let mut kept = self.trial.complete(outcome, &occasions);
+        let (covariate_values, without_covariate) = self.covariate_values(covariates, &mut kept);
         let all = self.trial.occasions;
         let values = &self.trial.values[outcome];
         let values: Cow<'a, [f64]> = if occasions.len() == all {
@@ -77,10 +94,46 @@ impl<'a> Samples<'a> {
                 values.chunks_exact(all).flat_map(|row| row.iter().zip(&used).map(|(y, used)| if *used { *y } else { 0.0 })).collect(),
             )
         };
-        let moments = Moments::new(&values, all, &self.trial.cell, self.trial.cells, kept.as_deref());
-        let sample = Rc::new(Sample { outcome, occasions, values, kept, moments });
+        let (cell, cells) = (&self.trial.cell, self.trial.cells);
+        let moments = if covariates.is_empty() {
+            Moments::new(&values, all, cell, cells, kept.as_deref())
+        } else {
+            Moments::with_covariates(&values, all, &covariate_values, cell, cells, kept.as_deref())
+        };
+        let covariates = covariates.to_vec();
+        let sample = Rc::new(Sample { outcome, occasions, covariates, covariate_values, without_covariate, values, kept, moments });
         self.known.push(Rc::clone(&sample));
         sample
+    }
+
+    /// Values of the covariates, subjects x covariates; a subject with a missing one is taken out of `kept`, and counted
+    /// where it was in it.
+    fn covariate_values(&self, covariates: &[Covariate], kept: &mut Option<Vec<bool>>) -> (Vec<f64>, usize) {
+        let subjects = self.trial.subjects.len();
+        let columns = self.plan.covariate_columns();
+        let design = &self.plan.design;
+        let of = |covariate: &Covariate, subject: usize| match covariate {
+            Covariate::Column(column) => {
+                columns.iter().position(|other| other == column).map_or(f64::NAN, |place| self.trial.covariates[place][subject])
+            }
+            Covariate::Occasion { outcome, levels } => {
+                let outcome = self.plan.outcomes.iter().position(|other| other.name == *outcome);
+                let occasion = (0..design.occasions()).find(|occasion| design.occasion_levels(*occasion) == *levels);
+                outcome
+                    .zip(occasion)
+                    .map_or(f64::NAN, |(outcome, occasion)| self.trial.values[outcome][subject * self.trial.occasions + occasion])
+            }
+        };
+        let values: Vec<f64> = (0..subjects).flat_map(|subject| covariates.iter().map(move |covariate| of(covariate, subject))).collect();
+        let mut without = 0;
+        for (subject, row) in values.chunks_exact(covariates.len().max(1)).enumerate() {
+            if row.iter().any(|value| value.is_nan()) {
+                let kept = kept.get_or_insert_with(|| vec![true; subjects]);
+                without += usize::from(kept[subject]);
+                kept[subject] = false;
+            }
+        }
+        (values, without)
     }
 
     fn occasions(&self, step: &Step) -> Vec<usize> {
@@ -90,14 +143,20 @@ impl<'a> Samples<'a> {
         }
         let mut used = vec![false; all];
         let mut mark = |parts: &[FactorPart]| {
+            let design = &self.plan.design;
             for (occasion, used) in used.iter_mut().enumerate() {
-                *used |= weighs(&self.plan.design.occasion_levels(occasion), parts);
+                let levels = design.occasion_levels(occasion);
+                *used |= design.within.iter().zip(parts).zip(levels).all(|((factor, part), level)| part.weighs(factor, level));
             }
         };
         match &step.action {
             Action::Test(test) if !can_be_pooled(&test.error) => {
                 test.hypotheses.iter().for_each(|hypothesis: &Hypothesis| mark(&hypothesis.within))
             }
+            Action::Estimate(Estimate::Differences { error, hypotheses, .. }) if !can_be_pooled(error) => {
+                hypotheses.iter().for_each(|hypothesis| mark(&hypothesis.within))
+            }
+            Action::Estimate(Estimate::Comparison(comparison)) => comparison.items.iter().for_each(|item| mark(&item.within)),
             Action::Estimate(Estimate::StandardizedChange { items, .. }) => items.iter().for_each(|item| {
                 mark(&item.first);
                 mark(&item.second);
@@ -176,11 +235,9 @@ fn can_be_pooled(error: &Choice<ErrorTerm>) -> bool {
     }
 }
 
-/// Whether these parts give an occasion a weight.
-fn weighs(levels: &[&str], parts: &[FactorPart]) -> bool {
-    levels.iter().zip(parts).all(|(level, part)| match part {
-        FactorPart::Average | FactorPart::Whole => true,
-        FactorPart::Hold(held) => held == level,
-        FactorPart::Weights(weights) => weights.iter().any(|weight| weight.level == *level && weight.weight != 0.0),
-    })
+fn covariates(step: &Step) -> &[Covariate] {
+    match &step.action {
+        Action::Test(test) => &test.covariates,
+        _ => &[],
+    }
 }

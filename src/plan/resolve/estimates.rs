@@ -1,18 +1,59 @@
 //! Estimate steps.
 
+use super::comparisons;
 use super::conditions::choice;
 use super::design::effect;
 use super::hypotheses::splits;
+use super::methods::{count, values};
 use super::reader::{Fields, Reader};
 use super::references::{Kind, References};
+use super::spacing::Spacing;
 use super::steps::{Context, probability};
 use crate::plan::resolved::{
-    CellMean, Change, ChangeInterval, ChangeIntervalMethod, Choice, Estimate, FactorPart, LevelWeight, SmallSample, Standardizer,
-    VarianceExplainedKind,
+    CellMean, Change, ChangeInterval, ChangeIntervalMethod, Choice, Comparison, Estimate, FactorPart, LevelWeight, Measure, SmallSample,
+    Standardizer, VarianceExplainedKind,
 };
 use crate::plan::syntax::tree::Node;
 
-const LATER: &[&str] = &["differences", "standardized difference", "difference in standardized change", "responders", "reliable change"];
+/// What an estimate reports.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum Reports {
+    CellMeans,
+    Change,
+    Explained,
+    Differences,
+    Comparison(Measure),
+}
+
+const KINDS: &[(&str, Reports)] = &[
+    ("cell means", Reports::CellMeans),
+    ("differences", Reports::Differences),
+    ("standardized change", Reports::Change),
+    ("standardized difference", Reports::Comparison(Measure::StandardizedDifference)),
+    ("difference in standardized change", Reports::Comparison(Measure::DifferenceInStandardizedChange)),
+    ("probability of superiority", Reports::Comparison(Measure::ProbabilityOfSuperiority)),
+    ("robust standardized difference", Reports::Comparison(Measure::RobustStandardizedDifference)),
+    ("responders", Reports::Comparison(Measure::Responders)),
+    ("reliable change", Reports::Comparison(Measure::ReliableChange)),
+    ("variance explained", Reports::Explained),
+];
+
+/// Keys of an estimate that not every one has.
+const OWN_KEYS: &[&str] = &[
+    "split",
+    "spacing",
+    "within each",
+    "error",
+    "weights",
+    "standardizer",
+    "small-sample correction",
+    "interval",
+    "reaching",
+    "reliability",
+    "of",
+    "kind",
+    "measured factors",
+];
 
 /// One less a number, as decimals: 0.95 for 0.05.
 pub(super) fn complement(level: f64) -> f64 {
@@ -25,24 +66,31 @@ pub(super) fn estimate(
     id: &str,
     context: &Context<'_>,
     references: &References<'_>,
+    outcome: Option<usize>,
 ) -> Option<Estimate> {
     let node = fields.get("estimate")?;
-    let words = [("cell means", 0), ("standardized change", 1), ("variance explained", 2)];
-    let what = reader.word(node, "`estimate`", &words, LATER)?;
+    let what = reader.word(node, "`estimate`", KINDS, &[])?;
     let allowed: &[&str] = match what {
-        0 => &["interval"],
-        1 => &["split", "within each", "standardizer", "small-sample correction", "interval"],
-        _ => &["of", "kind", "measured factors", "interval"],
+        Reports::CellMeans => &["interval"],
+        Reports::Change => &["split", "within each", "standardizer", "small-sample correction", "interval"],
+        Reports::Explained => &["of", "kind", "measured factors", "interval"],
+        Reports::Differences => &["split", "spacing", "within each", "error", "weights", "interval"],
+        Reports::Comparison(measure) => comparisons::keys(measure),
     };
-    for key in ["split", "within each", "standardizer", "small-sample correction", "interval", "of", "kind", "measured factors"] {
-        if let Some(entry) = fields.entry(key).filter(|_| !allowed.contains(&key)) {
-            reader.error("misplaced-key", entry.key_span, format!("`{key}` has no use for `{}`", words[what].0), "here", "remove it");
+    for key in OWN_KEYS {
+        if let Some(entry) = fields.entry(key).filter(|_| !allowed.contains(key)) {
+            let name = node.text().unwrap_or("");
+            reader.error("misplaced-key", entry.key_span, format!("`{key}` has no use for `{name}`"), "here", "remove it");
         }
     }
     match what {
-        0 => cell_means(reader, fields, id, context),
-        1 => standardized_change(reader, fields, id, context, references),
-        _ => variance_explained(reader, fields, id, context, references),
+        Reports::CellMeans => cell_means(reader, fields, id, context),
+        Reports::Change => standardized_change(reader, fields, id, context, references),
+        Reports::Explained => variance_explained(reader, fields, id, context, references),
+        Reports::Differences => comparisons::differences(reader, fields, id, context, references, outcome),
+        Reports::Comparison(measure) => {
+            comparisons::comparison(reader, fields, id, context, references, outcome, measure).map(Estimate::Comparison)
+        }
     }
 }
 
@@ -52,11 +100,14 @@ pub(super) fn references_of(estimate: &Estimate) -> Vec<&str> {
         Estimate::CellMeans { items, .. } => items.iter().map(|item| item.reference.as_str()).collect(),
         Estimate::StandardizedChange { items, .. } => items.iter().map(|item| item.reference.as_str()).collect(),
         Estimate::VarianceExplained { references, .. } => references.iter().map(String::as_str).collect(),
+        Estimate::Differences { hypotheses: items, .. } | Estimate::Comparison(Comparison { items, .. }) => {
+            items.iter().map(|item| item.reference.as_str()).collect()
+        }
     }
 }
 
 /// `interval: {level, ...}`: the level, or its default.
-fn interval_level(reader: &Reader<'_>, fields: &Fields<'_>, keys: &[&str], default: f64) -> Option<f64> {
+pub(super) fn interval_level(reader: &Reader<'_>, fields: &Fields<'_>, keys: &[&str], default: f64) -> Option<f64> {
     let Some(node) = fields.get("interval") else { return Some(default) };
     let interval = reader.map(node, "`interval`", keys, &[])?;
     let Some(node) = interval.get("level") else { return Some(default) };
@@ -114,24 +165,17 @@ fn standardized_change(
             "say what divides the change: the choice moves the answer, and there is no default",
         )
         .and_then(|node| choice(reader, node, references, "`standardizer`", &mut |node| reader.word(node, "`standardizer`", &words, &[])));
-    let words =
-        [("no", SmallSample::No), ("yes", SmallSample::Yes), ("approximate", SmallSample::Approximate), ("both", SmallSample::Both)];
-    let small_sample_correction = fields.get("small-sample correction").map_or(Some(Choice::Fixed(SmallSample::No)), |node| {
-        choice(reader, node, references, "`small-sample correction`", &mut |node| {
-            reader.word(node, "`small-sample correction`", &words, &[])
-        })
-    });
-    let level = interval_level(reader, fields, &["level", "method"], complement(context.alpha));
+    let small_sample_correction = small_sample_correction(reader, fields, references);
+    let level = interval_level(reader, fields, &["level", "method", "resamples"], complement(context.alpha));
     let method = fields.get("interval").and_then(|node| node.get("method")).map(|node| {
         let words = [
             ("bonett", ChangeIntervalMethod::Bonett),
             ("noncentral t", ChangeIntervalMethod::NoncentralT),
             ("noncentral-t", ChangeIntervalMethod::NoncentralT),
+            ("bca", ChangeIntervalMethod::Bca),
             ("none", ChangeIntervalMethod::None),
         ];
-        choice(reader, node, references, "`method` of the interval", &mut |node| {
-            reader.word(node, "`method` of the interval", &words, &["bca", "bootstrap"])
-        })
+        choice(reader, node, references, "`method` of the interval", &mut |node| reader.word(node, "`method` of the interval", &words, &[]))
     });
     let items = changes(reader, fields, id, context);
     let standardizer = standardizer?;
@@ -139,12 +183,60 @@ fn standardized_change(
         Some(found) => found?,
         None => Choice::Fixed(default_method(&standardizer)),
     };
+    let bootstraps = values(&method).any(|method| *method == ChangeIntervalMethod::Bca);
+    let resamples = resamples(reader, fields, bootstraps)?;
     Some(Estimate::StandardizedChange {
         standardizer,
         small_sample_correction: small_sample_correction?,
-        interval: ChangeInterval { level: level?, method },
+        interval: ChangeInterval { level: level?, method, resamples },
         items: items?,
     })
+}
+
+/// `small-sample correction`.
+pub(super) fn small_sample_correction(
+    reader: &Reader<'_>,
+    fields: &Fields<'_>,
+    references: &References<'_>,
+) -> Option<Choice<SmallSample>> {
+    let words =
+        [("no", SmallSample::No), ("yes", SmallSample::Yes), ("approximate", SmallSample::Approximate), ("both", SmallSample::Both)];
+    fields.get("small-sample correction").map_or(Some(Choice::Fixed(SmallSample::No)), |node| {
+        choice(reader, node, references, "`small-sample correction`", &mut |node| {
+            reader.word(node, "`small-sample correction`", &words, &[])
+        })
+    })
+}
+
+/// `resamples` of an interval, which a bootstrap needs and nothing else has a use for.
+pub(super) fn resamples(reader: &Reader<'_>, fields: &Fields<'_>, bootstraps: bool) -> Option<Option<u64>> {
+    let interval = fields.get("interval").and_then(|node| reader.map(node, "`interval`", &["level", "method", "resamples"], &[]));
+    match (bootstraps, interval.and_then(|interval| interval.get("resamples").map(|node| (interval, node)))) {
+        (true, Some((_, node))) => count(reader, node, "`resamples`").map(Some),
+        (true, None) => {
+            let place = interval.map_or(reader.first_line(fields.span), |interval| reader.first_line(interval.span));
+            reader.error(
+                "missing-key",
+                place,
+                "the bootstrap lacks `resamples`",
+                "`resamples` is missing here",
+                "say how often subjects are drawn again, such as `resamples: 9999`; there is no default",
+            );
+            None
+        }
+        (false, Some((interval, node))) => {
+            let place = interval.entry("resamples").map_or(node.span, |entry| entry.key_span);
+            reader.error(
+                "misplaced-key",
+                place,
+                "`resamples` has no use here",
+                "here",
+                "only `method: bca` draws subjects again; remove it",
+            );
+            None
+        }
+        (false, None) => Some(None),
+    }
 }
 
 /// The interval that goes with a standardizer; none where only resampling would give one.
@@ -167,7 +259,7 @@ fn changes(reader: &Reader<'_>, fields: &Fields<'_>, id: &str, context: &Context
     let design = context.design;
     let within: Vec<_> = design.within.iter().collect();
     let node = reader.required(fields, "split", "the estimate", "say between which occasions, for instance `split: {visit: all pairs}`");
-    let split = node.and_then(|node| splits(reader, node, &within, &(0..within.len()).collect::<Vec<_>>()));
+    let split = node.and_then(|node| splits(reader, node, &within, &(0..within.len()).collect::<Vec<_>>(), &Spacing::of_step(fields)));
     let groups = within_each(reader, fields, context);
     let (split, node) = (split?, node?);
     groups?;
@@ -278,14 +370,14 @@ fn variance_explained(
             None => sound = false,
             Some(known) => match known.kind {
                 Kind::One { .. } => of.push(known.reference.clone()),
-                Kind::Several => of.extend(
+                Kind::Several { claims: false } => of.extend(
                     references
                         .all()
                         .iter()
                         .filter(|other| other.step == known.step && matches!(other.kind, Kind::One { .. }))
                         .map(|other| other.reference.clone()),
                 ),
-                Kind::Screen | Kind::Estimate => {
+                Kind::Screen | Kind::Estimate | Kind::Claim | Kind::Several { claims: true } => {
                     reader.error("wrong-type", span, format!("{} explains no variance", known.in_words()), "not a test", "name a test");
                     sound = false;
                 }
@@ -298,11 +390,16 @@ fn variance_explained(
 }
 
 fn kinds(reader: &Reader<'_>, fields: &Fields<'_>) -> Option<Vec<VarianceExplainedKind>> {
-    let node: &Node =
-        reader.required(fields, "kind", "the estimate", "write `kind: [partial eta squared]`, or `generalized eta squared`, or both")?;
+    let node: &Node = reader.required(
+        fields,
+        "kind",
+        "the estimate",
+        "write `kind: [partial eta squared]`, or `generalized eta squared`, or `omega squared`, or several of them",
+    )?;
     let words = [
         ("partial eta squared", VarianceExplainedKind::PartialEtaSquared),
         ("generalized eta squared", VarianceExplainedKind::GeneralizedEtaSquared),
+        ("omega squared", VarianceExplainedKind::OmegaSquared),
     ];
     let items = match node.list() {
         Some(items) => items,
@@ -312,5 +409,5 @@ fn kinds(reader: &Reader<'_>, fields: &Fields<'_>) -> Option<Vec<VarianceExplain
         reader.error("missing-key", node.span, "`kind` is empty", "here", "name a form");
         return None;
     }
-    items.iter().map(|item| reader.word(item, "`kind` of variance explained", &words, &["omega squared"])).collect()
+    items.iter().map(|item| reader.word(item, "`kind` of variance explained", &words, &[])).collect()
 }

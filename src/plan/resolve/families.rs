@@ -1,9 +1,11 @@
-//! Families of tests, and conclusions.
+//! Families of tests.
 
-use super::conditions::condition;
-use super::reader::Reader;
+use super::graphs;
+use super::methods::{count, values};
+use super::reader::{Fields, Reader};
 use super::references::{Kind, References};
-use crate::plan::resolved::{Action, Conclusion, Condition, Control, Family, Quoted, Role, SayPart, Step};
+use super::steps::Context;
+use crate::plan::resolved::{Action, Control, Design, ErrorTerm, Factor, FactorPart, Family, Hypothesis, Method, Role, Step, Test};
 use crate::plan::syntax::tree::Node;
 use crate::text::source::Span;
 use std::collections::HashMap;
@@ -19,9 +21,12 @@ const CONTROLS: &[(&str, Control)] = &[
     ("benjamini-hochberg", Control::BenjaminiHochberg),
     ("benjamini-yekutieli", Control::BenjaminiYekutieli),
     ("fixed sequence", Control::FixedSequence),
+    ("shaffer", Control::Shaffer),
+    ("fallback", Control::Fallback),
+    ("graph", Control::Graph),
+    ("max-t", Control::MaxT),
+    ("westfall-young", Control::WestfallYoung),
 ];
-
-const LATER_CONTROLS: &[&str] = &["shaffer", "fallback", "graph", "max-t", "westfall-young"];
 
 /// Reads the families. Identifiers may repeat neither each other nor a step's.
 pub(super) fn families(
@@ -29,13 +34,13 @@ pub(super) fn families(
     node: &Node,
     steps: &[Option<Step>],
     references: &References<'_>,
-    alpha: f64,
+    context: &Context<'_>,
 ) -> Option<Vec<Family>> {
     let items = reader.list(node, "`families`")?;
     let mut taken: HashMap<String, Span> = references.steps.iter().cloned().collect();
     let mut member_of: HashMap<String, Span> = HashMap::new();
     let found: Vec<Option<Family>> =
-        items.iter().map(|item| family(reader, item, steps, references, alpha, &mut taken, &mut member_of)).collect();
+        items.iter().map(|item| family(reader, item, steps, references, context, &mut taken, &mut member_of)).collect();
     found.into_iter().collect()
 }
 
@@ -44,11 +49,11 @@ fn family(
     node: &Node,
     steps: &[Option<Step>],
     references: &References<'_>,
-    alpha: f64,
+    context: &Context<'_>,
     taken: &mut HashMap<String, Span>,
     member_of: &mut HashMap<String, Span>,
 ) -> Option<Family> {
-    let fields = reader.map(node, "a family", &["id", "tests", "control", "alpha"], &["weights", "transfer"])?;
+    let fields = reader.map(node, "a family", &["id", "tests", "control", "alpha", "weights", "transfer", "deals"], &[])?;
     let id = reader
         .required(&fields, "id", "the family", "the report refers to it by its id")
         .and_then(|node| Some((reader.text(node, "`id`")?, node.span)));
@@ -68,7 +73,8 @@ fn family(
         "the family",
         "say how the error over its tests is controlled, for instance `control: holm`; there is no default",
     );
-    let control = control_node.and_then(|node| reader.word(node, "`control`", CONTROLS, LATER_CONTROLS));
+    let control = control_node.and_then(|node| reader.word(node, "`control`", CONTROLS, &[]));
+    let alpha = context.alpha;
     let own_alpha = fields.get("alpha").map_or(Some(alpha), |node| {
         let own = super::steps::probability(reader, node, "a family's `alpha`")?;
         if own > alpha {
@@ -128,7 +134,157 @@ fn family(
             return None;
         }
     }
-    Some(Family { id: id.to_owned(), members, control, alpha: own_alpha? })
+    let shares = graphs::shares(reader, &fields, control, &members)?;
+    let deals = deals(reader, &fields, control, own_alpha?)?;
+    if let Some(node) = control_node {
+        let members: Vec<(&Step, &Test, &Hypothesis)> = members.iter().filter_map(|member| test_of(member, steps, references)).collect();
+        fits(reader, node, control, context.design, &members)?;
+    }
+    Some(Family { id: id.to_owned(), members, control, alpha: own_alpha?, weights: shares.weights, transfer: shares.transfer, deals })
+}
+
+/// The step and hypothesis that a member refers to.
+fn test_of<'s>(member: &str, steps: &'s [Option<Step>], references: &References<'_>) -> Option<(&'s Step, &'s Test, &'s Hypothesis)> {
+    let step = steps[references.get(member)?.step].as_ref()?;
+    let Action::Test(test) = &step.action else { return None };
+    test.hypotheses.iter().find(|one| one.reference == member).map(|hypothesis| (step, test, hypothesis))
+}
+
+fn deals(reader: &Reader<'_>, fields: &Fields<'_>, control: Control, alpha: f64) -> Option<Option<u64>> {
+    if control != Control::WestfallYoung {
+        super::steps::misplaced(reader, fields, "deals", "only `westfall-young` deals arms again");
+        return Some(None);
+    }
+    let node = reader.required(
+        fields,
+        "deals",
+        "the family",
+        "say how often the arms are dealt again, such as `deals: 9999`; all deals are listed where there are no more than that",
+    )?;
+    let deals = count(reader, node, "`deals`")?;
+    if 1.0 / (deals as f64 + 1.0) > alpha {
+        reader.error(
+            "too-few-deals",
+            node.span,
+            format!("with {deals} deals no p-value can be below {}, which is above the alpha of {alpha}", 1.0 / (deals as f64 + 1.0)),
+            "too few",
+            "ask for more deals, 9999 for instance",
+        );
+        return None;
+    }
+    Some(Some(deals))
+}
+
+/// Whether the members are what the control is made for.
+fn fits(reader: &Reader<'_>, node: &Node, control: Control, design: &Design, members: &[(&Step, &Test, &Hypothesis)]) -> Option<()> {
+    let refuse = |message: String, hint: &str| {
+        reader.error("control-does-not-fit", node.span, message, "does not fit", hint);
+        None
+    };
+    match control {
+        Control::Shaffer if !all_pairs(design, members) => refuse(
+            "Shaffer's divisors are those of all pairs of levels of one factor, and the family is not that".to_owned(),
+            "let the family hold one step that splits one factor into `all pairs`, or use `holm`",
+        ),
+        Control::MaxT | Control::WestfallYoung => {
+            let word = if control == Control::MaxT { "max-t" } else { "westfall-young" };
+            if let Some((_, _, other)) = members.iter().find(|(step, test, one)| {
+                !one.comparison || step.outcome != members[0].0.outcome || test.margin.is_some() || test.sides != members[0].1.sides
+            }) {
+                return refuse(
+                    format!(
+                        "`{word}` compares statistics of single contrasts of one outcome, all one-sided or all two-sided, and `{}` is not of that kind",
+                        other.reference
+                    ),
+                    "split effects into single comparisons, or use `holm`",
+                );
+            }
+            if let Some((_, test, _)) = members.iter().find(|(_, test, _)| values(&test.method).any(|method| *method != Method::Univariate))
+            {
+                return refuse(
+                    format!("`{word}` needs the t of univariate tests; the test of `{}` uses another method", test.effect.join(" by ")),
+                    "leave `method` out of these tests",
+                );
+            }
+            if members.iter().any(|(_, test, _)| test.covariates != members[0].1.covariates) {
+                return refuse(format!("`{word}` needs tests with the same covariates"), "give all its tests the same covariates");
+            }
+            if control == Control::WestfallYoung && !members[0].1.covariates.is_empty() {
+                return refuse(
+                    "`westfall-young` deals arms, and takes no covariates".to_owned(),
+                    "leave `covariates` out of its tests, or use `max-t` or `holm`",
+                );
+            }
+            if control == Control::MaxT { Some(()) } else { dealt(design, members, &refuse) }
+        }
+        _ => Some(()),
+    }
+}
+
+fn dealt(design: &Design, members: &[(&Step, &Test, &Hypothesis)], refuse: &dyn Fn(String, &str) -> Option<()>) -> Option<()> {
+    let Some(randomised) = &design.randomised else {
+        return refuse(
+            "nothing says what was randomised, so that nothing can be dealt again".to_owned(),
+            "say it under `design`, as in `randomised: {factors: [arm], scheme: blocks, strata: [site]}`",
+        );
+    };
+    let named = |factor: &Factor| randomised.factors.contains(&factor.name);
+    for (_, _, hypothesis) in members {
+        let moves =
+            design.between.iter().zip(&hypothesis.between).any(|(factor, part)| super::hypotheses::df(factor, part) > 0 && named(factor));
+        if !moves {
+            return refuse(
+                format!("`{}` compares no arms that were randomised: dealing them again cannot move it", hypothesis.reference),
+                "keep tests of other kinds out of the family",
+            );
+        }
+    }
+    let arms: usize = design.between.iter().filter(|factor| named(factor)).map(|factor| factor.levels.len()).product();
+    if arms <= 2 {
+        return Some(());
+    }
+    if let Some((step, _, _)) = members.iter().find(|(step, _, _)| step.role == Role::Confirmatory) {
+        return refuse(
+            format!(
+                "with {arms} arms `westfall-young` controls the error only where no arm differs from another, so that `{}` cannot be confirmatory",
+                step.id
+            ),
+            "use `holm` or `max-t`, or give its tests `role: supportive`",
+        );
+    }
+    if let Some((step, _, _)) = members.iter().find(|(_, test, _)| values(&test.error).any(|error| *error == ErrorTerm::Own)) {
+        return refuse(
+            format!("with {arms} arms `westfall-young` cannot use the own error of `{}`, which changes with the arms dealt to it", step.id),
+            "use `error: own occasions` or `pooled`",
+        );
+    }
+    Some(())
+}
+
+/// Whether the members are all pairs of levels of one factor, each once, and nothing else.
+fn all_pairs(design: &Design, members: &[(&Step, &Test, &Hypothesis)]) -> bool {
+    let factors: Vec<&Factor> = design.between.iter().chain(&design.within).collect();
+    let parts = |one: &Hypothesis| -> Vec<FactorPart> { one.between.iter().chain(&one.within).cloned().collect() };
+    let Some(first) = members.first().map(|(_, _, one)| parts(one)) else { return false };
+    let varies = |place: usize| members.iter().any(|(_, _, one)| parts(one)[place] != first[place]);
+    let varying: Vec<usize> = (0..factors.len()).filter(|place| varies(*place)).collect();
+    let place = match varying.as_slice() {
+        [one] => *one,
+        _ => return false,
+    };
+    let levels = &factors[place].levels;
+    let mut seen: Vec<(usize, usize)> = Vec::new();
+    for (_, _, one) in members {
+        let part = &parts(one)[place];
+        let Some((first, second)) = super::hypotheses::pair(factors[place], part) else { return false };
+        let number = |level: &str| levels.iter().position(|other| other == level).unwrap_or(0);
+        let pair = (number(first).min(number(second)), number(first).max(number(second)));
+        if seen.contains(&pair) {
+            return false;
+        }
+        seen.push(pair);
+    }
+    seen.len() == levels.len() * (levels.len() - 1) / 2
 }
 
 fn member(reader: &Reader<'_>, reference: &str, span: Span, references: &References<'_>) -> Option<Vec<String>> {
@@ -137,12 +293,12 @@ fn member(reader: &Reader<'_>, reference: &str, span: Span, references: &Referen
         return None;
     };
     match known.kind {
-        Kind::One { .. } => Some(vec![known.reference.clone()]),
-        Kind::Several => Some(
+        Kind::One { .. } | Kind::Claim => Some(vec![known.reference.clone()]),
+        Kind::Several { .. } => Some(
             references
                 .all()
                 .iter()
-                .filter(|other| other.step == known.step && matches!(other.kind, Kind::One { .. }))
+                .filter(|other| other.step == known.step && matches!(other.kind, Kind::One { .. } | Kind::Claim))
                 .map(|other| other.reference.clone())
                 .collect(),
         ),
@@ -167,10 +323,10 @@ pub(super) fn families_judged_in_time(reader: &Reader<'_>, families: &[Family], 
         let reads = |family: &&Family| {
             family.members.iter().any(|member| {
                 *member == used.reference
-                    || (known.kind == Kind::Several && references.get(member).is_some_and(|one| one.step == known.step))
+                    || (matches!(known.kind, Kind::Several { .. }) && references.get(member).is_some_and(|one| one.step == known.step))
             })
         };
-        for family in families.iter().filter(reads).filter(|family| family.control != Control::FixedSequence) {
+        for family in families.iter().filter(reads).filter(|family| !family.control.judges_in_turn()) {
             let last = family.members.iter().filter_map(|member| references.get(member)).max_by_key(|member| member.step);
             if let Some(last) = last.filter(|last| last.step >= by) {
                 let (id, place) = &references.steps[last.step];
@@ -178,158 +334,9 @@ pub(super) fn families_judged_in_time(reader: &Reader<'_>, families: &[Family], 
                     "family-not-judged-yet",
                     [(used.span, "read here"), (*place, "the family's last member")],
                     format!("`{}` is judged with its family `{}`, which is complete only after the step `{id}`", used.reference, family.id),
-                    "a family is judged once, after its last member has been computed: move this step below it, take one of them out of the family, or use `control: fixed sequence`",
+                    "a family is judged once, after its last member has been computed: move this step below it, take one of them out of the family, or use a control that judges in turn: `fixed sequence`, `fallback` or `graph`",
                 );
             }
         }
     }
-}
-
-/// Reads the conclusions.
-pub(super) fn conclusions(reader: &Reader<'_>, node: &Node, references: &References<'_>) -> Option<Vec<Conclusion>> {
-    let items = reader.list(node, "`conclusions`")?;
-    let mut found = Vec::new();
-    let mut otherwise: Option<Span> = None;
-    for item in items {
-        if let Some(first) = otherwise {
-            reader.conflict(
-                "conclusion-unreachable",
-                [(reader.first_line(item.span), "never reached"), (first, "this catches everything")],
-                "a conclusion after `otherwise` can never be drawn",
-                "put `otherwise` last",
-            );
-        }
-        let Some(fields) = reader.map(item, "a conclusion", &["when", "say", "otherwise"], &[]) else {
-            found.push(None);
-            continue;
-        };
-        found.push(match (fields.entry("otherwise"), fields.get("when"), fields.get("say")) {
-            (Some(entry), None, None) => {
-                otherwise = Some(entry.key_span);
-                said(reader, &entry.node, references).map(|say| Conclusion { when: None, say })
-            }
-            (None, Some(when), Some(say)) => {
-                let when: Option<Condition> = condition(reader, when, references);
-                let say = said(reader, say, references);
-                when.zip(say).map(|(when, say)| Conclusion { when: Some(when), say })
-            }
-            _ => {
-                reader.error(
-                    "wrong-case",
-                    reader.first_line(item.span),
-                    "a conclusion is `{when: ..., say: ...}`, and the last one `{otherwise: ...}`",
-                    "neither",
-                    "write one of the two forms",
-                );
-                None
-            }
-        });
-    }
-    found.into_iter().collect()
-}
-
-const QUOTES: &[(&str, Quoted)] = &[
-    ("p", Quoted::P),
-    ("adjusted p", Quoted::AdjustedP),
-    ("estimate", Quoted::Estimate),
-    ("interval", Quoted::Interval),
-    ("standard error", Quoted::StandardError),
-    ("statistic", Quoted::Statistic),
-    ("df", Quoted::Df),
-    ("n", Quoted::N),
-];
-
-/// Words with quotes of results in braces.
-fn said(reader: &Reader<'_>, node: &Node, references: &References<'_>) -> Option<Vec<SayPart>> {
-    let text = reader.text(node, "what a conclusion says")?.trim();
-    let mut parts = Vec::new();
-    let mut rest = text;
-    let mut sound = true;
-    while let Some(open) = rest.find('{') {
-        if open > 0 {
-            parts.push(SayPart::Text(rest[..open].to_owned()));
-        }
-        let Some(length) = rest[open..].find('}') else {
-            reader.error(
-                "quote-not-closed",
-                node.span,
-                "a brace opens a quote and is not closed",
-                "in this text",
-                "write `{REFERENCE: estimate}`, or leave the brace out",
-            );
-            return None;
-        };
-        let quote = &rest[open + 1..open + length];
-        match quoted(reader, node, quote, references) {
-            Some(part) => parts.push(part),
-            None => sound = false,
-        }
-        rest = &rest[open + length + 1..];
-    }
-    if !rest.is_empty() {
-        parts.push(SayPart::Text(rest.to_owned()));
-    }
-    sound.then_some(parts)
-}
-
-fn quoted(reader: &Reader<'_>, node: &Node, quote: &str, references: &References<'_>) -> Option<SayPart> {
-    // The place of the quote where it stands on one line of the source, else that of the whole text.
-    let written = &reader.source.text()[node.span.start..node.span.end];
-    let span = written.find(quote).map_or(node.span, |at| Span::new(node.span.start + at, node.span.start + at + quote.len()));
-    let Some((reference, what)) = quote.rsplit_once(": ") else {
-        reader.error(
-            "unknown-quote",
-            span,
-            format!("`{{{quote}}}` does not say which number is quoted"),
-            "here",
-            "write `{REFERENCE: WHAT}`; WHAT is p, adjusted p, estimate, interval, standard error, statistic, df or n",
-        );
-        return None;
-    };
-    let what = what.trim();
-    let Some((_, number)) = QUOTES.iter().find(|(word, _)| *word == what) else {
-        let words: Vec<&str> = QUOTES.iter().map(|(word, _)| *word).collect();
-        let hint = crate::text::suggest::nearest(what, words.iter().copied())
-            .map_or_else(|| format!("it may be: {}", words.join(", ")), |near| format!("did you mean `{near}`?"));
-        reader.error("unknown-quote", span, format!("`{what}` is not a number that can be quoted"), "here", hint);
-        return None;
-    };
-    match references.get(reference.trim()) {
-        Some(known) if known.kind == Kind::Several || known.kind == Kind::Screen && *number != Quoted::P => {
-            reader.error(
-                "unknown-quote",
-                span,
-                format!("{} has no `{what}` of its own", known.in_words()),
-                "here",
-                "quote one of its results",
-            );
-            None
-        }
-        Some(known) => Some(SayPart::Quote { reference: known.reference.clone(), what: *number }),
-        None => {
-            references.unknown(reader, reference.trim(), span);
-            None
-        }
-    }
-}
-
-/// Every step and hypothesis with its label, for `check --tests`.
-pub(super) fn list(steps: &[Step]) -> Vec<(String, String)> {
-    steps
-        .iter()
-        .flat_map(|step| match &step.action {
-            Action::Test(test) => {
-                let mut of_step: Vec<(String, String)> =
-                    test.hypotheses.iter().map(|one| (one.reference.clone(), one.label.clone())).collect();
-                if of_step.len() > 1 {
-                    of_step.insert(0, (step.id.clone(), format!("{} tests", of_step.len())));
-                }
-                of_step
-            }
-            Action::Screen(_) => vec![(step.id.clone(), "screen".to_owned())],
-            Action::Estimate(estimate) => {
-                super::estimates::references_of(estimate).into_iter().map(|name| (name.to_owned(), "estimate".to_owned())).collect()
-            }
-        })
-        .collect()
 }

@@ -2,16 +2,27 @@
 //!
 //! All errors of a plan are found in one go. A part that is in error is left out, and what depends on it stays silent.
 
+mod comparisons;
+mod conclusions;
 mod conditions;
+mod contrasts;
+mod corrections;
 mod data;
 mod design;
+mod effects;
 mod estimates;
 mod families;
+mod graphs;
 mod hypotheses;
+mod margins;
+mod methods;
 mod prose;
 mod reader;
 mod references;
+mod screens;
+mod spacing;
 mod steps;
+mod tests;
 
 use crate::plan::resolved::{CompleteOver, DECISION_RULE, MissingData, MissingRule, RESOLVED_FORMAT, ResolvedPlan, Step};
 use crate::plan::syntax::tree::{Node, Value};
@@ -79,7 +90,7 @@ pub fn resolve(source: &Source, root: &Node) -> Resolution {
 
 /// Every reference of a plan with its label, in plan order.
 pub fn references(plan: &ResolvedPlan) -> Vec<(String, String)> {
-    families::list(&plan.steps)
+    conclusions::list(&plan.steps)
 }
 
 fn plan(reader: &Reader<'_>, root: &Node, places: &mut Places) -> Option<ResolvedPlan> {
@@ -114,7 +125,8 @@ fn plan(reader: &Reader<'_>, root: &Node, places: &mut Places) -> Option<Resolve
     let (mut steps, mut families, mut conclusions) = (None, None, None);
     if let (Some(design), Some(outcomes), Some(nodes), Some(ids)) = (&design, &outcomes, step_nodes, &ids) {
         places.steps = ids.iter().cloned().collect();
-        let context = steps::Context { design, outcomes, alpha: alpha.unwrap_or(0.05) };
+        let columns = data.as_ref().map_or(&[][..], |data| &data.columns);
+        let context = steps::Context { design, outcomes, columns, alpha: alpha.unwrap_or(0.05) };
         let mut references = References::new(ids);
         let found: Vec<Option<Step>> = nodes
             .iter()
@@ -125,12 +137,11 @@ fn plan(reader: &Reader<'_>, root: &Node, places: &mut Places) -> Option<Resolve
             })
             .collect();
         references.current = None;
-        families =
-            fields.get("families").map_or(Some(Vec::new()), |node| families::families(reader, node, &found, &references, context.alpha));
+        families = fields.get("families").map_or(Some(Vec::new()), |node| families::families(reader, node, &found, &references, &context));
         families::families_judged_in_time(reader, families.as_deref().unwrap_or(&[]), &references);
         conclusions = reader
             .required(&fields, "conclusions", what, "say what will be concluded from each way the tests can turn out")
-            .and_then(|node| families::conclusions(reader, node, &references));
+            .and_then(|node| conclusions::conclusions(reader, node, &references));
         steps = found.into_iter().collect::<Option<Vec<_>>>();
     }
     let prose = prose::prose(reader, &fields, places);

@@ -1,7 +1,7 @@
 //! What can be referred to, and by which verdicts.
 
 use super::reader::Reader;
-use crate::plan::resolved::Hypothesis;
+use crate::plan::resolved::{Test, TestKind};
 use crate::text::source::Span;
 use crate::text::suggest::nearest;
 use std::cell::RefCell;
@@ -16,8 +16,12 @@ pub(super) enum Kind {
         comparison: bool,
         favours: Option<[String; 2]>,
     },
-    /// A step of several tests.
-    Several,
+    /// One test of a claim: equivalence or non-inferiority.
+    Claim,
+    /// A step of several tests, which may be claims.
+    Several {
+        claims: bool,
+    },
     /// Something of an estimate step, which has no verdict.
     Estimate,
 }
@@ -38,7 +42,9 @@ impl Known {
             Kind::Screen => &["departure shown", "no departure shown", "refused"],
             Kind::One { comparison: false, .. } => &["significant", "not significant", "not tested", "refused"],
             Kind::One { .. } => &["significant", "above zero", "below zero", "not significant", "not tested", "refused"],
-            Kind::Several => &["any significant", "all significant", "none significant", "not tested"],
+            Kind::Claim => &["shown", "not shown", "not tested", "refused"],
+            Kind::Several { claims: false } => &["any significant", "all significant", "none significant", "not tested"],
+            Kind::Several { claims: true } => &["any shown", "all shown", "none shown", "not tested"],
             Kind::Estimate => &[],
         };
         let mut words: Vec<String> = words.iter().map(|word| (*word).to_owned()).collect();
@@ -52,7 +58,8 @@ impl Known {
         let what = match self.kind {
             Kind::Screen => "the screen",
             Kind::One { .. } => "the test",
-            Kind::Several => "the step of several tests",
+            Kind::Claim => "the test of a claim",
+            Kind::Several { .. } => "the step of several tests",
             Kind::Estimate => "the estimate",
         };
         format!("{what} `{}`", self.reference)
@@ -99,13 +106,17 @@ impl<'n> References<'n> {
         self.known.push(Known { reference, kind, step });
     }
 
-    pub fn define_hypotheses(&mut self, reader: &Reader<'_>, id: &str, hypotheses: &[Hypothesis], step: usize) {
-        for hypothesis in hypotheses {
+    pub fn define_tests(&mut self, reader: &Reader<'_>, id: &str, test: &Test, step: usize) {
+        let claims = matches!(test.kind, TestKind::Equivalence | TestKind::NonInferiority);
+        for hypothesis in &test.hypotheses {
             let favours = hypothesis.favours.as_ref().map(|favours| [favours.above.clone(), favours.below.clone()]);
-            self.define(reader, hypothesis.reference.clone(), Kind::One { comparison: hypothesis.comparison, favours }, step);
+            // The largest contrast is found in the data, so that its direction says nothing that could be foreseen.
+            let comparison = hypothesis.comparison && test.kind != TestKind::LargestContrast;
+            let kind = if claims { Kind::Claim } else { Kind::One { comparison, favours } };
+            self.define(reader, hypothesis.reference.clone(), kind, step);
         }
-        if hypotheses.len() > 1 {
-            self.define(reader, id.to_owned(), Kind::Several, step);
+        if test.hypotheses.len() > 1 {
+            self.define(reader, id.to_owned(), Kind::Several { claims }, step);
         }
     }
 

@@ -3,8 +3,12 @@
 //! This is what is hashed, executed and printed. Its canonical JSON is `resolved.json`. Weights and numbers stand as
 //! they were written; nothing here is computed from them. Factor parts are in the order of the design's factors.
 
+mod estimates;
+mod judging;
 mod steps;
 
+pub use estimates::*;
+pub use judging::*;
 pub use steps::*;
 
 use serde::{Deserialize, Serialize};
@@ -59,6 +63,37 @@ pub struct ResolvedPlan {
     pub planning: serde_json::Value,
     /// Findings that the author answers for, by rule: the reason.
     pub acknowledged: BTreeMap<String, String>,
+}
+
+impl ResolvedPlan {
+    /// Columns of the data that serve as covariates, each once, in the order in which the steps name them.
+    pub fn covariate_columns(&self) -> Vec<&str> {
+        let mut columns: Vec<&str> = Vec::new();
+        for step in &self.steps {
+            let Action::Test(test) = &step.action else { continue };
+            for covariate in &test.covariates {
+                if let Covariate::Column(column) = covariate
+                    && !columns.contains(&column.as_str())
+                {
+                    columns.push(column);
+                }
+            }
+        }
+        columns
+    }
+
+    /// Columns of the data within whose values arms are dealt again, where some step or family does so.
+    pub fn strata_columns(&self) -> Vec<&str> {
+        let tests = |step: &Step| match &step.action {
+            Action::Test(test) => test.deals.is_some(),
+            _ => false,
+        };
+        let deals = self.steps.iter().any(tests) || self.families.iter().any(|family| family.deals.is_some());
+        match &self.design.randomised {
+            Some(randomised) if deals => randomised.strata.iter().map(String::as_str).collect(),
+            _ => Vec::new(),
+        }
+    }
 }
 
 /// What had been collected and seen when the plan was written.

@@ -1,5 +1,9 @@
-//! Steps, hypotheses, conditions, families and conclusions of a resolved plan.
+//! Steps, screens, tests and hypotheses of a resolved plan.
+//!
+//! A key that came with a later release is left out of the resolved form where it says what was always done, so that the
+//! plans sealed before keep their hashes.
 
+use super::{Condition, Estimate, Factor};
 use serde::{Deserialize, Serialize};
 
 /// One step.
@@ -73,9 +77,10 @@ pub struct Case<T> {
 pub struct Screen {
     /// Which assumption.
     pub kind: ScreenKind,
-    /// A p-value at or below this shows a departure.
+    /// Where a departure starts, in the unit of the screen: a p-value at or below it, a share of missing values or a
+    /// residual in absolute size at or above it.
     pub threshold: Choice<f64>,
-    /// Reference of each result: one, or one per occasion for equal variances over several occasions.
+    /// Reference of each result, in the order of the design.
     pub references: Vec<String>,
 }
 
@@ -95,6 +100,26 @@ pub enum ScreenKind {
         /// Levene's test on the mean or Brown and Forsythe's on the median.
         method: Choice<VarianceMethod>,
     },
+    /// Normal residuals at each occasion and on adjacent differences, by Shapiro and Wilk's W.
+    NormalResiduals,
+    /// Subjects who lie far from the rest of their cell.
+    OutlyingValues {
+        /// How far is measured.
+        method: Choice<OutlyingMethod>,
+    },
+    /// Share of missing values of each cell at each occasion.
+    Missingness,
+}
+
+/// How the distance of a subject from the rest of its cell is measured.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+pub enum OutlyingMethod {
+    /// Externally studentized residual at each occasion; the threshold is its absolute size.
+    #[serde(rename = "studentized residuals")]
+    StudentizedResiduals,
+    /// Mahalanobis distance over all occasions; the threshold is the probability of one as large or larger.
+    #[serde(rename = "mahalanobis distances")]
+    MahalanobisDistances,
 }
 
 /// Centre used by a test of equal variances.
@@ -115,7 +140,23 @@ pub struct Test {
     /// Factors of the effect, between ones first, in design order.
     pub effect: Vec<String>,
     /// How a hypothesis is tested.
-    pub method: Method,
+    #[serde(with = "plain_where_fixed")]
+    pub method: Choice<Method>,
+    /// Which multivariate criterion decides, where the method may be multivariate.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub criterion: Option<Choice<Criterion>>,
+    /// How many deals a randomisation test makes, where the method may be one.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub deals: Option<u64>,
+    /// Covariates of the model.
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub covariates: Vec<Covariate>,
+    /// One-sided or two-sided.
+    #[serde(default, skip_serializing_if = "Sides::are_two")]
+    pub sides: Sides,
+    /// Margins of an equivalence or non-inferiority test.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub margin: Option<Margin>,
     /// Whose variation judges it.
     pub error: Choice<ErrorTerm>,
     /// Correction for departures from sphericity.
@@ -128,6 +169,13 @@ pub struct Test {
     pub hypotheses: Vec<Hypothesis>,
 }
 
+impl Test {
+    /// Whether it tests a claim, equivalence or non-inferiority, which is shown or not.
+    pub fn is_claim(&self) -> bool {
+        matches!(self.kind, TestKind::Equivalence | TestKind::NonInferiority)
+    }
+}
+
 /// Kind of a test step.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
 #[serde(rename_all = "kebab-case")]
@@ -138,6 +186,14 @@ pub enum TestKind {
     PartialInteractions,
     /// The effect of factors at each level of others.
     SimpleEffects,
+    /// Contrasts with weights of their own, or ways of splitting an effect.
+    Contrasts,
+    /// Two one-sided tests against margins.
+    Equivalence,
+    /// One one-sided test against a margin.
+    NonInferiority,
+    /// The product contrast on which an interaction is largest, by a bound that holds for all of them.
+    LargestContrast,
 }
 
 /// How a hypothesis is tested.
@@ -146,6 +202,87 @@ pub enum TestKind {
 pub enum Method {
     /// Univariate F.
     Univariate,
+    /// Criteria of the roots of H E^-1.
+    Multivariate,
+    /// Welch and James: own covariance matrix of each cell (Johansen 1980).
+    WelchJames,
+    /// Arms dealt again among subjects.
+    Randomisation,
+}
+
+/// Criterion of a multivariate test.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(rename_all = "kebab-case")]
+pub enum Criterion {
+    /// Pillai's trace.
+    Pillai,
+    /// Wilks' lambda.
+    Wilks,
+    /// The trace of Hotelling and Lawley.
+    HotellingLawley,
+    /// Roy's largest root.
+    Roy,
+}
+
+/// A covariate, centred at the mean of the subjects analysed.
+#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(rename_all = "lowercase")]
+pub enum Covariate {
+    /// A column of numbers in the data, one value per subject.
+    Column(String),
+    /// A value of an outcome at an occasion that the step's contrasts do not use.
+    Occasion {
+        /// Outcome.
+        outcome: String,
+        /// Level of each within factor, in design order.
+        levels: Vec<String>,
+    },
+}
+
+/// Which departures from the hypothesis count.
+#[derive(Debug, Clone, PartialEq, Eq, Default, Serialize, Deserialize)]
+#[serde(rename_all = "lowercase")]
+pub enum Sides {
+    /// Both directions.
+    #[default]
+    Two,
+    /// One direction.
+    One {
+        /// The level that it favours, or `above zero` or `below zero`.
+        favours: String,
+    },
+}
+
+impl Sides {
+    /// Whether both directions count.
+    pub fn are_two(&self) -> bool {
+        *self == Sides::Two
+    }
+}
+
+/// Margins within which a difference counts as too small to matter.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Margin {
+    /// Lower margin; absent where only the upper one counts.
+    pub lower: Option<f64>,
+    /// Upper margin; absent where only the lower one counts.
+    pub upper: Option<f64>,
+    /// What the margins are multiples of; the outcome's unit where nothing is named.
+    pub standardizer: Option<MarginStandardizer>,
+}
+
+/// Standard deviation, pooled over the cells that a contrast compares, that margins are multiples of.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+pub enum MarginStandardizer {
+    /// At the first occasion that the contrast uses.
+    #[serde(rename = "baseline sd")]
+    BaselineSd,
+    /// Root of the mean of the variances at the occasions that the contrast uses.
+    #[serde(rename = "root mean square sd")]
+    RootMeanSquareSd,
+    /// Of the contrast between occasions.
+    #[serde(rename = "change sd")]
+    ChangeSd,
 }
 
 /// Whose variation judges a piece.
@@ -203,6 +340,8 @@ pub enum CorrectionRule {
 pub enum Weights {
     /// Cell means count alike.
     Equal,
+    /// By the number of subjects analysed.
+    Observed,
 }
 
 /// One hypothesis L B M = 0, as a product over the factors of the design.
@@ -234,6 +373,30 @@ pub enum FactorPart {
     Hold(String),
     /// One contrast: weight of each level named, as written; the others weigh zero.
     Weights(Vec<LevelWeight>),
+    /// A mean of levels: weights as written, which sum to one.
+    Mean(Vec<LevelWeight>),
+    /// The mean of the later levels minus this level.
+    AgainstLater(String),
+    /// The orthogonal polynomial of this degree over the levels, per unit of spacing.
+    Trend {
+        /// 1 is linear.
+        degree: usize,
+        /// Position of each level, as written; evenly spaced ones are 0, 1, 2 and so on.
+        spacing: Vec<f64>,
+    },
+}
+
+impl FactorPart {
+    /// Whether a level of the factor takes part.
+    pub fn weighs(&self, factor: &Factor, level: &str) -> bool {
+        let place = |level: &str| factor.levels.iter().position(|other| other == level);
+        match self {
+            FactorPart::Average | FactorPart::Whole | FactorPart::Trend { .. } => true,
+            FactorPart::Hold(held) => held == level,
+            FactorPart::AgainstLater(first) => place(level) >= place(first),
+            FactorPart::Weights(weights) | FactorPart::Mean(weights) => weights.iter().any(|one| one.level == level && one.weight != 0.0),
+        }
+    }
 }
 
 /// A level and its weight.
@@ -254,245 +417,30 @@ pub struct Favours {
     pub below: String,
 }
 
-/// An estimate step.
-#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
-#[serde(rename_all = "kebab-case")]
-pub enum Estimate {
-    /// Mean of each cell at each occasion with the interval of Student's t within the cell.
-    CellMeans {
-        /// Confidence level.
-        level: f64,
-        /// One item per cell and occasion, cells slowest.
-        items: Vec<CellMean>,
-    },
-    /// Standardized change between two occasions within each cell.
-    StandardizedChange {
-        /// What divides the change.
-        standardizer: Choice<Standardizer>,
-        /// Hedges' small-sample correction.
-        small_sample_correction: Choice<SmallSample>,
-        /// Interval, where one is asked for.
-        interval: ChangeInterval,
-        /// One item per cell and pair of occasions, pairs slowest.
-        items: Vec<Change>,
-    },
-    /// Share of variance that tested effects explain.
-    VarianceExplained {
-        /// References of the tests.
-        of: Vec<String>,
-        /// Which forms.
-        kinds: Vec<VarianceExplainedKind>,
-        /// Factors that are measured, not manipulated; decides the generalized form.
-        measured_factors: Vec<String>,
-        /// Confidence level of the interval of the partial form.
-        level: f64,
-        /// Reference of each result, one per entry of `of`.
-        references: Vec<String>,
-    },
-}
+/// A choice whose fixed value stands as such, as it did before choices of this key could have cases.
+mod plain_where_fixed {
+    use super::{Case, Choice};
+    use serde::{Deserialize, Deserializer, Serialize, Serializer};
 
-/// One cell mean.
-#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
-pub struct CellMean {
-    /// Reference, such as `means / coached at week 6`.
-    pub reference: String,
-    /// In words.
-    pub label: String,
-    /// Number of the between cell.
-    pub cell: usize,
-    /// Number of the occasion.
-    pub occasion: usize,
-}
+    #[derive(Serialize, Deserialize)]
+    #[serde(untagged)]
+    enum Written<T> {
+        Fixed(T),
+        Cases { cases: Vec<Case<T>>, otherwise: T },
+    }
 
-/// One standardized change: within one between cell, `second` minus `first`.
-#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
-pub struct Change {
-    /// Reference, such as `sizes / cast off vs week 6 at coached`.
-    pub reference: String,
-    /// In words.
-    pub label: String,
-    /// Number of the between cell.
-    pub cell: usize,
-    /// Part of each within factor at the first (earlier) score: `Hold` or `Average`.
-    pub first: Vec<FactorPart>,
-    /// Part of each within factor at the second (later) score.
-    pub second: Vec<FactorPart>,
-}
+    pub fn serialize<T: Clone + Serialize, S: Serializer>(choice: &Choice<T>, serializer: S) -> Result<S::Ok, S::Error> {
+        match choice.clone() {
+            Choice::Fixed(value) => Written::Fixed(value),
+            Choice::Cases { cases, otherwise } => Written::Cases { cases, otherwise },
+        }
+        .serialize(serializer)
+    }
 
-/// What divides a change.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
-pub enum Standardizer {
-    /// Mean of the two standard deviations.
-    #[serde(rename = "average sd")]
-    AverageSd,
-    /// Root of the mean of the two variances.
-    #[serde(rename = "root mean square sd")]
-    RootMeanSquareSd,
-    /// Standard deviation at the first occasion.
-    #[serde(rename = "baseline sd")]
-    BaselineSd,
-    /// Standard deviation of the differences.
-    #[serde(rename = "change sd")]
-    ChangeSd,
-    /// Standard deviation of the differences over the root of 2 (1 - r).
-    #[serde(rename = "change sd, correlation removed")]
-    ChangeSdCorrelationRemoved,
-}
-
-/// Hedges' small-sample correction.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
-#[serde(rename_all = "lowercase")]
-pub enum SmallSample {
-    /// d alone.
-    No,
-    /// g by the exact J.
-    Yes,
-    /// g by 1 - 3 / (4 m - 1).
-    Approximate,
-    /// d, and g by the exact J.
-    Both,
-}
-
-/// Interval of a standardized change.
-#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
-pub struct ChangeInterval {
-    /// Confidence level.
-    pub level: f64,
-    /// Method.
-    pub method: Choice<ChangeIntervalMethod>,
-}
-
-/// Method of the interval of a standardized change.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
-#[serde(rename_all = "kebab-case")]
-pub enum ChangeIntervalMethod {
-    /// Bonett's large-sample variance.
-    Bonett,
-    /// Noncentral t inverted.
-    NoncentralT,
-    /// No interval.
-    None,
-}
-
-/// Form of variance explained.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
-pub enum VarianceExplainedKind {
-    /// SS / (SS + SS error).
-    #[serde(rename = "partial eta squared")]
-    PartialEtaSquared,
-    /// Olejnik and Algina's form.
-    #[serde(rename = "generalized eta squared")]
-    GeneralizedEtaSquared,
-}
-
-/// A condition in verdicts. Three-valued: a refusal makes it unknown.
-#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
-#[serde(rename_all = "lowercase")]
-pub enum Condition {
-    /// All must hold.
-    All(Vec<Condition>),
-    /// One must hold.
-    Either(Vec<Condition>),
-    /// Turned over within the tested verdicts only.
-    Not(Box<Condition>),
-    /// The verdict of what is referred to is one of these words.
-    Is {
-        /// A step, or one hypothesis of a step.
-        reference: String,
-        /// The words; any of them will do.
-        verdicts: Vec<String>,
-    },
-}
-
-/// A family of tests.
-#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
-pub struct Family {
-    /// Identifier.
-    pub id: String,
-    /// References of its hypotheses, in order.
-    pub members: Vec<String>,
-    /// How the error is controlled.
-    pub control: Control,
-    /// Level of the family.
-    pub alpha: f64,
-}
-
-/// How a family controls its error.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
-#[serde(rename_all = "kebab-case")]
-pub enum Control {
-    /// Each p as it is.
-    None,
-    /// Bonferroni.
-    Bonferroni,
-    /// Sidak.
-    Sidak,
-    /// Holm.
-    Holm,
-    /// Holm's steps with Sidak's levels.
-    HolmSidak,
-    /// Hochberg.
-    Hochberg,
-    /// Hommel.
-    Hommel,
-    /// Benjamini and Hochberg (false discovery rate).
-    BenjaminiHochberg,
-    /// Benjamini and Yekutieli (false discovery rate under any dependence).
-    BenjaminiYekutieli,
-    /// In the order given, stopping at the first that is not significant.
-    #[serde(rename = "fixed sequence")]
-    FixedSequence,
-}
-
-/// A conclusion.
-#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
-pub struct Conclusion {
-    /// When it applies; `None` for `otherwise`.
-    pub when: Option<Condition>,
-    /// What is said.
-    pub say: Vec<SayPart>,
-}
-
-/// A part of what a conclusion says.
-#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
-#[serde(rename_all = "lowercase")]
-pub enum SayPart {
-    /// Words as written.
-    Text(String),
-    /// A number of a result.
-    Quote {
-        /// Of which result.
-        reference: String,
-        /// Which number.
-        what: Quoted,
-    },
-}
-
-/// A number that a conclusion may quote.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
-pub enum Quoted {
-    /// The p-value, uncorrected for multiplicity.
-    #[serde(rename = "p")]
-    P,
-    /// The adjusted p-value.
-    #[serde(rename = "adjusted p")]
-    AdjustedP,
-    /// The estimate.
-    #[serde(rename = "estimate")]
-    Estimate,
-    /// The interval.
-    #[serde(rename = "interval")]
-    Interval,
-    /// The standard error.
-    #[serde(rename = "standard error")]
-    StandardError,
-    /// The test statistic.
-    #[serde(rename = "statistic")]
-    Statistic,
-    /// Its degrees of freedom.
-    #[serde(rename = "df")]
-    Df,
-    /// Subjects analysed.
-    #[serde(rename = "n")]
-    N,
+    pub fn deserialize<'de, T: Deserialize<'de>, D: Deserializer<'de>>(deserializer: D) -> Result<Choice<T>, D::Error> {
+        Ok(match Written::deserialize(deserializer)? {
+            Written::Fixed(value) => Choice::Fixed(value),
+            Written::Cases { cases, otherwise } => Choice::Cases { cases, otherwise },
+        })
+    }
 }

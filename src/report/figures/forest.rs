@@ -11,7 +11,7 @@ const ROW: u32 = 26;
 /// Rows of one figure; the table has all.
 const MOST_ROWS: usize = 40;
 
-/// Draws a step of standardized changes; nothing where none was computed.
+/// Draws the sizes of a step; nothing where none was computed.
 pub(super) fn draw(step: &StepResult) -> Option<Drawn> {
     let rows: Vec<&Entry> =
         step.results.iter().filter(|entry| entry.state == State::Done && entry.estimate_of().is_some()).take(MOST_ROWS).collect();
@@ -19,26 +19,33 @@ pub(super) fn draw(step: &StepResult) -> Option<Drawn> {
         return None;
     }
     let mut svg = String::new();
-    paint(&mut svg, &rows)?;
+    paint(&mut svg, &rows, &step.kind, no_difference(step))?;
     let level = rows.iter().find(|entry| entry.interval_of().is_some()).and_then(|entry| entry.level);
     let intervals = level.map_or_else(String::new, |level| format!(", with {} % intervals", percent(level)));
     Some(Drawn {
-        title: format!("Standardized changes ({}){intervals}", step.id),
+        title: format!("{}{} ({}){intervals}", step.kind[..1].to_uppercase(), &step.kind[1..], step.id),
         description: format!(
-            "{} standardized changes on one axis with a line at zero; the numbers stand in the table of the step.",
-            rows.len()
+            "{} results on one axis, {}, with a line at {}; the numbers stand in the table of the step.",
+            rows.len(),
+            step.kind,
+            if no_difference(step) == 0.0 { "zero" } else { "one half" }
         ),
         svg,
     })
 }
 
-fn paint(svg: &mut String, rows: &[&Entry]) -> Option<()> {
+/// Where a size says that nothing differs.
+fn no_difference(step: &StepResult) -> f64 {
+    if step.kind == "probability of superiority" { 0.5 } else { 0.0 }
+}
+
+fn paint(svg: &mut String, rows: &[&Entry], kind: &str, line: f64) -> Option<()> {
     let height = 70 + ROW * rows.len() as u32;
     let area = SVGBackend::with_string(svg, (WIDTH, height)).into_drawing_area();
     area.fill(&WHITE).ok()?;
     let limits = rows.iter().flat_map(|entry| {
         let interval = entry.interval_of().map(|[lower, upper]| [lower.get(), upper.get()]);
-        entry.estimate_of().map(|d| d.get()).into_iter().chain(interval.into_iter().flatten()).chain([0.0])
+        entry.estimate_of().map(|d| d.get()).into_iter().chain(interval.into_iter().flatten()).chain([line])
     });
     let axis = range(limits);
     let names: Vec<String> =
@@ -65,11 +72,11 @@ fn paint(svg: &mut String, rows: &[&Entry]) -> Option<()> {
         .y_labels(2 * rows.len() + 1)
         .y_label_formatter(&name_of)
         .x_labels(9)
-        .x_desc("standardized change")
+        .x_desc(kind)
         .label_style(("sans-serif", 13, &INK))
         .draw()
         .ok()?;
-    chart.draw_series([PathElement::new(vec![(0.0, -0.5), (0.0, count - 0.5)], INK.stroke_width(1))]).ok()?;
+    chart.draw_series([PathElement::new(vec![(line, -0.5), (line, count - 0.5)], INK.stroke_width(1))]).ok()?;
     for (row, entry) in rows.iter().enumerate() {
         let y = count - 1.0 - row as f64;
         if let Some([lower, upper]) = entry.interval_of() {

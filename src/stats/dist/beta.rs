@@ -5,7 +5,7 @@ use std::f64::consts::TAU;
 use libm::{exp, log};
 
 use super::gamma::{deviance, stirling_error};
-use super::{DistributionError, Domain};
+use super::{DistributionError, Domain, fisher};
 
 const DOMAIN: Domain = Domain("beta");
 
@@ -151,4 +151,24 @@ pub fn both_tails(a: f64, b: f64, x: f64) -> Result<BothTails, DistributionError
     let y = 1.0 - x;
     let point = Point { a, b, x, y, below_mean: a * y - b * x, log_x: log(x), log_y: libm::log1p(-x) };
     point.both_tails()
+}
+
+/// The x with P(X <= x) = `p` under the beta distribution with parameters `a` and `b`, by the F distribution's quantile:
+/// (1 - X) / X a / b has 2 b and 2 a degrees of freedom.
+///
+/// # Errors
+/// `p` not inside 0 to 1; `a` or `b` not finite and above 0; a quantile nearer to 0 than doubles reach.
+///
+/// ```
+/// // With a = 1 the quantile is 1 - (1 - p)^(1 / b).
+/// let x = aforesaid::stats::dist::beta::quantile(0.1, 1.0, 2.0).unwrap();
+/// assert!((x - (1.0 - 0.9_f64.sqrt())).abs() < 1e-15);
+/// ```
+pub fn quantile(p: f64, a: f64, b: f64) -> Result<f64, DistributionError> {
+    DOMAIN.probability("the probability", p)?;
+    DOMAIN.positive("the first parameter", a)?;
+    DOMAIN.positive("the second parameter", b)?;
+    let f = fisher::quantile_upper(p, 2.0 * b, 2.0 * a)?;
+    let odds = b / a * f;
+    if odds.is_finite() { Ok(1.0 / (1.0 + odds)) } else { Err(DOMAIN.out_of_reach("the quantile leaves the range of double precision")) }
 }

@@ -6,7 +6,8 @@ use libm::{exp, log};
 
 use super::beta::BothTails;
 use super::gamma::{deviance, stirling_error};
-use super::{DistributionError, Domain};
+use super::root::falling_log_tail;
+use super::{DistributionError, Domain, normal};
 
 const DOMAIN: Domain = Domain("chi-squared");
 
@@ -20,9 +21,7 @@ fn tails(x: f64, df: f64) -> Result<BothTails, DistributionError> {
         return Ok(BothTails { lower: 0.0, upper: 1.0 });
     }
     let (a, x) = (df / 2.0, x / 2.0);
-    // x^a e^-x / Gamma(a)
-    let exponent = -stirling_error(a) - deviance(a, a - x, || log(x / a));
-    let factor = (a / TAU).sqrt() * exp(exponent);
+    let factor = density_factor(a, x);
     if x <= a + 1.0 {
         let lower = (factor * lower_series(a, x)?).min(1.0);
         Ok(BothTails { lower, upper: 1.0 - lower })
@@ -30,6 +29,12 @@ fn tails(x: f64, df: f64) -> Result<BothTails, DistributionError> {
         let upper = factor * upper_fraction(a, x)?;
         Ok(BothTails { lower: 1.0 - upper, upper })
     }
+}
+
+/// x^a e^-x / Gamma(a), which is the statistic times the density.
+fn density_factor(a: f64, x: f64) -> f64 {
+    let exponent = -stirling_error(a) - deviance(a, a - x, || log(x / a));
+    (a / TAU).sqrt() * exp(exponent)
 }
 
 /// sum of x^n / (a (a+1) ... (a+n)) (Abramowitz & Stegun 6.5.29).
@@ -97,4 +102,37 @@ pub fn upper_tail(x: f64, df: f64) -> Result<f64, DistributionError> {
 /// As for [`upper_tail`].
 pub fn lower_tail(x: f64, df: f64) -> Result<f64, DistributionError> {
     Ok(tails(x, df)?.lower)
+}
+
+/// The x with P(X > x) = `p`.
+///
+/// # Errors
+/// `p` not inside 0 to 1; `df` not finite and above 0; a quantile below the range of doubles.
+///
+/// ```
+/// // Two degrees of freedom: -2 ln p.
+/// let x = aforesaid::stats::dist::chi_squared::quantile_upper(0.05, 2.0).unwrap();
+/// assert!((x + 2.0 * libm::log(0.05)).abs() < 1e-14);
+/// ```
+pub fn quantile_upper(p: f64, df: f64) -> Result<f64, DistributionError> {
+    DOMAIN.probability("the tail", p)?;
+    DOMAIN.positive("the degrees of freedom", df)?;
+    // The search runs on the side where the tail is small, in ln x or its negative.
+    let side = if p > 0.5 { -1.0 } else { 1.0 };
+    let target = if p > 0.5 { 1.0 - p } else { p };
+    let log_tail = |u: f64| {
+        let x = exp(side * u);
+        let both = tails(x, df)?;
+        let tail = if side > 0.0 { both.upper } else { both.lower };
+        Ok((log(tail), -density_factor(0.5 * df, 0.5 * x) / tail))
+    };
+    // Wilson & Hilferty (1931): the cube root is nearly normal. Far below, P(X <= x) is about (x / 2)^(df / 2) / Gamma(df / 2 + 1).
+    let spread = 2.0 / (9.0 * df);
+    let root = 1.0 - spread + normal::quantile_upper(p)? * spread.sqrt();
+    let log_x =
+        if root > 0.2 { log(df) + 3.0 * log(root) } else { (log(target) + libm::lgamma(0.5 * df + 1.0)) * 2.0 / df + libm::log(2.0) };
+    let found = falling_log_tail(log_tail, log(target), side * log_x)
+        .map_err(|e| e.unwrap_or(DOMAIN.out_of_reach("the search for the quantile did not settle")))?;
+    let x = exp(side * found);
+    if x.is_finite() && x > 0.0 { Ok(x) } else { Err(DOMAIN.out_of_reach("the quantile leaves the range of double precision")) }
 }

@@ -18,12 +18,15 @@ pub mod beta;
 pub mod chi_squared;
 pub mod fisher;
 pub mod gamma;
+pub mod multivariate_t;
 pub mod noncentral_f;
 pub mod noncentral_t;
 pub mod normal;
 pub mod student;
+pub mod studentized_range;
 
 mod root;
+mod scale;
 
 use std::fmt;
 
@@ -96,26 +99,26 @@ pub(crate) struct Domain(pub(crate) &'static str);
 
 impl Domain {
     pub(crate) fn finite(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
-        self.check(value.is_finite(), argument, value, "a finite number")
+        self.holds(value.is_finite(), argument, value, "a finite number")
     }
 
     pub(crate) fn positive(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
-        self.check(value.is_finite() && value > 0.0, argument, value, "finite and above 0")
+        self.holds(value.is_finite() && value > 0.0, argument, value, "finite and above 0")
     }
 
     pub(crate) fn not_negative(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
-        self.check(value.is_finite() && value >= 0.0, argument, value, "finite and not below 0")
+        self.holds(value.is_finite() && value >= 0.0, argument, value, "finite and not below 0")
     }
 
     pub(crate) fn probability(self, argument: &'static str, value: f64) -> Result<(), DistributionError> {
-        self.check(value > 0.0 && value < 1.0, argument, value, "between 0 and 1, both excluded")
+        self.holds(value > 0.0 && value < 1.0, argument, value, "between 0 and 1, both excluded")
     }
 
     pub(crate) fn out_of_reach(self, reason: &'static str) -> DistributionError {
         DistributionError::OutOfReach { distribution: self.0, reason }
     }
 
-    fn check(self, holds: bool, argument: &'static str, value: f64, expected: &'static str) -> Result<(), DistributionError> {
+    pub(crate) fn holds(self, holds: bool, argument: &'static str, value: f64, expected: &'static str) -> Result<(), DistributionError> {
         if holds { Ok(()) } else { Err(DistributionError::OutOfDomain { distribution: self.0, argument, value, expected }) }
     }
 }

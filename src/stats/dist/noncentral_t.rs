@@ -1,38 +1,27 @@
 //! The noncentral t distribution, by quadrature over the scale.
 //!
 //! T = (Z + delta) / S with S^2 df a chi-squared variable, so that
-//! P(T <= t) = E Phi(t S - delta). With S = e^w the density of w falls off
-//! exponentially on the left and faster on the right, and the plain
-//! trapezoidal rule converges geometrically (Trefethen & Weideman 2014, *SIAM
-//! Review* 56:385). Every term is positive: both tails keep their relative
+//! P(T <= t) = E Phi(t S - delta), which the trapezoidal rule in ln S gives to
+//! full accuracy. Every term is positive: both tails keep their relative
 //! accuracy, far tails and large df included.
-
-use std::f64::consts::PI;
 
 use libm::{exp, expm1};
 
-use super::gamma::stirling_error;
+use super::scale::{TooManyPoints, density_at_one, log_density, sum_around, sum_until};
 use super::{DistributionError, Domain, normal};
 
 const DOMAIN: Domain = Domain("noncentral t");
 
-/// Terms below this fraction of the largest one are left out.
-const NEGLIGIBLE: f64 = 1e-19;
-
-/// Points of the rule after which it is given up.
-const MOST_POINTS: usize = 100_000;
-
 const TOO_SHARP: &str = "the statistic is so many times the square root of its degrees of freedom \
                          that the quadrature would need too many points";
+
+fn too_sharp(_: TooManyPoints) -> DistributionError {
+    DOMAIN.out_of_reach(TOO_SHARP)
+}
 
 fn check(t: f64, df: f64) -> Result<(), DistributionError> {
     DOMAIN.finite("the statistic", t)?;
     DOMAIN.positive("the degrees of freedom", df)
-}
-
-/// ln of the density of w, up to a constant: df (w - (e^2w - 1) / 2).
-fn log_scale_density(w: f64, df: f64) -> f64 {
-    df * (w - 0.5 * expm1(2.0 * w))
 }
 
 /// Step of the rule: the error is about exp(-2 pi theta / step) times the
@@ -41,26 +30,6 @@ fn log_scale_density(w: f64, df: f64) -> f64 {
 fn step(t: f64, df: f64, scale: f64) -> f64 {
     let sharpness = df + t * t * (0.5 + 1.0 / df.sqrt());
     0.42 / (sharpness * (scale * scale).max(1.0) + 10.0).sqrt()
-}
-
-/// Walks away from `centre` on both sides, summing what `term` gives until it is negligible.
-fn sum_around(centre: f64, step: f64, mut term: impl FnMut(f64) -> f64) -> Result<(), DistributionError> {
-    let mut largest = term(centre);
-    for side in [-1.0, 1.0] {
-        let mut previous = largest;
-        for k in 1.. {
-            let here = term(centre + side * k as f64 * step);
-            largest = largest.max(here);
-            if here <= NEGLIGIBLE * largest && here <= previous {
-                break;
-            }
-            if k > MOST_POINTS {
-                return Err(DOMAIN.out_of_reach(TOO_SHARP));
-            }
-            previous = here;
-        }
-    }
-    Ok(())
 }
 
 /// E Phi(sign (t S - delta)).
@@ -72,16 +41,12 @@ fn tail(t: f64, df: f64, delta: f64, sign: f64) -> Result<f64, DistributionError
     let step = step(t, df, exp(mode));
     let mut sum = 0.0;
     sum_around(mode, step, |w| {
-        let here = exp(log_scale_density(w, df)) * normal::tail(-sign * (t * exp(w) - delta));
+        let here = exp(log_density(w, df)) * normal::tail(-sign * (t * exp(w) - delta));
         sum += here;
         here
-    })?;
+    })
+    .map_err(too_sharp)?;
     Ok((step * sum * density_at_one(df)).min(1.0))
-}
-
-/// The density of w at S = 1.
-fn density_at_one(df: f64) -> f64 {
-    (df / PI).sqrt() * exp(-stirling_error(df / 2.0))
 }
 
 /// Where the integrand is largest. It has one peak: in S its logarithm is concave.
@@ -162,73 +127,122 @@ pub fn upper_tail(t: f64, df: f64, delta: f64) -> Result<f64, DistributionError>
 pub fn noncentrality_limits(t: f64, df: f64, level: f64) -> Result<(f64, f64), DistributionError> {
     check(t, df)?;
     DOMAIN.probability("the confidence level", level)?;
-    let each = 0.5 * (1.0 - level);
-    let z = normal::quantile_upper(each)?;
+    let z = normal::quick_quantile_upper(0.5 * (1.0 - level));
     if t == 0.0 {
         return Ok((-z, z));
     }
     let rule = ScaleRule::new(t, df)?;
     // T is about normal with mean delta and variance 1 + t^2 / (2 df).
     let spread = z * (1.0 + 0.5 * t * t / df).sqrt();
-    let lower = rule.solve(each, z, -1.0, t - spread)?;
-    let upper = rule.solve(each, z, 1.0, t + spread)?;
+    let lower = rule.solve(z, -1.0, t - spread)?;
+    let upper = rule.solve(z, 1.0, t + spread)?;
     Ok((lower, upper))
 }
 
-/// The points t S and weights of the rule, which all values of delta share.
+/// The points t S and weights of a rule that all values of delta share, the coarse rule's points first.
 struct ScaleRule {
     points: Vec<(f64, f64)>,
+    coarse: usize,
+}
+
+/// Weights of the limits' rule are left out below this: the tails looked for are not small.
+const NO_WEIGHT: f64 = 1e-16;
+
+/// The coarse search ends after a step of this size,
+const COARSE_STEP: f64 = 0.3;
+
+/// and the fine one after one of this size: its fourth power, times a small factor, is what is left.
+const LAST_STEP: f64 = 1e-3;
+
+/// What a tail at some delta is, with what its derivatives need.
+struct TailHere {
+    tail: f64,
+    /// E phi(x) with x = t S - delta.
+    density: f64,
+    /// E x phi(x), the first derivative of the density by delta.
+    first: f64,
+    /// E (x^2 - 1) phi(x), the second.
+    second: f64,
+}
+
+impl TailHere {
+    /// How far along, in the direction in which the tail falls, the probit reaches `z`: the inverted Taylor series of
+    /// the probit to its third term. `sign` is that of delta in this direction.
+    fn step_to(&self, z: f64, sign: f64) -> f64 {
+        let probit = normal::quick_quantile_upper(self.tail);
+        let at_probit = normal::density(probit);
+        let slope = self.density / at_probit;
+        let first = sign * self.first / at_probit;
+        let bend = first + probit * slope * slope;
+        let third = self.second / at_probit + probit * slope * first + slope * slope * slope + 2.0 * probit * slope * bend;
+        let newton = (z - probit) / slope;
+        let (a, b) = (bend / (2.0 * slope), third / (6.0 * slope));
+        let series = 1.0 - newton * (a - newton * (2.0 * a * a - b));
+        // Far away the series says nothing.
+        newton * if series > 0.5 && series < 2.0 { series } else { 1.0 }
+    }
 }
 
 impl ScaleRule {
     fn new(t: f64, df: f64) -> Result<Self, DistributionError> {
-        let mut points = Vec::with_capacity(96);
-        let mut mass = 0.0;
-        sum_around(0.0, step(t, df, 1.0), |w| {
-            let density = exp(log_scale_density(w, df));
-            mass += density;
-            points.push((t * exp(w), density));
-            density
-        })?;
-        for (_, weight) in &mut points {
-            *weight /= mass;
+        let step = step(t, df, 1.0);
+        let mut points = Vec::with_capacity(64);
+        let mut coarse = 0;
+        for centre in [0.0, step] {
+            coarse = points.len();
+            sum_until(NO_WEIGHT, centre, 2.0 * step, |w| {
+                let density = exp(log_density(w, df));
+                points.push((t * exp(w), density));
+                density
+            })
+            .map_err(too_sharp)?;
         }
-        Ok(Self { points })
+        Ok(Self { points, coarse })
     }
 
-    /// E Phi(sign (t S - delta)) and E phi(t S - delta).
-    fn tail_and_density(&self, delta: f64, sign: f64) -> (f64, f64) {
-        self.points.iter().fold((0.0, 0.0), |(tail, density), &(shifted, weight)| {
+    fn at(&self, points: &[(f64, f64)], delta: f64, sign: f64) -> TailHere {
+        let mut sum = TailHere { tail: 0.0, density: 0.0, first: 0.0, second: 0.0 };
+        let mut mass = 0.0;
+        for &(shifted, weight) in points {
             let x = shifted - delta;
-            (tail + weight * normal::tail(-sign * x), density + weight * normal::density(x))
-        })
+            let density = weight * normal::density(x);
+            mass += weight;
+            sum.tail += weight * normal::tail(-sign * x);
+            sum.density += density;
+            sum.first += x * density;
+            sum.second += (x * x - 1.0) * density;
+        }
+        TailHere { tail: sum.tail / mass, density: sum.density / mass, first: sum.first / mass, second: sum.second / mass }
     }
 
-    /// The delta whose tail on the side of `sign` is `target`, with z its normal quantile.
-    fn solve(&self, target: f64, z: f64, sign: f64, start: f64) -> Result<f64, DistributionError> {
-        let unsettled = DOMAIN.out_of_reach("the search for the noncentrality did not settle");
+    /// The delta whose tail on the side of `sign` is `target`, with z its normal quantile: by the coarse rule, which is
+    /// good to some 1e-3, and from there by the full one.
+    fn solve(&self, z: f64, sign: f64, start: f64) -> Result<f64, DistributionError> {
+        let near = self.search(&self.points[..self.coarse], z, sign, start, COARSE_STEP)?;
+        self.search(&self.points, z, sign, near, LAST_STEP)
+    }
+
+    /// The inverted series on the probit scale, on which the tail is almost linear in delta, inside a bracket. Its steps
+    /// converge with the fourth power: after one not above `last_step` it is done.
+    fn search(&self, points: &[(f64, f64)], z: f64, sign: f64, start: f64, last_step: f64) -> Result<f64, DistributionError> {
         let (mut near, mut far) = (f64::NEG_INFINITY, f64::INFINITY);
-        // Along `along` = sign * delta the tail falls; on the probit scale almost linearly.
+        // Along `along` = sign * delta the tail falls.
         let mut along = sign * start;
         for _ in 0..200 {
-            let (tail, density) = self.tail_and_density(sign * along, sign);
-            if tail > target {
+            let here = self.at(points, sign * along, sign);
+            let usable = here.tail > 0.0 && here.tail < 1.0 && here.density > 0.0;
+            let step = if usable { here.step_to(z, sign) } else { f64::NAN };
+            if step.abs() <= last_step {
+                return Ok(sign * (along + step));
+            }
+            if step > 0.0 || here.tail >= 1.0 {
                 near = near.max(along);
             } else {
                 far = far.min(along);
             }
-            let newton = if tail > 0.0 && tail < 1.0 && density > 0.0 {
-                let probit = normal::quantile_upper(tail)?;
-                along + (z - probit) * normal::density(probit) / density
-            } else {
-                f64::NAN
-            };
-            // The steps converge quadratically: after one this small nothing is left to gain.
-            if (newton - along).abs() <= 1e-8 * along.abs().max(1.0) {
-                return Ok(sign * newton);
-            }
-            along = if newton > near && newton < far {
-                newton
+            let next = along + step;
+            along = if next > near && next < far {
+                next
             } else if near.is_finite() && far.is_finite() {
                 0.5 * (near + far)
             } else if near.is_finite() {
@@ -237,6 +251,6 @@ impl ScaleRule {
                 along - z.abs().max(1.0)
             };
         }
-        Err(unsettled)
+        Err(DOMAIN.out_of_reach("the search for the noncentrality did not settle"))
     }
 }

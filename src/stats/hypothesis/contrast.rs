@@ -14,6 +14,13 @@ pub enum Part {
     Hold(usize),
     /// Weights as written, one row of k weights for each contrast.
     Weights(Vec<Vec<f64>>),
+    /// The mean of these levels minus one level, counted from 0.
+    MeanMinus {
+        /// The levels whose mean is taken.
+        of: Vec<usize>,
+        /// The level that is taken away.
+        level: usize,
+    },
     /// The polynomial contrast of this degree over unequally spaced levels, per unit of spacing: see [`trend_weights`].
     Trend {
         /// Position of each level.
@@ -51,6 +58,12 @@ impl FactorPart {
                 row
             }
             Part::Weights(rows) => Matrix::from_rows(rows),
+            Part::MeanMinus { of, level } => {
+                let mut row = Matrix::zeros(1, levels);
+                of.iter().for_each(|one| row[(0, *one)] = DoubleDouble::ONE / DoubleDouble::from(of.len()));
+                row[(0, *level)] = -DoubleDouble::ONE;
+                row
+            }
             Part::Trend { spacing, degree } => Matrix::from_rows(&[trend_weights(spacing, *degree)]),
         }
     }

@@ -93,11 +93,12 @@ pub fn crossed_effects(
     weighting: Weighting<'_>,
 ) -> Result<Vec<Effect>, Refusal> {
     let mut effects = Vec::new();
+    let everyone = vec![true; moments.cells().len()];
     for within in subsets(within_levels) {
         for between in subsets(between_levels) {
             let hypothesis = Hypothesis::new(&parts(between_levels, &between), &parts(within_levels, &within), weighting)?;
             effects.push(Effect {
-                ss: hypothesis_ss(moments, &hypothesis)?.value(),
+                ss: hypothesis_ss(moments, &hypothesis, &everyone)?.value(),
                 df: (hypothesis.rank() * hypothesis.contrasts()) as f64,
                 test: test_univariate(moments, &hypothesis, ErrorTerm::Pooled),
                 between,

@@ -150,17 +150,30 @@ pub(crate) fn pooled_strata(hypothesis: &Hypothesis) -> Vec<(Matrix, DoubleDoubl
     spanned.filter(|(_, share)| share.value() > Matrix::DEPENDENCE).collect()
 }
 
-/// H = (LBM)' [L (X'X)^-1 L']^-1 (LBM), contrasts by contrasts.
+/// H = (LBM)' [L (X'X)^-1 L']^-1 (LBM), contrasts by contrasts, of a model fitted to the cells in `fitted`.
 ///
 /// # Errors
-/// A cell that L weighs has no subject.
-pub fn hypothesis_matrix(moments: &Moments, hypothesis: &Hypothesis) -> Result<Matrix, Refusal> {
-    let root = hypothesis_root(moments, hypothesis)?;
+/// A cell that L weighs has no subject; a covariate that cannot be adjusted for.
+pub fn hypothesis_matrix(moments: &Moments, hypothesis: &Hypothesis, fitted: &[bool]) -> Result<Matrix, Refusal> {
+    let root = hypothesis_root(moments, hypothesis, hypothesis.within(), fitted)?.root;
     Ok(root.transpose().multiply(&root))
 }
 
-/// R^-1 LBM with R R' = L (X'X)^-1 L', of which H is the square.
-fn hypothesis_root(moments: &Moments, hypothesis: &Hypothesis) -> Result<Matrix, Refusal> {
+/// R^-1 L B W and R, where R R' = L (X'X)^-1 L'.
+pub(super) struct HypothesisRoot {
+    /// R^-1 L B W, rank by columns of W; H is its square.
+    pub root: Matrix,
+    /// R, lower triangular.
+    pub scale: Matrix,
+}
+
+/// For any combinations W of occasions (occasions by columns), M itself or another basis of its space.
+pub(super) fn hypothesis_root(
+    moments: &Moments,
+    hypothesis: &Hypothesis,
+    within: &Matrix,
+    fitted: &[bool],
+) -> Result<HypothesisRoot, Refusal> {
     let between = hypothesis.between();
     assert_eq!(between.columns(), moments.cells().len(), "the hypothesis and the data have the same cells");
     let mut covariance = Matrix::zeros(between.rows(), between.rows());
@@ -175,32 +188,60 @@ fn hypothesis_root(moments: &Moments, hypothesis: &Hypothesis) -> Result<Matrix,
             for column in 0..=row {
                 covariance[(row, column)] += weight * between[(column, index)] / count;
             }
-            for (occasion, &mean) in cell.mean.iter().enumerate() {
+            for (occasion, &mean) in cell.mean[..moments.occasions()].iter().enumerate() {
                 means[(row, occasion)] += weight * mean;
             }
         }
     }
-    let root = covariance.cholesky().map_err(|_| Refusal::NotEstimable)?;
-    Ok(root.solve_lower(&means.multiply(hypothesis.within())))
+    if let Some(adjustment) = moments.adjustment(fitted)? {
+        let leverage = adjustment.leverage(moments, between);
+        let more = leverage.transpose().multiply(&leverage);
+        let explained = leverage.transpose().multiply(&adjustment.explained);
+        for row in 0..between.rows() {
+            for column in 0..=row {
+                covariance[(row, column)] += more[(row, column)];
+            }
+            for occasion in 0..moments.occasions() {
+                means[(row, occasion)] -= explained[(row, occasion)];
+            }
+        }
+    }
+    let scale = covariance.cholesky().map_err(|_| Refusal::NotEstimable)?;
+    let root = scale.solve_lower(&means.multiply(within));
+    Ok(HypothesisRoot { root, scale })
 }
 
 /// Below this relative size a combination of means is what double-double arithmetic leaves of an exact zero.
 const RESIDUE: f64 = 1e-29;
 
 /// tr H, exactly zero where the combinations of means are zero but for the arithmetic.
-pub(super) fn hypothesis_ss(moments: &Moments, hypothesis: &Hypothesis) -> Result<DoubleDouble, Refusal> {
-    let ss = hypothesis_root(moments, hypothesis)?.sum_of_squares();
+pub(super) fn hypothesis_ss(moments: &Moments, hypothesis: &Hypothesis, fitted: &[bool]) -> Result<DoubleDouble, Refusal> {
+    let ss = hypothesis_root(moments, hypothesis, hypothesis.within(), fitted)?.root.sum_of_squares();
+    let residue = residue(moments, hypothesis);
+    Ok(if ss.value() <= residue { DoubleDouble::ZERO } else { ss })
+}
+
+/// A sum of squares of the hypothesis up to this is zero but for the arithmetic.
+pub(super) fn residue(moments: &Moments, hypothesis: &Hypothesis) -> f64 {
     let (mut largest, mut subjects) = (0.0_f64, 0);
     for (cell, _) in moments.cells().iter().zip(hypothesis.kept()).filter(|(_, kept)| **kept) {
         subjects += cell.subjects;
-        for (occasion, &magnitude) in cell.largest.iter().enumerate() {
+        for (occasion, &magnitude) in cell.largest[..moments.occasions()].iter().enumerate() {
             if hypothesis.within().row(occasion).iter().any(|weight| !weight.is_zero()) {
                 largest = largest.max(magnitude);
             }
         }
     }
     let residue = RESIDUE * largest;
-    Ok(if ss.value() <= residue * residue * subjects as f64 { DoubleDouble::ZERO } else { ss })
+    residue * residue * subjects as f64
+}
+
+/// The cells whose subjects supply the error, and to which the model is fitted.
+pub(super) fn fitted_cells(moments: &Moments, hypothesis: &Hypothesis, error_term: ErrorTerm) -> Vec<bool> {
+    match error_term {
+        ErrorTerm::Own => hypothesis.kept().to_vec(),
+        ErrorTerm::OwnOccasions | ErrorTerm::Pooled => vec![true; moments.cells().len()],
+    }
 }
 
 /// F = (tr H / r q) / (error mean square); Kirk 2013, Maxwell & Delaney 2004.
@@ -210,10 +251,10 @@ pub(super) fn hypothesis_ss(moments: &Moments, hypothesis: &Hypothesis) -> Resul
 /// # Errors
 /// An empty cell that the hypothesis weighs, no error df, or an error variance of zero (by the rule of [`Moments`]).
 pub fn test_univariate(moments: &Moments, hypothesis: &Hypothesis, error_term: ErrorTerm) -> Result<UnivariateTest, Refusal> {
-    let ss = hypothesis_ss(moments, hypothesis)?;
+    let fitted = fitted_cells(moments, hypothesis, error_term);
+    let ss = hypothesis_ss(moments, hypothesis, &fitted)?;
     let error = match error_term {
-        ErrorTerm::Own => Error::of(&moments.error(hypothesis.within(), hypothesis.kept())?)?,
-        ErrorTerm::OwnOccasions => Error::of(&moments.error(hypothesis.within(), &vec![true; moments.cells().len()])?)?,
+        ErrorTerm::Own | ErrorTerm::OwnOccasions => Error::of(&moments.error(hypothesis.within(), &fitted)?)?,
         ErrorTerm::Pooled => Error::pooled(moments, hypothesis)?,
     };
     let df1 = hypothesis.rank() * hypothesis.contrasts();
@@ -228,22 +269,47 @@ pub fn test_univariate(moments: &Moments, hypothesis: &Hypothesis, error_term: E
         df2: error.df,
         f: f.value(),
         contrasts: hypothesis.contrasts(),
-        estimate: hypothesis.single().map(|weights| estimate(moments, weights, ss.is_zero(), mean_square)),
+        estimate: hypothesis.single().map(|weights| estimate(moments, weights, ss.is_zero(), mean_square, &fitted)).transpose()?,
         epsilons: error.epsilons,
     })
 }
 
-fn estimate(moments: &Moments, (between, within): (&[DoubleDouble], &[DoubleDouble]), zero: bool, mean_square: DoubleDouble) -> Estimate {
+fn estimate(
+    moments: &Moments,
+    (between, within): (&[DoubleDouble], &[DoubleDouble]),
+    zero: bool,
+    mean_square: DoubleDouble,
+    fitted: &[bool],
+) -> Result<Estimate, Refusal> {
+    let (mut value, spread) = combination(moments, between, within, fitted)?;
+    if zero {
+        value = DoubleDouble::ZERO;
+    }
+    let length: DoubleDouble = within.iter().map(|weight| weight.square()).sum();
+    let standard_error = (mean_square * length * spread).sqrt();
+    Ok(Estimate { value: value.value(), standard_error: standard_error.value(), t: (value / standard_error).value() })
+}
+
+/// l'Bm and l'(X'X)^-1 l for weights l of cells and m of occasions, as written.
+pub(super) fn combination(
+    moments: &Moments,
+    between: &[DoubleDouble],
+    within: &[DoubleDouble],
+    fitted: &[bool],
+) -> Result<(DoubleDouble, DoubleDouble), Refusal> {
     let mut value = DoubleDouble::ZERO;
     let mut spread = DoubleDouble::ZERO;
     for (cell, &weight) in moments.cells().iter().zip(between).filter(|(_, weight)| !weight.is_zero()) {
         value += weight * cell.mean.iter().zip(within).map(|(&mean, &weight)| mean * weight).sum();
         spread += weight.square() / DoubleDouble::from(cell.subjects);
     }
-    if zero {
-        value = DoubleDouble::ZERO;
+    if let Some(adjustment) = moments.adjustment(fitted)? {
+        let leverage = adjustment.leverage(moments, &Matrix::from_rows(&[between.to_vec()]));
+        for covariate in 0..moments.covariates() {
+            let pull = leverage[(covariate, 0)];
+            spread += pull.square();
+            value -= pull * adjustment.explained.row(covariate).iter().zip(within).map(|(&slope, &weight)| slope * weight).sum();
+        }
     }
-    let length: DoubleDouble = within.iter().map(|weight| weight.square()).sum();
-    let standard_error = (mean_square * length * spread).sqrt();
-    Estimate { value: value.value(), standard_error: standard_error.value(), t: (value / standard_error).value() }
+    Ok((value, spread))
 }

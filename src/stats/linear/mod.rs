@@ -5,7 +5,9 @@
 //! cancellations that offsets, nearly collinear occasions and determinants bring.
 
 mod double_double;
+mod eigen;
 mod matrix;
 
 pub use double_double::{DoubleDouble, Split, two_difference, two_product, two_product_split, two_sum};
+pub use eigen::{Eigen, symmetric_eigen};
 pub use matrix::{Matrix, NotPositiveDefinite};

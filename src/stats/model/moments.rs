@@ -26,7 +26,41 @@ pub struct CellMoments {
 #[derive(Clone, Debug)]
 pub struct Moments {
     occasions: usize,
+    /// Columns after the occasions in every cell's moments.
+    covariates: usize,
     cells: Vec<CellMoments>,
+}
+
+/// What covariates do to means and errors of a model fitted to some of the cells.
+///
+/// With Z centred at the mean of the subjects of these cells and E pooled over them, the slopes are G = Ezz^-1 Ezy, the error
+/// is Eyy - Eyz G, an adjusted cell mean is ybar - (zbar - centre)'G, and (X'X)^-1 of the cells is
+/// diag(1 / n) + D Ezz^-1 D' with the rows of D being zbar - centre. All of it is in terms of R, R R' = Ezz.
+#[derive(Clone, Debug)]
+pub(crate) struct Adjustment {
+    /// R, lower triangular.
+    root: Matrix,
+    /// R^-1 Ezy, covariates by occasions.
+    pub explained: Matrix,
+    /// Mean of each covariate over the subjects of the cells.
+    centre: Vec<DoubleDouble>,
+}
+
+impl Adjustment {
+    /// R^-1 (L D)', covariates by rows of L, for combinations L of cells.
+    pub fn leverage(&self, moments: &Moments, between: &Matrix) -> Matrix {
+        let count = self.centre.len();
+        let mut distance = Matrix::zeros(count, between.rows());
+        for (index, cell) in moments.cells.iter().enumerate().filter(|(_, cell)| cell.subjects > 0) {
+            for covariate in 0..count {
+                let away = cell.mean[moments.occasions + covariate] - self.centre[covariate];
+                for row in 0..between.rows() {
+                    distance[(covariate, row)] += between[(row, index)] * away;
+                }
+            }
+        }
+        self.root.solve_lower(&distance)
+    }
 }
 
 /// M'EM for orthonormal contrasts M between occasions, pooled over the cells kept.
@@ -34,7 +68,7 @@ pub struct Moments {
 pub struct ErrorMatrix {
     /// M'EM, contrasts by contrasts.
     pub matrix: Matrix,
-    /// Error degrees of freedom: subjects less cells, both among the cells kept.
+    /// Error degrees of freedom: subjects less cells, both among the cells kept, less covariates.
     pub df: usize,
     /// Subjects of the cells kept.
     pub subjects: usize,
@@ -102,7 +136,56 @@ impl Moments {
             }
             moments
         });
-        Ok(Moments { occasions, cells: cells.collect() })
+        Ok(Moments { occasions, covariates: 0, cells: cells.collect() })
+    }
+
+    /// As [`new`](Self::new), with covariates: `covariates` has one row for each subject, of as many values as there are
+    /// covariates. They are carried as further columns of every cell's moments, after the occasions.
+    ///
+    /// # Errors
+    /// As for [`new`](Self::new).
+    ///
+    /// # Panics
+    /// As for [`new`](Self::new).
+    pub fn with_covariates(
+        values: &[f64],
+        occasions: usize,
+        covariates: &[f64],
+        cell: &[u32],
+        cells: usize,
+        kept: Option<&[bool]>,
+    ) -> Result<Moments, Refusal> {
+        let subjects = cell.len();
+        assert!(subjects > 0 && covariates.len().is_multiple_of(subjects), "one row of covariates for each subject");
+        let further = covariates.len() / subjects;
+        let rows: Vec<f64> = (0..subjects)
+            .flat_map(|subject| {
+                let outcome = &values[subject * occasions..(subject + 1) * occasions];
+                outcome.iter().chain(&covariates[subject * further..(subject + 1) * further]).copied()
+            })
+            .collect();
+        let joined = Moments::new(&rows, occasions + further, cell, cells, kept)?;
+        Ok(Moments { occasions, covariates: further, cells: joined.cells })
+    }
+
+    /// The same without the covariates.
+    pub fn without_covariates(&self) -> Moments {
+        let occasions = self.occasions;
+        let cells = self.cells.iter().map(|cell| {
+            let mut cross_products = Matrix::zeros(occasions, occasions);
+            for row in 0..occasions {
+                for column in 0..occasions {
+                    cross_products[(row, column)] = cell.cross_products[(row, column)];
+                }
+            }
+            CellMoments {
+                subjects: cell.subjects,
+                mean: cell.mean[..occasions].to_vec(),
+                cross_products,
+                largest: cell.largest[..occasions].to_vec(),
+            }
+        });
+        Moments { occasions, covariates: 0, cells: cells.collect() }
     }
 
     /// Moments that were not read from rows, as where they are drawn directly from their distribution.
@@ -116,7 +199,12 @@ impl Moments {
             assert_eq!(cell.largest.len(), occasions, "one number of occasions");
             assert_eq!((cell.cross_products.rows(), cell.cross_products.columns()), (occasions, occasions));
         }
-        Moments { occasions, cells }
+        Moments { occasions, covariates: 0, cells }
+    }
+
+    /// Number of covariates; their moments stand after those of the occasions.
+    pub fn covariates(&self) -> usize {
+        self.covariates
     }
 
     /// Number of occasions, b.
@@ -176,29 +264,113 @@ impl Moments {
         Ok((moments.cross_products[(first, second)] / product.sqrt()).value().clamp(-1.0, 1.0))
     }
 
-    /// M'EM pooled over the cells kept, for `within` (occasions by contrasts) with orthonormal columns.
+    /// M'EM pooled over the cells kept, for `within` (occasions by contrasts) with orthonormal columns. Covariates, where
+    /// there are some, have been taken out.
     ///
     /// # Errors
-    /// No error degrees of freedom among the cells kept.
+    /// No error degrees of freedom among the cells kept; a covariate that does not vary within them or is a linear copy of
+    /// others.
     pub fn error(&self, within: &Matrix, kept: &[bool]) -> Result<ErrorMatrix, Refusal> {
-        let mut pooled = Matrix::zeros(self.occasions, self.occasions);
+        let size = self.occasions + self.covariates;
+        let mut joined = Matrix::zeros(size, size);
         let mut rounding = vec![0.0_f64; self.occasions];
         let (mut subjects, mut cells) = (0, 0);
-        for (cell, _) in self.cells.iter().zip(kept).filter(|(cell, kept)| **kept && cell.subjects > 0) {
-            pooled.accumulate(&cell.cross_products);
+        for cell in self.with_subjects(kept) {
+            joined.accumulate(&cell.cross_products);
             subjects += cell.subjects;
             cells += 1;
             for (unit, &largest) in rounding.iter_mut().zip(&cell.largest) {
                 *unit = unit.max(rounding_unit(largest));
             }
         }
-        if subjects <= cells {
-            return Err(Refusal::NoErrorDf);
+        if subjects <= cells + self.covariates {
+            return Err(if subjects <= cells { Refusal::NoErrorDf } else { Refusal::NoErrorDfLeft { covariates: self.covariates } });
         }
-        let df = subjects - cells;
+        let df = subjects - cells - self.covariates;
+        let pooled = match self.adjustment(kept)? {
+            None => joined,
+            Some(adjustment) => {
+                let mut pooled = Matrix::zeros(self.occasions, self.occasions);
+                let explained = adjustment.explained.transpose().multiply(&adjustment.explained);
+                for row in 0..self.occasions {
+                    for column in 0..self.occasions {
+                        pooled[(row, column)] = joined[(row, column)] - explained[(row, column)];
+                    }
+                }
+                pooled
+            }
+        };
         Ok(ErrorMatrix { matrix: pooled.congruence(within), df, subjects, cells, within: within.clone(), pooled, rounding })
     }
+
+    fn with_subjects<'a>(&'a self, kept: &'a [bool]) -> impl Iterator<Item = &'a CellMoments> {
+        self.cells.iter().zip(kept).filter(|(cell, kept)| **kept && cell.subjects > 0).map(|(cell, _)| cell)
+    }
+
+    /// What the covariates do in a model fitted to the cells kept; `None` where there are none.
+    ///
+    /// # Errors
+    /// A covariate that does not vary within these cells, or is a linear copy of others.
+    pub(crate) fn adjustment(&self, kept: &[bool]) -> Result<Option<Adjustment>, Refusal> {
+        let count = self.covariates;
+        if count == 0 {
+            return Ok(None);
+        }
+        let mut among = Matrix::zeros(count, count);
+        let mut with_outcome = Matrix::zeros(count, self.occasions);
+        let mut centre = vec![DoubleDouble::ZERO; count];
+        let mut largest = vec![0.0_f64; count];
+        let (mut subjects, mut cells) = (0, 0);
+        for cell in self.with_subjects(kept) {
+            subjects += cell.subjects;
+            cells += 1;
+            for one in 0..count {
+                let place = self.occasions + one;
+                largest[one] = largest[one].max(cell.largest[place]);
+                centre[one] += cell.mean[place] * DoubleDouble::from(cell.subjects);
+                for other in 0..count {
+                    among[(one, other)] += cell.cross_products[(place, self.occasions + other)];
+                }
+                for occasion in 0..self.occasions {
+                    with_outcome[(one, occasion)] += cell.cross_products[(place, occasion)];
+                }
+            }
+        }
+        let df = subjects.saturating_sub(cells) as f64;
+        for covariate in 0..count {
+            let unit = rounding_unit(largest[covariate]);
+            if among[(covariate, covariate)].value() <= df * unit * unit {
+                return Err(Refusal::ConstantCovariate { covariate });
+            }
+        }
+        centre.iter_mut().for_each(|sum| *sum = *sum / DoubleDouble::from(subjects));
+        // Covariates come in units of their own; scaled to a variance of one their rank can be judged.
+        let scale: Vec<DoubleDouble> = (0..count).map(|covariate| DoubleDouble::ONE / among[(covariate, covariate)].sqrt()).collect();
+        let mut scaled = among.clone();
+        for row in 0..count {
+            for column in 0..count {
+                scaled[(row, column)] = among[(row, column)] * scale[row] * scale[column];
+            }
+        }
+        let mut root = scaled.cholesky().map_err(|singular| Refusal::CollinearCovariate { covariate: singular.rank })?;
+        for row in 0..count {
+            // A pivot this small is what rounding of the values leaves of an exact copy.
+            if root[(row, row)].value() <= COPY {
+                return Err(Refusal::CollinearCovariate { covariate: row });
+            }
+        }
+        for row in 0..count {
+            for column in 0..count {
+                root[(row, column)] = root[(row, column)] / scale[row];
+            }
+        }
+        let explained = root.solve_lower(&with_outcome);
+        Ok(Some(Adjustment { root, explained, centre }))
+    }
 }
+
+/// Relative size below which what a covariate has of its own counts as rounding.
+const COPY: f64 = 1e-10;
 
 impl ErrorMatrix {
     /// Number of contrasts, q.
@@ -262,7 +434,7 @@ impl ErrorMatrix {
 
     /// Rows W that span the contrasts, reduced so that each has a 1 where the others have 0, at the occasions of largest
     /// variance; and 2 ln|det T| with M' = T W, so that det M'EM = det T^2 det WEW'.
-    fn graded_basis(&self) -> (Matrix, DoubleDouble) {
+    pub(crate) fn graded_basis(&self) -> (Matrix, DoubleDouble) {
         // Rows of M' have length 1: an entry below this is what is left of an exact zero.
         const NEGLIGIBLE: f64 = 1e-15;
         let mut rows = self.within.transpose();

@@ -27,6 +27,28 @@ pub enum Refusal {
     NotEstimable,
     /// No cell has a second subject, so that there is no error variance.
     NoErrorDf,
+    /// The covariates take up all error degrees of freedom.
+    NoErrorDfLeft {
+        /// How many covariates there are.
+        covariates: usize,
+    },
+    /// A covariate does not vary within the cells.
+    ConstantCovariate {
+        /// Which, counted from 0.
+        covariate: usize,
+    },
+    /// A covariate is a linear copy of those before it.
+    CollinearCovariate {
+        /// Which, counted from 0.
+        covariate: usize,
+    },
+    /// The method takes no covariates.
+    TakesNoCovariates,
+    /// The largest root of several has no exact or upper-bounded probability.
+    SeveralRoots {
+        /// How many roots there are.
+        roots: usize,
+    },
     /// The values do not vary within cells.
     NoErrorVariance,
     /// Several error strata are mixed, so that no one epsilon applies.
@@ -74,6 +96,27 @@ pub enum Refusal {
         /// The occasion.
         occasion: usize,
     },
+    /// A list of values is too short for what is to be computed from it.
+    TooFewValues {
+        /// How many there are.
+        given: usize,
+        /// The fewest that would do.
+        fewest: usize,
+    },
+    /// A list of values is longer than the method was made for.
+    TooManyValues {
+        /// How many there are.
+        given: usize,
+        /// The most that would do.
+        most: usize,
+    },
+    /// A value of a list is infinite or not a number.
+    ValueNotFinite {
+        /// Its position, from 0.
+        position: usize,
+    },
+    /// The values of a list do not vary.
+    ConstantValues,
 }
 
 impl fmt::Display for Refusal {
@@ -95,6 +138,24 @@ impl fmt::Display for Refusal {
             Refusal::NoErrorDf => {
                 write!(out, "no group that is compared has two subjects or more, so that there is no error variance to test against")
             }
+            Refusal::NoErrorDfLeft { covariates } => write!(
+                out,
+                "no error df are left: with {covariates} covariate{} there are as many parameters as subjects",
+                if *covariates == 1 { "" } else { "s" }
+            ),
+            Refusal::ConstantCovariate { covariate } => {
+                write!(out, "covariate {} does not vary within groups, so that it cannot be adjusted for", covariate + 1)
+            }
+            Refusal::CollinearCovariate { covariate } => write!(
+                out,
+                "covariate {} is, within groups, a linear copy of other covariates, so that their slopes cannot be told apart",
+                covariate + 1
+            ),
+            Refusal::TakesNoCovariates => write!(out, "this method takes no covariates"),
+            Refusal::SeveralRoots { roots } => write!(
+                out,
+                "Roy's largest root has {roots} roots to choose from here, so that its p-value is only a lower bound, and no verdict can rest on it"
+            ),
             Refusal::NoErrorVariance => write!(
                 out,
                 "the error variance is zero: within groups the values do not vary beyond what rounding leaves, so that there is nothing to test against"
@@ -138,6 +199,18 @@ impl fmt::Display for Refusal {
                 cell + 1,
                 occasion + 1
             ),
+            Refusal::TooFewValues { given, fewest } => {
+                write!(out, "there are too few values: {given}, but at least {fewest} are needed")
+            }
+            Refusal::TooManyValues { given, most } => write!(
+                out,
+                "there are {given} values, but the published approximation to this test's probability reaches to {most} only; \
+                 with so many values look at the distribution itself"
+            ),
+            Refusal::ValueNotFinite { position } => write!(out, "value number {} is not a finite number", position + 1),
+            Refusal::ConstantValues => {
+                write!(out, "the values do not vary beyond what rounding leaves, so that the shape of their distribution cannot be judged")
+            }
         }
     }
 }

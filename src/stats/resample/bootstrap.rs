@@ -225,11 +225,11 @@ fn draw(sizes: &[usize], count: usize, options: &Resamples, blocks: std::ops::Ra
 fn draw_again(picks: &mut [u32], stream: &mut Stream) {
     match picks.len() {
         ..=32 => fill::<11>(picks, stream),
-        ..=128 => fill::<8>(picks, stream),
-        ..=256 => fill::<7>(picks, stream),
-        ..=2_048 => fill::<5>(picks, stream),
-        ..=16_384 => fill::<4>(picks, stream),
-        ..=0x1000_0000 => fill::<2>(picks, stream),
+        33..=128 => fill::<8>(picks, stream),
+        129..=256 => fill::<7>(picks, stream),
+        257..=2_048 => fill::<5>(picks, stream),
+        2_049..=16_384 => fill::<4>(picks, stream),
+        16_385..=0x1000_0000 => fill::<2>(picks, stream),
         _ => fill::<1>(picks, stream),
     }
 }

@@ -74,11 +74,9 @@ impl fmt::Display for Refusal {
                 "the statistic has no value on the data as they are, so that there is nothing to put an interval around; \
                  look for a spread of zero"
             ),
-            Refusal::FewSubjects { arm, subjects } => write!(
-                out,
-                "arm {} has {subjects} subject(s); drawing again with one left out needs at least three",
-                arm + 1
-            ),
+            Refusal::FewSubjects { arm, subjects } => {
+                write!(out, "arm {} has {subjects} subject(s); drawing again with one left out needs at least three", arm + 1)
+            }
             Refusal::Degenerate { degenerate, resamples } => write!(
                 out,
                 "the statistic has no value in {degenerate} of {resamples} resamples, more than the 1 % that is allowed: \

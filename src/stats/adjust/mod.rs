@@ -8,6 +8,12 @@
 //! family: it counts as p = 1 and gets no adjusted value. Refusing a test can
 //! therefore never help another one.
 
+mod graph;
+mod shaffer;
+
+pub use graph::{Graph, GraphError, GraphResult, Update};
+pub use shaffer::shaffer;
+
 use libm::{expm1, log1p};
 
 /// How the p-values of a family are adjusted.

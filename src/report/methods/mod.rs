@@ -1,5 +1,8 @@
 //! The methods that a report used, with their sources.
 
+mod sizes;
+mod tests;
+
 use super::input::ReportInput;
 use crate::plan::resolved::{Action, Better, CompleteOver, Estimate, MissingData, ScreenKind};
 use serde::Serialize;
@@ -50,9 +53,21 @@ pub(super) fn methods(input: &ReportInput<'_>) -> Vec<Method> {
                     "Equal variances: one-way analysis of absolute deviations from the cell means or medians, adjusted over occasions by Holm",
                     "Levene 1960; Brown & Forsythe 1974",
                 ),
+                ScreenKind::NormalResiduals => add(
+                    "Normal residuals: W of the residuals at each occasion and of adjacent differences, adjusted by Holm",
+                    "Shapiro & Wilk 1965; Royston 1995 (AS R94)",
+                ),
+                ScreenKind::OutlyingValues { .. } => add(
+                    "Outlying values: externally studentized residuals, or Mahalanobis distances by the beta distribution",
+                    "Belsley, Kuh & Welsch 1980; Gnanadesikan & Kettenring 1972",
+                ),
+                ScreenKind::Missingness => add("Missingness: shares of missing values by arm and occasion", "common practice"),
             },
-            Action::Test(_) => {
-                add("Tests: univariate F of the hypothesis L B M = 0 on equally weighted cell means", "Kirk 2013; Maxwell & Delaney 2004");
+            Action::Test(test) => {
+                tests::methods(test, &settings(&step.id, "method"), &mut add);
+                if settings(&step.id, "method") != "univariate" {
+                    continue;
+                }
                 match settings(&step.id, "error").as_str() {
                     "own" => add("Error `own`: the arms and occasions that the comparison concerns", "common practice"),
                     "own occasions" => add("Error `own occasions`: every arm, the occasions of the comparison", "common practice"),
@@ -84,12 +99,20 @@ pub(super) fn methods(input: &ReportInput<'_>) -> Vec<Method> {
                 );
                 match settings(&step.id, "interval method").as_str() {
                     "bonett" => add("Intervals of standardized change: Bonett's variance", "Bonett 2008"),
+                    "bca" => sizes::bootstrap(&mut add),
                     "noncentral-t" => add("Intervals of standardized change: noncentral t inverted", "Cumming & Finch 2001"),
                     _ => {}
                 }
             }
-            Action::Estimate(Estimate::VarianceExplained { .. }) => {
-                add("Variance explained: partial and generalized eta squared", "Olejnik & Algina 2003; Steiger 2004")
+            Action::Estimate(Estimate::VarianceExplained { .. }) => add(
+                "Variance explained: partial and generalized eta squared, omega squared",
+                "Olejnik & Algina 2003; Steiger 2004; Hays 1963",
+            ),
+            Action::Estimate(Estimate::Differences { .. }) => {
+                add("Differences of means in the outcome's unit: interval of Student's t", "common practice")
+            }
+            Action::Estimate(Estimate::Comparison(comparison)) => {
+                sizes::methods(comparison.measure, &settings(&step.id, "interval method"), &mut add)
             }
         }
     }
@@ -102,6 +125,11 @@ pub(super) fn methods(input: &ReportInput<'_>) -> Vec<Method> {
             "benjamini-hochberg" => "Benjamini & Hochberg 1995",
             "benjamini-yekutieli" => "Benjamini & Yekutieli 2001",
             "fixed sequence" => "Maurer, Hothorn & Lehmacher 1995",
+            "shaffer" => "Shaffer 1986",
+            "fallback" => "Wiens 2003; Bretz, Maurer, Brannath & Posch 2009",
+            "graph" => "Bretz, Maurer, Brannath & Posch 2009",
+            "max-t" => "Genz & Bretz 2009; single step",
+            "westfall-young" => "Westfall & Young 1993; step down on the deals of the arms",
             "none" => "no control of the error over the family",
             _ => "Bonferroni",
         };

@@ -1,5 +1,8 @@
 //! One section per step: what it did, its table, and sentences for its comparisons.
 
+mod sizes;
+mod tests;
+
 use super::decisions::short;
 use super::escape::markdown;
 use super::tables::{self, Table, counted, percent};
@@ -39,13 +42,16 @@ pub(super) fn section(step: &StepResult, outcome: Option<&Outcome>, reason: Opti
         State::NotRun => format!("Not run: {}.", markdown(step.because.as_deref().unwrap_or("its condition did not hold"))),
         State::Refused => format!("Refused: {}.", markdown(step.because.as_deref().unwrap_or("it cannot be computed for these data"))),
     };
+    let method = step.settings.get("method").map(String::as_str);
     let mut table = (step.state != State::NotRun).then(|| match (step.species.as_str(), step.kind.as_str()) {
         ("screen", _) => screens(step),
-        ("test", "omnibus") => omnibus(step),
-        ("test", _) => tests(step, unit),
+        ("test", "omnibus") if method == Some("univariate") => tests::omnibus(step),
+        ("test", _) => tests::tests(step, unit),
         (_, "cell means") => means(step, unit),
-        (_, "variance explained") => explained(step),
-        _ => changes(step),
+        (_, "differences") => sizes::differences(step, unit),
+        (_, "variance explained") => sizes::explained(step),
+        (_, "standardized change") => sizes::changes(step),
+        _ => sizes::comparisons(step, unit),
     });
     if let Some(table) = table.as_mut().filter(|table| table.rows.len() > MOST_ROWS) {
         table.notes.push(format!("{} more rows stand in results.json.", table.rows.len() - MOST_ROWS));
@@ -134,117 +140,6 @@ fn detail_df(entry: &Entry) -> String {
     }
 }
 
-fn size(entry: &Entry, wanted: &str) -> String {
-    entry.sizes.iter().find(|size| size.name == wanted).map_or_else(String::new, |size| {
-        let value = size.value.map(|value| numbers::significant(value.get(), 3)).unwrap_or_default();
-        match size.interval {
-            Some([lower, upper]) => {
-                let level = size.level.map(percent).unwrap_or_default();
-                format!("{value} ({level} % {} to {})", numbers::significant(lower.get(), 3), numbers::significant(upper.get(), 3))
-            }
-            None => value,
-        }
-    })
-}
-
-fn omnibus(step: &StepResult) -> Table {
-    let mut table = Table::new(&[
-        "Effect",
-        "Verdict",
-        "#SS",
-        "#df",
-        "#error SS",
-        "#error df",
-        "#F",
-        "#epsilon",
-        "#p uncorrected",
-        "#p",
-        "#partial eta squared",
-    ]);
-    for entry in &step.results {
-        let epsilons = match entry.details.get("epsilon") {
-            Some(Detail::Named(named)) => Some(named),
-            _ => None,
-        };
-        let df1 = entry.statistic.as_ref().and_then(|statistic| statistic.df.first().copied());
-        table.row([
-            name(entry),
-            markdown(entry.verdict.as_deref().unwrap_or("")),
-            tables::number(entry.detail("sum_of_squares")),
-            df1.map(|df| tables::df(&[df])).unwrap_or_default(),
-            tables::number(entry.detail("error_sum_of_squares")),
-            entry.detail("df_error").map(|df| tables::df(&[df])).unwrap_or_default(),
-            entry.statistic.as_ref().map_or_else(|| state(entry).to_owned(), |statistic| numbers::significant(statistic.value.get(), 4)),
-            epsilons.map(|named| tables::number(named.get("greenhouse-geisser").copied())).unwrap_or_default(),
-            tables::p(entry.detail("p_uncorrected"), false),
-            tables::p(entry.p, entry.p_bound),
-            size(entry, "partial eta squared"),
-        ]);
-        if let Some(named) = epsilons {
-            let all: Vec<String> = named.iter().map(|(name, value)| format!("{name} {}", numbers::significant(value.get(), 4))).collect();
-            let correction = match entry.details.get("correction") {
-                Some(Detail::Text(correction)) => correction.as_str(),
-                _ => "none",
-            };
-            table.notes.push(format!(
-                "{}: epsilons {}; correction used: {correction}; p on {} df.",
-                name(entry),
-                all.join(", "),
-                corrected_df(entry)
-            ));
-        }
-    }
-    test_level(step, &mut table);
-    reasons(step, &mut table);
-    table
-}
-
-/// The level that the tests of a step were judged at, which they share.
-fn test_level(step: &StepResult, table: &mut Table) {
-    if let Some(level) = step.results.iter().find_map(|entry| entry.level) {
-        table.notes.push(format!("Judged at the level {}.", level.get()));
-    }
-}
-
-fn corrected_df(entry: &Entry) -> String {
-    match entry.details.get("df_corrected") {
-        Some(Detail::Numbers(df)) => tables::df(df),
-        _ => String::new(),
-    }
-}
-
-fn tests(step: &StepResult, unit: &str) -> Table {
-    let estimate = if unit.is_empty() { "#estimate".to_owned() } else { format!("#estimate ({})", markdown(unit)) };
-    let mut table =
-        Table::new(&["Hypothesis", "Verdict", &estimate, "#interval", "#F", "#df", "#p", "#adjusted p", "#partial eta squared"]);
-    for entry in &step.results {
-        let error = entry.standard_error_of();
-        let interval = tables::interval(entry.interval_of(), error);
-        table.row([
-            name(entry),
-            markdown(entry.verdict.as_deref().unwrap_or("")),
-            tables::estimate(entry.estimate_of(), error),
-            interval,
-            entry.statistic.as_ref().map_or_else(|| state(entry).to_owned(), |statistic| numbers::significant(statistic.value.get(), 4)),
-            corrected_df(entry),
-            tables::p(entry.p, entry.p_bound),
-            tables::p(entry.p_adjusted, false),
-            size(entry, "partial eta squared"),
-        ]);
-    }
-    test_level(step, &mut table);
-    if let Some(level) = step.results.iter().find_map(|entry| entry.detail("interval_level")) {
-        table.notes.push(format!("Intervals have a level of {} %.", percent(level)));
-    }
-    if step.results.iter().any(|entry| entry.p_adjusted.is_some() && entry.interval_of().is_some()) {
-        table.notes.push(
-            "Intervals are for each comparison by itself; the verdicts follow the adjusted p, so that the two need not agree.".to_owned(),
-        );
-    }
-    reasons(step, &mut table);
-    table
-}
-
 fn means(step: &StepResult, unit: &str) -> Table {
     let head = if unit.is_empty() { "#mean".to_owned() } else { format!("#mean ({})", markdown(unit)) };
     let mut table = Table::new(&["Cell", "#n", &head, "#SD", "#interval"]);
@@ -270,55 +165,6 @@ fn level_note(step: &StepResult, table: &mut Table) {
     }
 }
 
-fn changes(step: &StepResult) -> Table {
-    let mut table = Table::new(&["Change", "#n", "#mean change", "#standardizer", "#correlation", "#d", "#g", "#interval"]);
-    for entry in &step.results {
-        let three = |name: &str| entry.detail(name).map(|value| numbers::significant(value.get(), 3)).unwrap_or_default();
-        let interval = entry
-            .interval_of()
-            .map(|[lower, upper]| format!("{} to {}", numbers::significant(lower.get(), 3), numbers::significant(upper.get(), 3)));
-        table.row([
-            name(entry),
-            entry.n.map(|n| n.to_string()).unwrap_or_default(),
-            tables::number(entry.detail("change")),
-            tables::number(entry.detail("standardizer")),
-            three("correlation"),
-            if entry.state == State::Done { three("d") } else { state(entry).to_owned() },
-            three("g"),
-            interval.unwrap_or_default(),
-        ]);
-    }
-    level_note(step, &mut table);
-    if step.results.iter().any(|entry| entry.details.contains_key("interval_of")) {
-        table.notes.push("Intervals are those of d, uncorrected for small samples.".to_owned());
-    }
-    reasons(step, &mut table);
-    table
-}
-
-fn explained(step: &StepResult) -> Table {
-    let mut table = Table::new(&["Of", "Form", "#share", "#interval"]);
-    for entry in &step.results {
-        if entry.sizes.is_empty() {
-            table.row([name(entry), state(entry).to_owned(), String::new(), String::new()]);
-        }
-        for size in &entry.sizes {
-            let interval = size.interval.map(|[lower, upper]| {
-                let level = size.level.map(percent).unwrap_or_default();
-                format!("{} to {} ({level} %)", numbers::significant(lower.get(), 3), numbers::significant(upper.get(), 3))
-            });
-            table.row([
-                name(entry),
-                size.name.clone(),
-                size.value.map(|value| numbers::significant(value.get(), 3)).unwrap_or_default(),
-                interval.unwrap_or_default(),
-            ]);
-        }
-    }
-    reasons(step, &mut table);
-    table
-}
-
 /// A test in a sentence. What is not significant "was not shown to differ"; nothing is called alike.
 pub(super) fn sentence(entry: &Entry, outcome: Option<&Outcome>) -> Option<String> {
     let verdict = entry.verdict.as_deref()?;
@@ -341,7 +187,10 @@ pub(super) fn sentence(entry: &Entry, outcome: Option<&Outcome>) -> Option<Strin
         (Some(p), None) => format!(" ({})", tables::p_in_words(p, entry.p_bound)),
         _ => String::new(),
     };
+    let claim = margins(entry, &unit);
     let said = match verdict {
+        "shown" => format!("{subject}: shown to lie {claim}{p}."),
+        "not shown" => format!("{subject}: not shown to lie {claim}{p}."),
         "significant" => format!("{subject}: an effect was shown{p}."),
         "above zero" => format!("{subject}: shown to be above zero{p}."),
         "below zero" => format!("{subject}: shown to be below zero{p}."),
@@ -360,6 +209,17 @@ pub(super) fn sentence(entry: &Entry, outcome: Option<&Outcome>) -> Option<Strin
         },
     };
     Some(format!("{said}{numbers}"))
+}
+
+/// The margins of a claim in words.
+fn margins(entry: &Entry, unit: &str) -> String {
+    let margin = |name: &str| entry.detail(name).map(|value| numbers::significant(value.get(), 4));
+    match (margin("margin_lower"), margin("margin_upper")) {
+        (Some(lower), Some(upper)) => format!("within {lower} to {upper}{unit}"),
+        (Some(lower), None) => format!("above the margin of {lower}{unit}"),
+        (None, Some(upper)) => format!("below the margin of {upper}{unit}"),
+        (None, None) => "within its margin".to_owned(),
+    }
 }
 
 /// `12 subjects`.

@@ -1,12 +1,14 @@
 //! Screens: what they see steers choices; it is never worded as an assumption met.
 
+mod residuals;
+
 use super::sample::Sample;
 use super::{entry, in_plan_words, put, refused};
 use crate::canon::number::Finite;
 use crate::execute::machine::{Machine, setting};
 use crate::execute::verdict::Verdict;
 use crate::execute::words;
-use crate::plan::resolved::{FactorPart, Screen, ScreenKind, VarianceMethod};
+use crate::plan::resolved::{Choice, FactorPart, OutlyingMethod, Screen, ScreenKind, VarianceMethod};
 use crate::results::{Detail, Entry, State, Statistic};
 use crate::stats::adjust::{Procedure, adjust};
 use crate::stats::dist::{Tail, chi_squared};
@@ -28,14 +30,40 @@ pub(super) fn run(machine: &mut Machine<'_, '_>, number: usize, screen: &Screen,
             setting(&mut machine.steps[number].settings, "method", in_plan_words(&method));
             screen.references.iter().enumerate().map(|(occasion, reference)| spread(machine, reference, occasion, method, sample)).collect()
         }
+        ScreenKind::NormalResiduals => {
+            screen.references.iter().enumerate().map(|(place, reference)| residuals::normality(machine, reference, place, sample)).collect()
+        }
+        ScreenKind::OutlyingValues { method } => {
+            let method = machine.choose(number, "method", method);
+            setting(&mut machine.steps[number].settings, "method", in_plan_words(&method));
+            residuals::outlying(machine, &screen.references, method, threshold, sample)
+        }
+        ScreenKind::Missingness => missing(machine, &screen.references, sample),
     };
-    let verdict = judge(&mut entries, threshold);
+    let measured = match &screen.kind {
+        ScreenKind::Missingness => Some("share missing"),
+        ScreenKind::OutlyingValues { method: Choice::Fixed(OutlyingMethod::StudentizedResiduals) } => Some("largest residual"),
+        _ => None,
+    };
+    let verdict = match measured {
+        Some(_) => judge_sizes(&mut entries, threshold),
+        // A Mahalanobis threshold is the probability of one subject's distance, not of the largest.
+        None => judge(&mut entries, threshold),
+    };
     let mut evidence = Map::new();
     for entry in &entries {
-        evidence.insert(entry.reference.clone(), json!({ "p": entry.p, "p_adjusted": entry.p_adjusted, "state": entry.state }));
+        let mut seen = json!({ "p": entry.p, "p_adjusted": entry.p_adjusted, "state": entry.state });
+        if let Some(statistic) = entry.statistic.as_ref().filter(|_| measured.is_some()) {
+            seen[&statistic.name] = json!(statistic.value);
+        }
+        evidence.insert(entry.reference.clone(), seen);
     }
     let id = machine.program.plan.steps[number].id.clone();
-    let rule = json!({ "screen": machine.steps[number].kind, "threshold": threshold, "rule": "departure shown where p <= threshold" });
+    let words = match measured {
+        Some(what) => format!("departure shown where {what} >= threshold"),
+        None => "departure shown where p <= threshold".to_owned(),
+    };
+    let rule = json!({ "screen": machine.steps[number].kind, "threshold": threshold, "rule": words });
     let hash = machine.take_down(&id, "verdict", rule, evidence, &words::verdict(verdict, None));
     let slot = machine.program.steps[number].slots.start;
     machine.verdicts[slot] = verdict;
@@ -57,6 +85,26 @@ fn judge(entries: &mut [Entry], threshold: f64) -> Verdict {
         entry.verdict = Some(words::verdict(p.map_or(Verdict::Refused, |p| seen(p, threshold)), None));
     }
     let verdicts: Vec<Verdict> = judged.iter().map(|p| p.map_or(Verdict::Refused, |p| seen(p, threshold))).collect();
+    joined(&verdicts)
+}
+
+/// Gives each entry its verdict by the size of its statistic.
+fn judge_sizes(entries: &mut [Entry], threshold: f64) -> Verdict {
+    let mut all = Vec::new();
+    for entry in entries.iter_mut() {
+        entry.level = Finite::new(threshold);
+        let verdict = match &entry.statistic {
+            Some(statistic) if statistic.value.get().abs() >= threshold => Verdict::DepartureShown,
+            Some(_) => Verdict::NoDepartureShown,
+            None => Verdict::Refused,
+        };
+        entry.verdict = Some(words::verdict(verdict, None));
+        all.push(verdict);
+    }
+    joined(&all)
+}
+
+fn joined(verdicts: &[Verdict]) -> Verdict {
     if verdicts.contains(&Verdict::DepartureShown) {
         Verdict::DepartureShown
     } else if verdicts.contains(&Verdict::Refused) {
@@ -83,14 +131,15 @@ fn sphericity(machine: &Machine<'_, '_>, of: &[String], reference: &str, sample:
             Weighting::Equal,
         )?;
         let everyone = vec![true; design.cells()];
-        Ok((mauchly(moments, hypothesis.within(), &everyone)?, moments.subjects()))
+        Ok((mauchly(moments, hypothesis.within(), &everyone)?, moments.subjects(), hypothesis))
     });
-    let (found, n) = match found {
+    let (found, n, hypothesis) = match found {
         Ok(found) => found,
         Err(refusal) => return refuse(machine, entry, &refusal),
     };
     let mut entry = with_statistic(entry, "W", found.w, &[]);
     entry.n = Some(n);
+    entry.hypothesis = Some(super::test::matrices(&hypothesis, &sample.occasions, (0..design.cells()).collect(), false));
     put(&mut entry.details, "chi_squared", found.chi_squared);
     put(&mut entry.details, "df", found.df);
     match found.p() {
@@ -119,6 +168,32 @@ fn covariances(machine: &Machine<'_, '_>, reference: &str, sample: &Sample<'_>) 
         Ok(p) => with_p(entry, p),
         Err(refusal) => refuse(machine, entry, &refusal),
     }
+}
+
+/// Share of subjects of each cell without a value at each occasion.
+fn missing(machine: &Machine<'_, '_>, references: &[String], sample: &Sample<'_>) -> Vec<Entry> {
+    let (design, trial) = (&machine.program.plan.design, machine.samples.trial);
+    let occasions = design.occasions();
+    let values = &trial.values[sample.outcome];
+    references
+        .iter()
+        .enumerate()
+        .map(|(place, reference)| {
+            let (cell, occasion) = (place / occasions, place % occasions);
+            let name = reference.split_once(" / ").map_or(reference.as_str(), |(_, name)| name);
+            let entry = entry(reference, &format!("share missing of {name}"));
+            let of_cell = || (0..trial.cell.len()).filter(|subject| trial.cell[*subject] as usize == cell);
+            let count = of_cell().count();
+            let without = of_cell().filter(|subject| values[subject * occasions + occasion].is_nan()).count();
+            if count == 0 {
+                return refused(entry, "no subject is in this arm".to_owned());
+            }
+            let mut entry = with_statistic(entry, "share", without as f64 / count as f64, &[]);
+            entry.n = Some(count);
+            put(&mut entry.details, "missing", without as f64);
+            entry
+        })
+        .collect()
 }
 
 fn spread(machine: &Machine<'_, '_>, reference: &str, occasion: usize, method: VarianceMethod, sample: &Sample<'_>) -> Entry {
