@@ -152,6 +152,7 @@ const SPOILT: &[(&str, &str, &str)] = &[
         PIECES,
         "test: equivalence\n    contrast: {drill: {quiet: -1, paired: 1}}\n    margin: {lower: 5, upper: 5}\n    level: 0.05",
     ),
+    ("wrong-stratum", "outcomes:", "  randomised: {factors: [drill], strata: [pupil]}\noutcomes:"),
     ("wrong-spacing", "month: adjacent pairs}", "month: trends}\n    spacing: {month: [0, 1]}"),
 ];
 

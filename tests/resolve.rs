@@ -5,7 +5,7 @@
 
 use aforesaid::plan::checked::{CheckedPlan, Compilation, compile};
 use aforesaid::plan::resolve::references;
-use aforesaid::plan::resolved::{Action, Choice, Correction, CorrectionRule, ErrorTerm, Hypothesis};
+use aforesaid::plan::resolved::{Action, Choice, Correction, CorrectionRule, ErrorTerm, FactorPart, Hypothesis};
 use aforesaid::text::render::to_text;
 
 const HEAD: &str = "plan: 1\ntitle: Invented\nalpha: 0.05\nmissing data: complete cases\n";
@@ -312,4 +312,55 @@ fn the_meaning_does_not_depend_on_how_a_plan_is_laid_out() {
     assert_ne!(plain.plan_hash(), other.plan_hash());
     assert_eq!(plain.meaning_hash(), other.meaning_hash());
     assert_eq!(plain.resolved_bytes(), other.resolved_bytes());
+}
+
+/// Splits and contrasts are enumerated and named in the order of factors and levels.
+#[test]
+fn trends_later_means_and_written_contrasts_are_named() {
+    let text = two_arms(
+        "- {id: t, test: contrasts, effect: visit, split: {visit: trends}, spacing: even, error: own occasions}\n\
+         - {id: l, test: contrasts, effect: arm by visit, split: {visit: each level against the mean of the later ones}, error: own}\n\
+         - {id: w, test: contrasts, contrasts: [{name: late, arm: {booklet: -1, coached: 1}, visit: {month 6: 1}}, {name: mean, arm: {booklet: -1, coached: 1}, visit: {cast off: -1, week 6: 0.5, month 6: 0.5}}], error: own}\n\
+         - {id: alone, test: equivalence, contrast: {arm: {booklet: -1, coached: 1}}, margin: {lower: -1, upper: 1}, error: own, level: 0.05, role: supportive}",
+        "conclusions: [{otherwise: x}]",
+    );
+    let found = names(&text);
+    let of = |start: &str| found.iter().filter(|name| name.starts_with(start)).cloned().collect::<Vec<_>>();
+    assert_eq!(of("t / "), ["t / linear trend", "t / quadratic trend"]);
+    assert_eq!(of("l / "), ["l / cast off vs later", "l / week 6 vs month 6"]);
+    assert_eq!(of("w / "), ["w / late", "w / mean"]);
+    assert_eq!(of("alone"), ["alone"]);
+    let checked = sound(&text);
+    // A level with weight one is held; weights that sum to zero compare.
+    let late = hypothesis(&checked, "w / late");
+    assert_eq!(late.within, [FactorPart::Hold("month 6".to_owned())]);
+    assert!(late.comparison && late.favours.is_some(), "{late:?}");
+    // A change to the mean of two visits is no plain change, so that it favours no level.
+    assert!(hypothesis(&checked, "w / mean").favours.is_none());
+    assert!(hypothesis(&checked, "t / linear trend").comparison);
+}
+
+#[test]
+fn a_claim_is_shown_or_not_and_a_side_has_its_level() {
+    let claim = "- {id: alike, test: equivalence, contrast: {arm: {booklet: -1, coached: 1}, visit: {week 6: 1}}, margin: {lower: -1, upper: 1}, error: own, level: 0.05}";
+    sound(&two_arms(claim, "conclusions: [{when: {alike: shown}, say: x}, {when: {alike: not shown}, say: y}, {otherwise: z}]"));
+    one_finding(
+        &two_arms(claim, "conclusions: [{when: {alike: significant}, say: x}, {otherwise: z}]"),
+        "unknown-verdict",
+        "shown, not shown",
+    );
+    one_finding(&two_arms(&claim.replace(", level: 0.05", ""), "conclusions: [{otherwise: x}]"), "missing-key", "its own level");
+    let side = "- {id: up, test: contrasts, contrast: {arm: {booklet: -1, coached: 1}}, error: own, sides: one, level: 0.025}";
+    one_finding(&two_arms(side, "conclusions: [{otherwise: x}]"), "missing-key", "which direction counts");
+    sound(&two_arms(&side.replace("sides: one", "sides: one, favours: above zero"), "conclusions: [{otherwise: x}]"));
+}
+
+/// A `when` between members is an error but where the family judges in turn.
+#[test]
+fn members_of_a_graph_may_wait_for_one_another() {
+    let steps = "- {id: one, test: omnibus, effect: arm}\n- {id: two, test: omnibus, effect: arm by visit, correction: none, when: {one: significant}}";
+    let family = |control: &str| format!("families: [{{id: f, tests: [one, two], {control}}}]\nconclusions: [{{otherwise: x}}]");
+    sound(&two_arms(steps, &family("control: graph, weights: {one: 1}, transfer: {one: {two: 1}}")));
+    sound(&two_arms(steps, &family("control: fallback, weights: {one: 0.5, two: 0.5}")));
+    one_finding(&two_arms(steps, &family("control: holm")), "family-not-judged-yet", "fallback");
 }

@@ -1,7 +1,7 @@
 //! Factors, levels, and what was randomised.
 
 use super::reader::Reader;
-use crate::plan::resolved::{Design, Factor, FactorKind, Randomised};
+use crate::plan::resolved::{DataPlan, Design, Factor, FactorKind, Randomised};
 use crate::plan::syntax::tree::{Node, Value};
 use crate::text::source::Span;
 use crate::text::suggest::fold;
@@ -142,6 +142,28 @@ fn randomised(reader: &Reader<'_>, node: &Node, design: &Design) -> Option<Rando
         scheme: reader.optional_text(&fields, "scheme"),
         strata: strata.into_iter().map(|(column, _)| column.to_owned()).collect(),
     })
+}
+
+/// Says where a stratum is the subject's identifier or an arm: within it there would be nothing to deal.
+pub(super) fn strata_are_columns_of_their_own(reader: &Reader<'_>, node: &Node, design: &Design, data: &DataPlan) {
+    let Some(randomised) = &design.randomised else { return };
+    let Some(place) = node.get("randomised").and_then(|node| node.get("strata")) else { return };
+    for column in &randomised.strata {
+        let what = if *column == data.subject {
+            "the identifier of the subject"
+        } else if data.arms.iter().any(|arm| arm.column == *column) {
+            "an arm"
+        } else {
+            continue;
+        };
+        reader.error(
+            "wrong-stratum",
+            place.span,
+            format!("the stratum `{column}` is {what}, so that nothing could be dealt again within it"),
+            "here",
+            "name the columns that stratified the randomisation, such as a site or a block; leave `strata` out if there were none",
+        );
+    }
 }
 
 /// The factors of an effect, from text such as `arm by visit`; names may themselves hold ` by `.

@@ -116,6 +116,9 @@ fn plan(reader: &Reader<'_>, root: &Node, places: &mut Places) -> Option<Resolve
     let design = design_node.and_then(|node| design::design(reader, node));
     let data_node = reader.required(&fields, "data", what, "say where the data stand in their file");
     let data = data_node.zip(design.as_ref()).and_then(|(node, design)| data::data(reader, node, design));
+    if let (Some(node), Some(design), Some(data)) = (design_node, &design, &data) {
+        design::strata_are_columns_of_their_own(reader, node, design, data);
+    }
     let outcomes = data_node.and_then(|data| data::outcomes(reader, fields.get("outcomes"), data));
 
     let step_nodes = reader

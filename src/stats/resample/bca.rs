@@ -77,13 +77,7 @@ impl Replicates<'_> {
         let lower = Limit::at(z0, acceleration, tail)?;
         let upper = Limit::at(z0, acceleration, -tail)?;
         let (first, second) = (lower.place(finite.len())?, upper.place(finite.len())?);
-        let later = second.max(first);
-        let (below, lower_value, _) = finite.select_nth_unstable_by(first.min(second), f64::total_cmp);
-        debug_assert_eq!(below.len(), first.min(second));
-        let lower_value = *lower_value;
-        let from = first.min(second);
-        let upper_value =
-            if later == from { lower_value } else { *finite[from + 1..].select_nth_unstable_by(later - from - 1, f64::total_cmp).1 };
+        let (lower_value, upper_value) = ranked(&mut finite, first.min(second), second.max(first));
         Ok(BcaInterval {
             estimate: self.estimate,
             lower: lower_value,
@@ -135,6 +129,49 @@ impl Replicates<'_> {
     }
 }
 
+/// Values from which on a sample is taken to find where ranks may lie.
+const SAMPLED_FROM: usize = 2_000;
+
+/// Size of that sample, and how many of its places are left as room for its error.
+const SAMPLE: usize = 256;
+const ROOM: usize = 16;
+
+/// The values at two ranks, counted from 0, `first` not above `second`. Reorders `values`.
+fn ranked(values: &mut [f64], first: usize, second: usize) -> (f64, f64) {
+    if let Some(found) = in_the_tails(values, first, second) {
+        return found;
+    }
+    let (_, lower, above) = values.select_nth_unstable_by(first, f64::total_cmp);
+    let lower = *lower;
+    let upper = if second == first { lower } else { *above.select_nth_unstable_by(second - first - 1, f64::total_cmp).1 };
+    (lower, upper)
+}
+
+/// As [`ranked`], looking only at the values below one cut and above another, which a sample suggests; nothing where the
+/// ranks do not lie beyond them.
+fn in_the_tails(values: &[f64], first: usize, second: usize) -> Option<(f64, f64)> {
+    let count = values.len();
+    if count < SAMPLED_FROM {
+        return None;
+    }
+    let mut sample: Vec<f64> = values.iter().copied().step_by(count / SAMPLE).collect();
+    sample.sort_unstable_by(f64::total_cmp);
+    let place = |rank: usize| rank * sample.len() / count;
+    let low = *sample.get(place(first) + ROOM)?;
+    let high = *sample.get(place(second).checked_sub(ROOM)?)?;
+    if low >= high {
+        return None;
+    }
+    let mut below: Vec<f64> = values.iter().copied().filter(|value| *value <= low).collect();
+    let mut above: Vec<f64> = values.iter().copied().filter(|value| *value >= high).collect();
+    let from_high = (second + above.len()).checked_sub(count)?;
+    if first >= below.len() {
+        return None;
+    }
+    let lower = *below.select_nth_unstable_by(first, f64::total_cmp).1;
+    Some((lower, *above.select_nth_unstable_by(from_high, f64::total_cmp).1))
+}
+
 /// A level as both of its tails: the shares below and above.
 struct Limit {
     below: f64,
@@ -176,4 +213,22 @@ fn normal_tail(z: f64) -> Result<f64, Refusal> {
 
 fn probability(error: impl std::fmt::Display) -> Refusal {
     Refusal::Observed(crate::stats::model::Refusal::Probability { reason: error.to_string() })
+}
+
+#[cfg(test)]
+mod tests {
+    proptest::proptest! {
+        /// Ranks found in the tails are those of the sorted values, ties included.
+        #[test]
+        fn ranks_are_those_of_the_sorted_values(
+            values in proptest::collection::vec(-4_000_i32..4_000, 1..6_000), one in 0.0_f64..1.0, other in 0.0_f64..1.0, wide in proptest::bool::ANY,
+        ) {
+            let values: Vec<f64> = values.into_iter().map(|value| f64::from(if wide { value } else { value / 100 })).collect();
+            let mut sorted = values.clone();
+            sorted.sort_by(f64::total_cmp);
+            let rank = |share: f64| (share * values.len() as f64) as usize;
+            let (first, second) = (rank(one.min(other)), rank(one.max(other)));
+            proptest::prop_assert_eq!(super::ranked(&mut values.clone(), first, second), (sorted[first], sorted[second]));
+        }
+    }
 }
