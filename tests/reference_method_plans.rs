@@ -202,3 +202,20 @@ fn families_say_how_they_were_judged() {
     assert_close("t at .05 / 6", half, 2.565_978_552_077_9, 1e-9);
     assert!(held.entry("stepped / 8 vs 10").details.contains_key("simultaneous_interval_note"));
 }
+
+/// Shares of variance belong to univariate tests, and their generalized form to whole effects without covariates.
+#[test]
+fn a_share_that_has_no_meaning_is_refused() {
+    let held = Held::new();
+    let entry =
+        |reference: &str| held.results.steps.iter().flat_map(|step| &step.results).find(|entry| entry.reference == reference).unwrap();
+    assert_eq!(entry("omega / wj").state, State::Refused);
+    assert!(entry("omega / wj").because.as_deref().unwrap().contains("welch-james"));
+    let generalized = |reference: &str| {
+        let size = entry(reference).sizes.iter().find(|size| size.name == "generalized eta squared").unwrap().clone();
+        (size.value.is_some(), size.because.unwrap())
+    };
+    assert!(generalized("omega / weighted").0);
+    assert!(!generalized("omega / with base").0 && generalized("omega / with base").1.contains("covariates"));
+    assert!(!generalized("omega / trends / linear trend").0);
+}

@@ -415,6 +415,9 @@ fn covariates_that_cannot_be_adjusted_for() {
     // A copy within arms, with a shift of its own in each.
     let shifted = rows().flat_map(|(row, &cell)| [row[0], 0.1 * row[0] + 3.7 * f64::from(cell)]).collect();
     assert_eq!(refusal(&with(shifted)), Refusal::CollinearCovariate { covariate: 1 });
+    // Copies of large numbers, off by what a double cannot hold of them.
+    let large = rows().flat_map(|(row, _)| [row[0], row[1] + 1e8 / 3.0, 0.3 * row[0] - 7.1 * (row[1] + 1e8 / 3.0)]).collect();
+    assert_eq!(refusal(&with(large)), Refusal::CollinearCovariate { covariate: 2 });
     // 28 subjects in 3 arms leave 25 df.
     let many: Vec<f64> = (0..28 * 25).map(|place| f64::from((place * place * 31 + place * 17) as u32 % 101)).collect();
     assert_eq!(refusal(&with(many)), Refusal::NoErrorDfLeft { covariates: 25 });
@@ -509,6 +512,7 @@ fn residuals_are_taken_from_the_cell_means_whatever_the_covariates() {
     let sample = plain.sample();
     assert_eq!(studentized_residuals(&sample, &one, 2), studentized_residuals(&sample, &other, 2));
     assert_eq!(mahalanobis_distances(&sample, &one), mahalanobis_distances(&sample, &other));
+    assert_eq!(box_m(&one), box_m(&other));
 }
 
 #[test]
@@ -540,4 +544,49 @@ fn singular_errors_are_refused_by_one_rule() {
     let alone = Study { cell: vec![0, 0, 0, 1], ..few };
     let refused = test_welch_james(&alone.moments().expect("moments"), &changes).expect_err("refused");
     assert!(matches!(refused, Refusal::SingularCell { cell: 1, subjects: 1, .. }), "{refused}");
+}
+
+#[test]
+fn copies_among_large_values_are_refused() {
+    let mut study = Study::invented(&[]);
+    // Beside 1e8 a tenth is off by up to 7e-9, which is all the variance that is left of the third contrast.
+    study.values.iter_mut().for_each(|value| *value += 1e8 / 3.0);
+    study.values.chunks_mut(4).for_each(|row| row[3] = row[2] + row[1] - row[0] + 0.1 * row[0]);
+    let moments = study.moments().expect("moments");
+    let contrast = |row: &[f64; 4]| row.to_vec();
+    let within = Part::Weights(vec![contrast(&[-1.0, 1.0, 0.0, 0.0]), contrast(&[0.9, -1.0, -1.0, 1.0])]);
+    let piece = hypothesis(&[(3, Part::Whole)], &[(4, within)]);
+    let singular = |contrasts, rank| Refusal::SingularError { rank, contrasts, error_df: 25 };
+    let refused = test_multivariate(&moments, &piece, ErrorTerm::Own, Criterion::Pillai).expect_err("refused");
+    assert_eq!(refused, singular(2, 1));
+    assert_eq!(test_welch_james(&moments, &piece).expect_err("refused"), singular(4, 1));
+    assert_eq!(mahalanobis_distances(&study.sample(), &moments).expect_err("refused"), singular(4, 3));
+}
+
+/// With as many contrasts as error df 2 (s n + 1) is 0 for two roots (R gives NaN); the other criteria have their F.
+#[test]
+fn hotelling_lawleys_approximation_needs_more_error_df_than_contrasts() {
+    let all = Study::invented(&[]);
+    let rows = [0, 1, 9, 10, 16, 17];
+    let few = Study {
+        values: rows.iter().flat_map(|row| all.values[row * 4..row * 4 + 4].to_vec()).collect(),
+        cell: rows.iter().map(|&row| all.cell[row]).collect(),
+        ..all
+    };
+    let moments = few.moments().expect("moments");
+    let changes = hypothesis(&[(3, Part::Whole)], &[(4, Part::Whole)]);
+    let reference = Reference::read("methods_covariates.json", &["few/"]);
+    for (criterion, _, label) in CRITERIA {
+        match test_multivariate(&moments, &changes, ErrorTerm::Own, criterion) {
+            Ok(test) => {
+                reference.holds(&format!("few/{label}/F"), test.f);
+                reference.holds(&format!("few/{label}/p"), test.p().expect("p"));
+            }
+            Err(refused) => {
+                assert_eq!(criterion, Criterion::HotellingLawley);
+                assert_eq!(refused, Refusal::HotellingLawleyApproximation { contrasts: 3, error_df: 3 });
+            }
+        }
+    }
+    reference.all_asked();
 }

@@ -1,4 +1,4 @@
-//! Dealing and drawing again, timed: `cargo bench --bench resampling [-- THREADS]`.
+//! Dealing and drawing again, timed: `cargo bench --bench resampling [-- THREADS [PER ARM]]`.
 //!
 //! Best of several runs. Values are made up on the spot by a generator of fixed seed: 3 arms, 4 occasions.
 
@@ -12,7 +12,7 @@ use aforesaid::stats::resample::{
 
 const ARMS: usize = 3;
 const OCCASIONS: usize = 4;
-const RUNS: usize = 7;
+const RUNS: usize = 15;
 
 /// Values of all subjects, row by row, arms in turn; the noise is a sum of uniforms.
 fn values(per_arm: usize) -> Vec<f64> {
@@ -42,8 +42,8 @@ fn pairs(levels: usize) -> impl Iterator<Item = Vec<usize>> {
     (0..levels).flat_map(move |first| (first + 1..levels).map(move |second| vec![first, second]))
 }
 
-fn deals(threads: NonZero<usize>) {
-    for (per_arm, asked) in [(20, 200_000_u64), (200, 50_000), (2_000, 10_000)] {
+fn deals(threads: NonZero<usize>, wanted: impl Fn(usize) -> bool) {
+    for (per_arm, asked) in [(20, 200_000_u64), (200, 50_000), (2_000, 10_000)].into_iter().filter(|&(per_arm, _)| wanted(per_arm)) {
         let values = values(per_arm);
         let label: Vec<u32> = (0..ARMS * per_arm).map(|subject| (subject / per_arm) as u32).collect();
         let rest = vec![0; label.len()];
@@ -78,7 +78,7 @@ fn deals(threads: NonZero<usize>) {
 }
 
 /// Standardized change by the average of the two SDs, every pair of occasions in every arm.
-fn resamples(threads: NonZero<usize>) {
+fn resamples(threads: NonZero<usize>, wanted: impl Fn(usize) -> bool) {
     let occasions: Vec<Vec<usize>> = pairs(OCCASIONS).collect();
     let statistics = |arms: &[ArmMoments], out: &mut [f64]| {
         for (arm, out) in arms.iter().zip(out.chunks_exact_mut(occasions.len())) {
@@ -91,7 +91,7 @@ fn resamples(threads: NonZero<usize>) {
             }
         }
     };
-    for per_arm in [20, 200, 2_000] {
+    for per_arm in [20, 200, 2_000].into_iter().filter(|&per_arm| wanted(per_arm)) {
         let values = values(per_arm);
         let arm: Vec<u32> = (0..ARMS * per_arm).map(|subject| (subject / per_arm) as u32).collect();
         let rows = ArmRows { values: &values, occasions: OCCASIONS, arm: &arm, arms: ARMS, kept: None };
@@ -106,8 +106,11 @@ fn resamples(threads: NonZero<usize>) {
 }
 
 fn main() {
-    let threads = std::env::args().skip(1).find_map(|argument| argument.parse().ok()).unwrap_or(NonZero::<usize>::MIN);
+    let mut numbers = std::env::args().filter_map(|argument| argument.parse().ok());
+    let threads = numbers.next().unwrap_or(NonZero::<usize>::MIN);
+    let only = numbers.next();
+    let wanted = |per_arm| only.is_none_or(|only| only.get() == per_arm);
     println!("{threads} thread(s), best of {RUNS}");
-    deals(threads);
-    resamples(threads);
+    deals(threads, wanted);
+    resamples(threads, wanted);
 }

@@ -109,6 +109,15 @@ for (arm in levels(d$arm)) {
   hypothesis(paste0("invented/occasion@", arm), Y[kept, ], cbind(1, centred), 1, changes)
 }
 
+# Two subjects of each arm: as many error df as changes, so that the trace of Hotelling and Lawley has no approximation.
+few <- c(1, 2, 10, 11, 17, 18)
+for (criterion in criteria[-3]) {
+  one <- lm(Y[few, ] ~ arm, d[few, ])
+  row <- as.data.frame(anova(one, lm(Y[few, ] ~ 1), T = t(changes), test = criterion))[2, ]
+  put(paste0("few/", criterion, "/F"), row[["approx F"]], "stats::anova.mlm")
+  put(paste0("few/", criterion, "/p"), row[["Pr(>F)"]], "stats::anova.mlm")
+}
+
 # Two sexes, ages 10, 12, 14, with the distance at 8 as covariate.
 d <- read.csv("potthoff_roy_1964.csv")
 d$sex <- factor(d$sex, levels = c("Male", "Female"))

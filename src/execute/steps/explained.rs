@@ -95,6 +95,9 @@ fn one(machine: &mut Machine<'_, '_>, of: &str, reference: &str, request: &Reque
         return entry;
     };
     entry.n = result.n;
+    if let Some(method) = done.settings.get("method").filter(|method| *method != "univariate") {
+        return refused(entry, format!("{of} was tested by the method {method}, and shares of variance belong to the univariate test"));
+    }
     let error = match done.settings.get("error").map(String::as_str) {
         Some("own") => ErrorTerm::Own,
         Some("own occasions") => ErrorTerm::OwnOccasions,
@@ -116,7 +119,10 @@ fn one(machine: &mut Machine<'_, '_>, of: &str, reference: &str, request: &Reque
             (Ok(tested), VarianceExplainedKind::PartialEtaSquared) => partial_eta_squared(tested, request.level),
             (Ok(tested), VarianceExplainedKind::OmegaSquared) => omega_squared(tested, request.level),
             (Ok(_), VarianceExplainedKind::GeneralizedEtaSquared) => {
-                let found = if kind == TestKind::Omnibus {
+                let found = if !test.covariates.is_empty() {
+                    Err("the generalized form does not say where the variance of covariates belongs; the partial form may be asked for"
+                        .to_owned())
+                } else if kind == TestKind::Omnibus {
                     generalized(machine, hypothesis, test.weights, request.measured_factors, &sample)
                 } else {
                     Err("the generalized form is defined for the effects of a whole design, not for a piece of one; the partial form may be asked for".to_owned())

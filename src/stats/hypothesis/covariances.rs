@@ -43,12 +43,13 @@ impl BoxM {
     }
 }
 
-/// Box's M over all cells.
+/// Box's M over all cells. Covariates play no part.
 ///
 /// # Errors
 /// One cell only; a cell whose covariance matrix is singular (fewer than b + 1 subjects, constant or copied occasions);
 /// an M beyond the F approximation.
 pub fn box_m(moments: &Moments) -> Result<BoxM, Refusal> {
+    let moments = &moments.without_covariates();
     let (cells, occasions) = (moments.cells().len(), moments.occasions());
     if cells < 2 {
         return Err(Refusal::OneCell);

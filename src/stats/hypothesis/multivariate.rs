@@ -62,7 +62,8 @@ impl MultivariateTest {
 /// [`ErrorTerm::OwnOccasions`].
 ///
 /// # Errors
-/// An empty cell, more contrasts than error df, or a singular E_M.
+/// An empty cell, more contrasts than error df, or a singular E_M; for Hotelling-Lawley's trace of several roots as many
+/// contrasts as error df, where its approximation has no denominator df.
 pub fn test_multivariate(
     moments: &Moments,
     hypothesis: &Hypothesis,
@@ -87,6 +88,9 @@ pub fn test_multivariate(
     let zero = DoubleDouble::ZERO;
     let roots: Vec<DoubleDouble> =
         symmetric_eigen(&product).values.into_iter().map(|root| if nothing || root.value() < 0.0 { zero } else { root }).collect();
+    if criterion == Criterion::HotellingLawley && roots.len() > 1 && error.df <= hypothesis.contrasts() {
+        return Err(Refusal::HotellingLawleyApproximation { contrasts: hypothesis.contrasts(), error_df: error.df });
+    }
     let (value, f, df1, df2) = of_roots(criterion, &roots, hypothesis.contrasts(), hypothesis.rank(), error.df);
     let several = roots.len() > 1;
     Ok(MultivariateTest {

@@ -2,7 +2,7 @@ use super::contrast::Hypothesis;
 use super::univariate::{Estimate, combination, probability};
 use crate::stats::dist::fisher;
 use crate::stats::linear::{DoubleDouble, Matrix};
-use crate::stats::model::{Moments, Refusal};
+use crate::stats::model::{Moments, Refusal, first_dependent, rounding_noise, rounding_unit};
 
 /// The approximate degrees of freedom test of Welch, James and Johansen.
 #[derive(Clone, Debug, PartialEq)]
@@ -77,7 +77,16 @@ pub fn test_welch_james(moments: &Moments, hypothesis: &Hypothesis) -> Result<We
         return Err(Refusal::NoErrorVariance);
     }
     let error_df: usize = parts.iter().map(|(_, df)| df).sum();
-    let root = total.cholesky().map_err(|singular| Refusal::SingularError { rank: singular.rank, contrasts: size, error_df })?;
+    let singular = |rank| Refusal::SingularError { rank, contrasts: size, error_df };
+    // Weights of all cell means, and what rounding of the values may add to the variance of each mean.
+    let means_weights = between.kronecker(&within.transpose());
+    let units: Vec<f64> = (moments.cells().iter())
+        .flat_map(|cell| cell.largest.iter().map(|&largest| rounding_unit(largest) / (cell.subjects.max(1) as f64).sqrt()))
+        .collect();
+    if let Some(rank) = first_dependent(&total, &means_weights, |weights| rounding_noise(weights, &units)) {
+        return Err(singular(rank));
+    }
+    let root = total.cholesky().map_err(|found| singular(found.rank))?;
     let t = root.solve_lower(&means).sum_of_squares();
     let mut a = DoubleDouble::ZERO;
     for (own, df) in &parts {

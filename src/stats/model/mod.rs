@@ -4,6 +4,6 @@ mod accumulate;
 mod moments;
 mod refusal;
 
-pub(crate) use moments::rounding_unit;
 pub use moments::{CellMoments, ErrorMatrix, Moments};
+pub(crate) use moments::{first_dependent, rounding_noise, rounding_unit};
 pub use refusal::Refusal;

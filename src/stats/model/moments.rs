@@ -344,7 +344,12 @@ impl Moments {
             }
         }
         centre.iter_mut().for_each(|sum| *sum = *sum / DoubleDouble::from(subjects));
-        // Covariates come in units of their own; scaled to a variance of one their rank can be judged.
+        let units: Vec<f64> = largest.iter().map(|&largest| rounding_unit(largest)).collect();
+        let noise = |weights: &[DoubleDouble]| df * rounding_noise(weights, &units);
+        if let Some(covariate) = first_dependent(&among, &Matrix::identity(count), noise) {
+            return Err(Refusal::CollinearCovariate { covariate });
+        }
+        // Covariates come in units of their own; here each has a variance of one.
         let scale: Vec<DoubleDouble> = (0..count).map(|covariate| DoubleDouble::ONE / among[(covariate, covariate)].sqrt()).collect();
         let mut scaled = among.clone();
         for row in 0..count {
@@ -353,12 +358,6 @@ impl Moments {
             }
         }
         let mut root = scaled.cholesky().map_err(|singular| Refusal::CollinearCovariate { covariate: singular.rank })?;
-        for row in 0..count {
-            // A pivot this small is what rounding of the values leaves of an exact copy.
-            if root[(row, row)].value() <= COPY {
-                return Err(Refusal::CollinearCovariate { covariate: row });
-            }
-        }
         for row in 0..count {
             for column in 0..count {
                 root[(row, column)] = root[(row, column)] / scale[row];
@@ -369,8 +368,31 @@ impl Moments {
     }
 }
 
-/// Relative size below which what a covariate has of its own counts as rounding.
-const COPY: f64 = 1e-10;
+/// The first of several combinations that depends on those before it, where there is one: what elimination leaves of its sum
+/// of squares is at most `noise` of the weights that it then has, or 1e-20 of what it was.
+///
+/// `matrix` holds the sums of squares and products of the combinations, `weights` their weights, one combination a row.
+pub(crate) fn first_dependent(matrix: &Matrix, weights: &Matrix, noise: impl Fn(&[DoubleDouble]) -> f64) -> Option<usize> {
+    const COPY: f64 = 1e-20;
+    let (mut left, mut weights) = (matrix.clone(), weights.clone());
+    for row in 0..left.rows() {
+        let pivot = left[(row, row)];
+        if pivot.value() <= noise(weights.row(row)).max(COPY * matrix[(row, row)].value()) {
+            return Some(row);
+        }
+        for below in row + 1..left.rows() {
+            let factor = left[(below, row)] / pivot;
+            left.subtract_row(below, row, factor);
+            weights.subtract_row(below, row, factor);
+        }
+    }
+    None
+}
+
+/// sum_k (w_k u_k)^2: the sum of squares, per df, that rounding alone may leave in a combination (see [`Moments`]).
+pub(crate) fn rounding_noise(weights: &[DoubleDouble], units: &[f64]) -> f64 {
+    weights.iter().zip(units).map(|(weight, unit)| weight.value() * unit).map(|amount| amount * amount).sum()
+}
 
 impl ErrorMatrix {
     /// Number of contrasts, q.
@@ -467,9 +489,7 @@ impl ErrorMatrix {
 
     /// The sum of squares that rounding of the values alone may leave in a combination of occasions.
     fn noise(&self, weights: &[DoubleDouble]) -> f64 {
-        let variance: f64 =
-            weights.iter().zip(&self.rounding).map(|(weight, unit)| weight.value() * unit).map(|amount| amount * amount).sum();
-        variance * self.df as f64
+        rounding_noise(weights, &self.rounding) * self.df as f64
     }
 }
 

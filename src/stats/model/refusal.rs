@@ -49,6 +49,13 @@ pub enum Refusal {
         /// How many roots there are.
         roots: usize,
     },
+    /// The F approximation to the trace of Hotelling and Lawley has no denominator df.
+    HotellingLawleyApproximation {
+        /// How many contrasts there are.
+        contrasts: usize,
+        /// Error degrees of freedom.
+        error_df: usize,
+    },
     /// The values do not vary within cells.
     NoErrorVariance,
     /// Several error strata are mixed, so that no one epsilon applies.
@@ -155,6 +162,11 @@ impl fmt::Display for Refusal {
             Refusal::SeveralRoots { roots } => write!(
                 out,
                 "Roy's largest root has {roots} roots to choose from here, so that its p-value is only a lower bound, and no verdict can rest on it"
+            ),
+            Refusal::HotellingLawleyApproximation { contrasts, error_df } => write!(
+                out,
+                "the F approximation to the trace of Hotelling and Lawley needs more error df than contrasts between occasions, and \
+                 there are {error_df} for {contrasts}; Pillai's trace and Wilks' lambda can still be had"
             ),
             Refusal::NoErrorVariance => write!(
                 out,

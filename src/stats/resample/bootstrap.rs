@@ -1,5 +1,6 @@
 //! The bootstrap over subjects: whole subjects are drawn again with replacement, within arms.
 
+use std::borrow::Cow;
 use std::num::NonZero;
 
 use super::bca::{BcaInterval, Replicates};
@@ -191,7 +192,10 @@ fn intervals<S: Sampler>(
     };
     let parts = in_threads(threads, part);
     let share = |statistic: usize| {
-        let resamples: Vec<f64> = parts.iter().flat_map(|part| &part[statistic]).copied().collect();
+        let resamples: Cow<'_, [f64]> = match &parts[..] {
+            [only] => Cow::Borrowed(&only[statistic]),
+            several => Cow::Owned(several.iter().map(|part| &part[statistic][..]).collect::<Vec<_>>().concat()),
+        };
         Replicates { estimate: estimates[statistic], resamples: &resamples, jackknife: &jackknife[statistic] }.interval(options.level)
     };
     let groups = in_threads(threads, |thread| {
@@ -241,8 +245,10 @@ fn fill<const K: usize>(picks: &mut [u32], stream: &mut Stream) {
     for picks in together {
         *picks = stream.below_each([bound; K]);
     }
-    for pick in single {
-        *pick = stream.below(bound);
+    // One word for those over as well: what is drawn beyond them is left.
+    let over = single.len();
+    if over > 0 {
+        single.copy_from_slice(&stream.below_each([bound; K])[..over]);
     }
 }
 

@@ -127,7 +127,7 @@ impl<'a> Engine<'a> {
 
     fn places(&self, label: u32) -> std::ops::Range<usize> {
         let first = self.plain_cell(label) * self.room;
-        first..first + self.room
+        first..first + self.table.columns()
     }
 
     /// The statistics of the data as they are, computed the way that those of the deals are.

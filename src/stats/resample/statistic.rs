@@ -59,6 +59,8 @@ struct Item {
     error: Vec<ErrorPart>,
     /// Where its K begins: rank by cells.
     weights: usize,
+    /// An error, as a multiple of the mean square, that is only rounding.
+    noise: Lanes,
     df1: f64,
 }
 
@@ -114,7 +116,7 @@ impl Statistics {
             let sign = if hypothesis.contrasts() == 1 && inner(&forms[form].within, hypothesis.within()) < 0.0 { -1.0 } else { 1.0 };
             let df1 = (hypothesis.rank() * hypothesis.contrasts()) as f64;
             let width = between.len();
-            items.push(Item { form, sign, rank: hypothesis.rank(), between, cells: kept, error, weights, df1 });
+            items.push(Item { form, sign, rank: hypothesis.rank(), between, cells: kept, error, weights, noise: [0.0; LANES], df1 });
             weights += width;
         }
         let basis = common_basis(&forms);
@@ -199,12 +201,14 @@ impl Statistics {
         for item in &mut self.items {
             let weights = &mut self.weights[item.weights..item.weights + item.between.len()];
             let found = item.take_weights(lane, counts, weights, &mut self.lower);
+            item.noise[lane] = 0.0;
             for part in &mut item.error {
                 let filled = |cell: &&usize| counts[**cell] > 0.0;
                 let df: f64 = part.cells.iter().filter(filled).map(|&cell| counts[cell] - 1.0).sum();
                 let contrasts = self.forms[part.form].coordinates.len() as f64;
                 // Without a value the error is zero, which the evaluation takes for "none".
                 part.factor[lane] = if found && df > 0.0 { part.share * item.df1 / (df * contrasts) } else { 0.0 };
+                item.noise[lane] += part.factor[lane] * (NOISE * part.everybody);
             }
         }
     }
@@ -216,7 +220,7 @@ impl Statistics {
     pub fn evaluate(&mut self, sums: &[Lanes], found: &mut [Lanes]) {
         self.scatter(sums);
         for (item, out) in self.items.iter().zip(found) {
-            let (mut error, mut noise) = ([0.0; LANES], [0.0; LANES]);
+            let mut error = [0.0; LANES];
             for part in &item.error {
                 let scatter = &self.scatter[self.forms[part.form].scatter..];
                 let mut trace = [0.0; LANES];
@@ -225,7 +229,6 @@ impl Statistics {
                 }
                 let fixed = if self.forms[part.form].square.is_some() { 0.0 } else { part.fixed.unwrap_or(0.0) };
                 each(&mut error, |error, lane| *error += part.factor[lane] * (fixed + trace[lane]));
-                each(&mut noise, |noise, lane| *noise += part.factor[lane] * (NOISE * part.everybody));
             }
             let form = &self.forms[item.form];
             let width = item.cells.len();
@@ -246,7 +249,7 @@ impl Statistics {
                     }
                 }
             }
-            each(out, |out, lane| *out = if error[lane] > noise[lane] { ss[lane] / error[lane] } else { f64::INFINITY });
+            each(out, |out, lane| *out = if error[lane] > item.noise[lane] { ss[lane] / error[lane] } else { f64::INFINITY });
         }
     }
 
